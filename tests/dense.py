@@ -287,8 +287,8 @@ def solve_dense(
     topology : str
         difference, buffered-difference, two-opamp or three-opamp.
     parts : mapping
-        Part name to SI value; op-amp parameters as `A1.gain_bandwidth`. A missing key is an absent part, and so
-        is a zero capacitor, source, imbalance, filter or reference resistance and a zero op-amp parameter.
+        Part name to SI value; op-amp parameters as `A1.gain_bandwidth`. A missing key is an absent part, and
+        so is a zero capacitor, source, imbalance, filter or reference resistance and a zero op-amp parameter.
     frequency_hz : array_like, shape (F,)
     digits : int, optional
         Solve with mpmath to so many decimal digits; absent: double precision.
