@@ -1,0 +1,183 @@
+"""The figures of merit of each case, read from its curves.
+
+A figure that touches the numerical floor is a bound, and the column ``above_floor`` names it: a CMRR is then
+at least the value given, and CMRR's corner at most the value given.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import numpy.typing as npt
+import pandas as pd
+from modepair.reports.pairs import BoolArray, FloatArray, ModePair
+from modepair.reports.readings import frequency_text
+
+HALF_POWER_DB = 10.0 * float(np.log10(2.0))
+"""The '3 dB' of a bandwidth or a corner: half the power, 3.0103 dB, so that a single pole reads its own
+frequency."""
+
+SPOT_TOLERANCE = 1e-9
+"""Relative distance within which a spot and a solved frequency are the same."""
+
+
+def spot_column(spot_hz: float) -> str:
+    """Name the column of CMRR at a spot frequency: 1000.0 becomes ``cmrr_db_at_1000hz``.
+
+    Parameters
+    ----------
+    spot_hz : float
+        Spot frequency in Hz.
+
+    Returns
+    -------
+    str
+        The column's name: the shortest decimal number that is this frequency, never with an exponent.
+    """
+    return f"cmrr_db_at_{np.format_float_positional(spot_hz, trim='-')}hz"
+
+
+def spot_text(spot_hz: float) -> str:
+    """Name a spot frequency for reading, with all its digits: 1000.0 becomes ``1 kHz``.
+
+    Parameters
+    ----------
+    spot_hz : float
+        Spot frequency in Hz.
+
+    Returns
+    -------
+    str
+        The frequency with an SI prefix.
+    """
+    return frequency_text(spot_hz, digits=9)
+
+
+def spot_indices(frequency_hz: FloatArray, spots_hz: Sequence[float]) -> npt.NDArray[np.intp]:
+    """Find the solved frequencies that are the spots.
+
+    Parameters
+    ----------
+    frequency_hz : ndarray, shape (F,)
+        Solved frequencies in Hz, ascending.
+    spots_hz : sequence of float, length S
+        Spot frequencies in Hz.
+
+    Returns
+    -------
+    ndarray of int, shape (S,)
+        Index of each spot in ``frequency_hz``.
+
+    Raises
+    ------
+    ValueError
+        Where a spot was not solved; spots are never interpolated.
+    """
+    spots = np.asarray(spots_hz, dtype=np.float64).reshape(-1)
+    after = np.clip(np.searchsorted(frequency_hz, spots), 1, max(frequency_hz.size - 1, 1))
+    after = np.minimum(after, frequency_hz.size - 1)
+    before = np.maximum(after - 1, 0)
+    nearer = np.abs(frequency_hz[before] - spots) < np.abs(frequency_hz[after] - spots)
+    index = np.where(nearer, before, after)
+    missing = ~(np.abs(frequency_hz[index] - spots) <= SPOT_TOLERANCE * spots)
+    if np.any(missing):
+        raise ValueError(
+            f"spots_hz: {float(spots[missing][0]):.12g} Hz is not among the {frequency_hz.size} solved "
+            f"frequencies, {frequency_hz[0]:.12g} to {frequency_hz[-1]:.12g} Hz; spots are solved, "
+            "not interpolated"
+        )
+    return index
+
+
+def _first_fall(level_db: FloatArray, frequency_hz: FloatArray, fallen: BoolArray) -> FloatArray:
+    """Where the level falls by HALF_POWER_DB from its first value, (n,): linear in dB over log f, or NaN.
+
+    ``fallen`` (n, F) marks the samples that are known to lie at or below that level.
+    """
+    rows = np.arange(level_db.shape[0])
+    after = np.argmax(fallen, axis=1)
+    found = fallen[rows, after]
+    after = np.where(found, np.maximum(after, 1), 0)
+    before = np.maximum(after - 1, 0)
+    target_db = level_db[:, 0] - HALF_POWER_DB
+    drop_db = level_db[rows, before] - level_db[rows, after]
+    share = np.divide(
+        level_db[rows, before] - target_db, drop_db, out=np.ones_like(drop_db), where=drop_db > 0
+    )
+    log_f = np.log(frequency_hz)
+    fall_hz = np.exp(log_f[before] + np.clip(share, 0.0, 1.0) * (log_f[after] - log_f[before]))
+    return np.where(found, fall_hz, np.nan)
+
+
+def figures(pair: ModePair, spots_hz: Sequence[float]) -> pd.DataFrame:
+    """Read the figures of every case of a pair.
+
+    Parameters
+    ----------
+    pair : ModePair
+        Gains of the shape (n, F), or (F,) for a single case.
+    spots_hz : sequence of float
+        Spot frequencies in Hz; each must be among the solved ones.
+
+    Returns
+    -------
+    DataFrame
+        One row per case:
+
+        - ``differential_gain``: abs(A_dm) at the lowest frequency, V/V.
+        - ``bandwidth_hz``: first frequency where abs(A_dm) has fallen to half the power of that, interpolated
+          linearly in dB over log f; NaN where it does not in the band.
+        - ``cmrr_db_at_50hz`` and so on: CMRR at each spot.
+        - ``cmrr_corner_hz``: where CMRR has fallen 3 dB from its value at the lowest frequency; NaN: nowhere.
+        - ``cmrr_db_lowest``, ``cmrr_lowest_at_hz``: lowest CMRR of the band, the first frequency that has it.
+        - ``above_floor``: the figures that are bounds, such as ``50 Hz, corner, lowest``; empty: none.
+
+    Raises
+    ------
+    ValueError
+        Where a spot was not solved, or the pair has more than two dimensions.
+    """
+    if pair.common_gain.ndim > 2:
+        raise ValueError(f"figures takes gains of the shape (n, F) or (F,), not {pair.common_gain.shape}")
+    frequency_hz = pair.frequency_hz
+    gain_db = np.atleast_2d(pair.differential_gain_db)
+    cmrr_db = np.atleast_2d(pair.cmrr_db)
+    at_floor = np.atleast_2d(pair.above_floor)
+    spot_index = spot_indices(frequency_hz, spots_hz)
+    rows = np.arange(cmrr_db.shape[0])
+
+    # A sample at the floor may be higher than it reads, so it never counts as fallen.
+    fallen = (cmrr_db <= (cmrr_db[:, 0] - HALF_POWER_DB)[:, np.newaxis]) & ~at_floor
+    corner_hz = _first_fall(cmrr_db, frequency_hz, fallen)
+    corner_is_bound = at_floor[:, 0]
+    if np.any(corner_is_bound):
+        # The start is higher than it reads, so the corner lies below the first sample known to be lower.
+        first_fallen_hz = frequency_hz[np.argmax(fallen, axis=1)]
+        corner_hz = np.where(corner_is_bound & ~np.isnan(corner_hz), first_fallen_hz, corner_hz)
+    lowest = np.argmin(cmrr_db, axis=1)
+
+    columns: dict[str, object] = {
+        "differential_gain": np.abs(np.atleast_2d(pair.differential_gain)[:, 0]),
+        "bandwidth_hz": _first_fall(
+            gain_db, frequency_hz, gain_db <= (gain_db[:, 0] - HALF_POWER_DB)[:, np.newaxis]
+        ),
+    }
+    for spot_hz, index in zip(spots_hz, spot_index, strict=True):
+        columns[spot_column(spot_hz)] = cmrr_db[:, index]
+    columns["cmrr_corner_hz"] = corner_hz
+    columns["cmrr_db_lowest"] = cmrr_db[rows, lowest]
+    columns["cmrr_lowest_at_hz"] = frequency_hz[lowest]
+    bounds = np.column_stack([at_floor[:, spot_index], corner_is_bound, at_floor[rows, lowest]])
+    columns["above_floor"] = _names_of(bounds, spots_hz)
+    return pd.DataFrame(columns)
+
+
+def _names_of(bounds: BoolArray, spots_hz: Sequence[float]) -> list[str]:
+    """Text of each row's bounds (n, S + 2): the spots, then the corner and the lowest CMRR."""
+    if not np.any(bounds):
+        return [""] * bounds.shape[0]
+    names = [*(spot_text(spot) for spot in spots_hz), "corner", "lowest"]
+    return [
+        ", ".join(name for name, bound in zip(names, row, strict=True) if bound) for row in bounds.tolist()
+    ]
