@@ -4,8 +4,8 @@ Definitions, with both generators at Vcm or at plus and minus Vdm/2::
 
     A_cm = Vout / Vcm        A_dm = Vout / Vdm        rho = A_cm / A_dm        CMRR = 1 / |rho|
 
-``rho`` is the common-mode error ratio: the differential error at the generators per volt of common mode. Small
-errors add in ``rho``, with their signs and phases; decibels are for reading only.
+``rho`` is the common-mode error ratio: the differential error at the generators per volt of common mode.
+Small errors add in ``rho``, with their signs and phases; decibels are for reading only.
 """
 
 from __future__ import annotations
@@ -25,8 +25,9 @@ BoolArray = npt.NDArray[np.bool_]
 FLOOR_VOLTS = 1e-10
 """Output voltage per volt of drive below which a common-mode output is round-off.
 
-An ac solve in double precision with high loop gain leaves an error of about this size: it is what remains between
-two solves of one circuit in different pivot orders. A smaller |A_cm| says only that CMRR is above the floor.
+An ac solve in double precision with high loop gain leaves an error of about this size: it is what remains
+between two solves of one circuit in different pivot orders. A smaller |A_cm| says only that CMRR is above the
+floor.
 """
 
 
@@ -98,7 +99,7 @@ class ModePair:
 
     @property
     def error_ratio(self) -> ComplexArray:
-        """Rho = A_cm / A_dm, shape (..., F), complex, V/V: not limited by the numerical floor."""
+        """A_cm / A_dm, shape (..., F), complex, V/V: not limited by the numerical floor."""
         return self.common_gain / self.differential_gain
 
     @cached_property
@@ -120,7 +121,8 @@ class ModePair:
     @property
     def floor_db(self) -> FloatArray:
         """Highest CMRR that the solve can tell: 20 log10(|A_dm| / FLOOR_VOLTS), shape (..., F), in dB."""
-        return self.differential_gain_db - 20.0 * np.log10(FLOOR_VOLTS)
+        floor_db: FloatArray = self.differential_gain_db - 20.0 * float(np.log10(FLOOR_VOLTS))
+        return floor_db
 
     @cached_property
     def above_floor(self) -> BoolArray:

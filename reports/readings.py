@@ -7,7 +7,7 @@ import math
 from quantiphy import Quantity
 
 
-def frequency_text(frequency_hz: float, digits: int = 3) -> str:
+def frequency_text(frequency_hz: float, digits: int = 3, pad: bool = False) -> str:
     """Write a frequency with an SI prefix: 1000.0 becomes ``1 kHz``.
 
     Parameters
@@ -15,14 +15,16 @@ def frequency_text(frequency_hz: float, digits: int = 3) -> str:
     frequency_hz : float
         Frequency in Hz.
     digits : int
-        Significant digits; trailing zeros are dropped.
+        Significant digits.
+    pad : bool
+        Whether to keep trailing zeros, as a column of measured figures does: ``1.00 kHz``.
 
     Returns
     -------
     str
         The number, a space and the unit.
     """
-    return str(Quantity(frequency_hz, "Hz").render(prec=digits - 1, form="si"))
+    return str(Quantity(frequency_hz, "Hz").render(prec=digits - 1, form="si", strip_zeros=not pad))
 
 
 def gain_text(ratio: float) -> str:
