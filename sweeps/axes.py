@@ -1,0 +1,180 @@
+"""Axes: the settings that a spec varies, found by their dotted paths."""
+
+from __future__ import annotations
+
+import re
+import typing
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from functools import cache
+from types import UnionType
+from typing import Any
+
+from modepair.sweeps.faults import Refusal, Refusals, shown
+from modepair.sweeps.parts import OPAMP_PARAMETERS
+from modepair.sweeps.quantities import Kind
+from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKey
+from modepair.sweeps.words import suggestion
+from pydantic import BaseModel
+
+MOST_CASES = 200_000
+"""Cases that the product of the axes may have."""
+
+
+@dataclass(frozen=True)
+class Axis:
+    """One axis of a sweep.
+
+    Parameters
+    ----------
+    path
+        Dotted path of the setting it varies.
+    values
+        SI floats, or names.
+    labels
+        The values as they were written.
+    """
+
+    path: str
+    values: tuple[float, ...] | tuple[str, ...]
+    labels: tuple[str, ...]
+
+    @property
+    def numeric(self) -> bool:
+        """Whether the values are numbers."""
+        return not isinstance(self.values[0], str)
+
+
+def _leaves(model: type[BaseModel], prefix: str) -> dict[str, Leaf]:
+    """Return what each path below a model takes; list items stand as ``[]``."""
+    found: dict[str, Leaf] = {}
+    for name, information in model.model_fields.items():
+        _collect(information.annotation, information.metadata, f"{prefix}.{name}", found)
+    return found
+
+
+def _collect(annotation: Any, metadata: Iterable[Any], path: str, found: dict[str, Leaf]) -> None:
+    for marker in metadata:
+        if isinstance(marker, Reads):
+            found[path] = marker.leaf
+            return
+        if isinstance(marker, ReadsMapping):
+            found.update({f"{path}.{key}": leaf for key, leaf in marker.leaves.items()})
+            return
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        found.update(_leaves(annotation, path))
+        return
+    origin, arguments = typing.get_origin(annotation), typing.get_args(annotation)
+    if origin is typing.Annotated:
+        _collect(arguments[0], arguments[1:], path, found)
+    elif origin in (tuple, list):
+        _collect(arguments[0], (), f"{path}[]", found)
+    elif origin in (typing.Union, UnionType):
+        for argument in arguments:
+            if argument is not type(None):
+                _collect(argument, (), path, found)
+
+
+@cache
+def _fixed_settings() -> dict[str, Leaf]:
+    return {**_leaves(Stage, "stage"), **_leaves(Source, "source")}
+
+
+def settings(candidates: Iterable[str] = ()) -> dict[str, Leaf]:
+    """Return every setting that an axis can vary, by dotted path.
+
+    Parameters
+    ----------
+    candidates
+        Names of the op-amp candidates; each gives paths such as ``opamps.quiet-bipolar.cmrr``.
+
+    Returns
+    -------
+    dict of str to Leaf
+        What each setting takes. List indexes stand as ``[]``.
+    """
+    known = dict(_fixed_settings())
+    for name in candidates:
+        known.update({f"opamps.{name}.{parameter}": kind for parameter, kind in OPAMP_PARAMETERS.items()})
+    return known
+
+
+def setting_at(path: str, known: Mapping[str, Leaf]) -> Leaf:
+    """Return what the setting at `path` takes.
+
+    Parameters
+    ----------
+    path
+        Dotted path; list indexes in brackets.
+    known
+        The settings, from `settings`.
+
+    Returns
+    -------
+    Leaf
+
+    Raises
+    ------
+    Refusal
+        With the nearest known path, when there is no such setting.
+    """
+    leaf = known.get(re.sub(r"\[[0-9]+\]", "[]", path))
+    if leaf is None:
+        near = (
+            suggestion(path, known) or "; paths are such as stage.opamp, stage.parts.R1 or source.imbalance"
+        )
+        raise UnknownKey(f"there is no setting {shown(path)} to vary{near}")
+    return leaf
+
+
+def read_axis(path: str, written: object, known: Mapping[str, Leaf]) -> Axis:
+    """Read one axis.
+
+    Parameters
+    ----------
+    path
+        Dotted path of the setting.
+    written
+        Its values as text, in a list.
+    known
+        The settings, from `settings`.
+
+    Returns
+    -------
+    Axis
+
+    Raises
+    ------
+    Refusal
+        When the path is unknown or there is no list of values.
+    Refusals
+        One for each value that is refused or given twice, located by its index.
+    """
+    leaf = setting_at(path, known)
+    if not isinstance(written, list | tuple):
+        what = f"{shown(str(written))} is not a list" if isinstance(written, str) else "this is not a list"
+        raise Refusal(what, "a list of values, such as [a, b]")
+    if not written:
+        raise Refusal("the list is empty", "at least one value")
+    values: dict[Any, int] = {}
+    labels: list[str] = []
+    refusals: list[tuple[tuple[str | int, ...], Refusal]] = []
+    for index, item in enumerate(written):
+        try:
+            value = leaf.parse(item)
+            if value in values:
+                first = written[values[value]]
+                same = "" if first == item else f" (as {shown(str(first))})"
+                raise Refusal(f"{shown(str(item))} is on this axis twice{same}; remove one of them")
+            values[value] = index
+            labels.append(str(item).strip())
+        except Refusal as refusal:
+            refusals.append(((index,), Refusal(refusal.what, refusal.takes)))
+    if refusals:
+        raise Refusals(refusals)
+    return Axis(path, tuple(values), tuple(labels))
+
+
+def varies_number(path: str, known: Mapping[str, Leaf]) -> bool:
+    """Return whether the setting at `path` is a number."""
+    return isinstance(setting_at(path, known), Kind)

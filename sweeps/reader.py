@@ -1,0 +1,258 @@
+"""The reader: from a YAML file to a spec, with every fault of the file in one go."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from pathlib import Path
+from typing import Any
+
+from modepair.sweeps.axes import Axis, read_axis, settings
+from modepair.sweeps.cases import gain_faults
+from modepair.sweeps.coherence import Coherence, candidate_faults
+from modepair.sweeps.document import Document, Location, read_document
+from modepair.sweeps.faults import Fault, Refusal, Refusals, SpecError, shown
+from modepair.sweeps.parts import REQUIRED_PARAMETERS
+from modepair.sweeps.schema import FILE_NAME, Opamp, UnknownKey
+from modepair.sweeps.spec import CandidateFile, Spec
+from modepair.sweeps.words import listed, suggestion
+from pydantic import BaseModel, ValidationError
+
+_MISSING = {
+    "stage": "the stage is missing; give stage with topology, parts and opamp",
+    "frequency": "the frequencies are missing; give frequency, such as {start: 1, stop: 1M, spots: [50, 60]}",
+    "start": "start is missing; it takes a frequency, such as 1 Hz",
+    "stop": "stop is missing; it takes a frequency, such as 1 MHz",
+    "opamps": "opamps is missing; the file takes a mapping of op-amp candidates by name",
+}
+
+
+def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
+    """Read a sweep spec.
+
+    Parameters
+    ----------
+    path
+        The YAML file.
+    candidates
+        Built-in op-amp candidates by name; those in the spec's files, and those given in it, go before them.
+
+    Returns
+    -------
+    Spec
+        Frozen, every value in SI units.
+
+    Raises
+    ------
+    SpecError
+        With every fault of the spec and of its candidate files, in file order.
+    """
+    document = read_document(path)
+    from_files, nested = _read_files(document)
+    raw: dict[str, Any] = document.root.raw  # type: ignore[assignment]
+    in_place = raw.get("opamps")
+    names = [*candidates, *from_files, *(in_place if isinstance(in_place, dict) else ())]
+    known = settings(dict.fromkeys(names))
+    faults = list(document.faults)
+    axes, axis_faults = _read_axes(document, raw.get("vary", {}), known)
+    faults += axis_faults
+    if isinstance(raw.get("vary"), dict):
+        _fill(raw, axes)
+        raw["vary"] = {axis.path: axis.labels for axis in axes}
+    spec: Spec | None = None
+    try:
+        spec = Spec.model_validate(raw)
+    except ValidationError as error:
+        faults += model_faults(document, Spec, error)
+    faults += Coherence(document, list(dict.fromkeys(names))).faults()
+    ordered = _in_order(document, faults, nested)
+    if ordered:
+        raise SpecError(ordered)
+    if spec is None:
+        raise SpecError([Fault(document.file, 0, 0, "", "the file cannot be read as a spec")])
+    bound = spec.bind(document, {**candidates, **from_files, **spec.opamps}, axes)
+    faults = sorted(gain_faults(bound), key=lambda fault: (fault.line, fault.column))
+    if faults:
+        raise SpecError(faults)
+    return bound
+
+
+def read_candidates(path: str | Path) -> dict[str, Opamp]:
+    """Read a file of op-amp candidates, whose only key is ``opamps``.
+
+    Parameters
+    ----------
+    path
+        The YAML file.
+
+    Returns
+    -------
+    dict of str to Opamp
+        The candidates by name, in file order.
+
+    Raises
+    ------
+    SpecError
+        With every fault of the file, in file order.
+    """
+    document = read_document(path)
+    faults = list(document.faults)
+    node = document.node(("opamps",))
+    for name, candidate in (node.entries or {} if node else {}).items():
+        if candidate.entries is not None:
+            faults += candidate_faults(document, name, candidate.entries)
+    try:
+        read = CandidateFile.model_validate(document.root.raw)
+    except ValidationError as error:
+        faults += model_faults(document, CandidateFile, error)
+        read = None
+    ordered = _in_order(document, faults, {})
+    if ordered or read is None:
+        raise SpecError(ordered)
+    return read.opamps
+
+
+def _read_files(document: Document) -> tuple[dict[str, Opamp], dict[Location, tuple[Fault, ...]]]:
+    """Read the spec's candidate files; return candidates, and faults by the location that names the file."""
+    found: dict[str, Opamp] = {}
+    source: dict[str, str] = {}
+    nested: dict[Location, tuple[Fault, ...]] = {}
+    node = document.node(("opamp_files",))
+    for index, item in enumerate((node.items or []) if node else []):
+        location: Location = ("opamp_files", index)
+        try:
+            written = FILE_NAME.parse(item.raw)
+        except Refusal:
+            continue
+        if not written:
+            nested[location] = (document.fault(location, "no value is given; a file name is needed"),)
+            continue
+        path = Path(document.file).parent / written
+        if not path.is_file():
+            message = f"there is no file {shown(written)} (looked for {shown(str(path))}); paths start at the spec's folder"
+            nested[location] = (document.fault(location, message),)
+            continue
+        try:
+            read = read_candidates(path)
+        except SpecError as error:
+            nested[location] = error.faults
+            continue
+        for name in read:
+            if name in found:
+                message = f"{name} is in {shown(written)} and in {shown(source[name])}; rename or remove one of them"
+                nested[location] = (*nested.get(location, ()), document.fault(location, message))
+            found[name] = read[name]
+            source[name] = written
+    return found, nested
+
+
+def _read_axes(
+    document: Document, written: object, known: Mapping[str, Any]
+) -> tuple[tuple[Axis, ...], list[Fault]]:
+    axes: list[Axis] = []
+    faults: list[Fault] = []
+    if not isinstance(written, dict):
+        return (), [
+            document.fault(
+                ("vary",),
+                "no axes are given; vary takes a mapping of lists by path, "
+                "such as {source.imbalance: [0, 10]}",
+            )
+        ]
+    for path, values in written.items():
+        location: Location = ("vary", path)
+        try:
+            axes.append(read_axis(path, values, known))
+        except UnknownKey as refusal:
+            faults.append(document.fault(location, refusal.what, at_key=True))
+        except Refusal as refusal:
+            faults.append(document.fault(location, refusal.message("an axis")))
+        except Refusals as refusals:
+            name = path.rpartition(".")[2]
+            faults += [
+                document.fault((*location, *where), one.message(name)) for where, one in refusals.refusals
+            ]
+    return tuple(axes), faults
+
+
+def _fill(raw: dict[str, Any], axes: Sequence[Axis]) -> None:
+    """Put the first value of an axis where the model requires a value that only the axis gives."""
+    for axis in axes:
+        section, _, rest = axis.path.partition(".")
+        name, _, parameter = rest.rpartition(".")
+        if axis.path == "stage.topology" and isinstance(raw.get("stage"), dict):
+            raw["stage"].setdefault("topology", axis.labels[0])
+        elif section == "opamps" and parameter in REQUIRED_PARAMETERS:
+            candidate = (raw.get("opamps") or {}).get(name)
+            if isinstance(candidate, dict):
+                candidate.setdefault(parameter, axis.labels[0])
+
+
+def model_faults(document: Document, model: type[BaseModel], error: ValidationError) -> Iterator[Fault]:
+    """Turn pydantic's errors into faults of the document, in our own words."""
+    for item in error.errors(include_url=False, include_input=False):
+        location: Location = item["loc"]
+        name = str(next((token for token in reversed(location) if isinstance(token, str)), ""))
+        raised = item.get("ctx", {}).get("error")
+        if isinstance(raised, Refusals):
+            for where, refusal in raised.refusals:
+                inner = (*location, *where)
+                at_key = isinstance(refusal, UnknownKey)
+                yield document.fault(inner, refusal.message(str(inner[-1])), at_key=at_key)
+        elif isinstance(raised, Refusal):
+            yield document.fault(location, raised.message(name))
+        elif item["type"] == "missing":
+            if name in _MISSING:
+                yield document.fault(location[:-1], _MISSING[name], at_key=True)
+        elif item["type"] == "extra_forbidden":
+            known = _fields_at(model, location[:-1])
+            near = suggestion(name, known) or f"; known keys: {listed(known)}"
+            yield document.fault(location, f"{shown(name)} is not a known key{near}", at_key=True)
+        else:
+            yield document.fault(location, _form_message(document, location, name, item["type"]))
+
+
+def _form_message(document: Document, location: Location, name: str, problem: str) -> str:
+    node = document.node(location)
+    if node is None or node.entries is not None:
+        what = "this is a mapping"
+    elif node.items is not None:
+        what = "this is a list"
+    else:
+        what = (
+            f"{shown(node.text or '')} is a single value"
+            if (node.text or "").strip()
+            else "no value is given"
+        )
+    wanted = "a list" if problem in ("tuple_type", "list_type") else "a mapping of keys"
+    return f"{what}; {name or 'this'} takes {wanted}"
+
+
+def _fields_at(model: type[BaseModel], location: Location) -> list[str]:
+    """Return the keys that the section at `location` takes."""
+    current = model
+    for token in location:
+        information = current.model_fields.get(token) if isinstance(token, str) else None
+        if information is None:
+            continue
+        for candidate in (information.annotation, *getattr(information.annotation, "__args__", ())):
+            if isinstance(candidate, type) and issubclass(candidate, BaseModel):
+                current = candidate
+    return list(current.model_fields)
+
+
+def _in_order(
+    document: Document, faults: Sequence[Fault], nested: Mapping[Location, tuple[Fault, ...]]
+) -> list[Fault]:
+    """Sort faults as they stand in the file, those of another file where it is named; drop doubles."""
+    placed = [((f.line, f.column), f) for f in faults if not _is_unread(document, f)]
+    for location, others in nested.items():
+        place = document.value_place(location)
+        placed += [((place.line, place.column), fault) for fault in others]
+    placed.sort(key=lambda pair: pair[0])
+    return list(dict.fromkeys(fault for _, fault in placed))
+
+
+def _is_unread(document: Document, fault: Fault) -> bool:
+    """Whether a fault is about a value that the document's reader already refused."""
+    here = any(place.line == fault.line and place.column == fault.column for place in document.unread)
+    return here and fault not in document.faults

@@ -1,0 +1,340 @@
+"""The schema of a spec's sections: stage, source, frequency and op-amp candidates, as frozen pydantic models."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Annotated, Any, Protocol
+
+import numpy as np
+from modepair.sweeps.faults import Refusal, Refusals, shown
+from modepair.sweeps.parts import (
+    INSTANCES,
+    OPAMP_PARAMETERS,
+    PARTS,
+    SOURCE_PART_KINDS,
+    STAGE_PART_KINDS,
+    TOPOLOGIES,
+)
+from modepair.sweeps.quantities import FREQUENCY, GAIN, NUMBER, Kind
+from modepair.sweeps.words import Choice, Name, Text, listed, suggestion
+from numpy.typing import NDArray
+from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler
+from pydantic_core import CoreSchema, core_schema
+
+SPOT_MATCH = 1e-9
+"""Relative distance within which a spot and a grid frequency are the same."""
+
+MOST_SPOTS = 1000
+"""Spot frequencies that a spec may have."""
+
+
+class Leaf(Protocol):
+    """What reads one value: a kind of quantity, a choice, a name or free text."""
+
+    @property
+    def takes(self) -> str:
+        """What is taken, for messages."""
+
+    def parse(self, written: object) -> Any:
+        """Return the value, or raise `Refusal`."""
+
+    def json_schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of the value."""
+
+
+@dataclass(frozen=True)
+class Reads:
+    """Annotation that makes pydantic read a field by a `Leaf`."""
+
+    leaf: Leaf
+
+    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
+        return core_schema.no_info_plain_validator_function(self.leaf.parse)
+
+    def __get_pydantic_json_schema__(
+        self, schema: CoreSchema, handler: GetJsonSchemaHandler
+    ) -> dict[str, Any]:
+        return self.leaf.json_schema()
+
+
+@dataclass(frozen=True, eq=False)
+class ReadsMapping:
+    """Annotation that makes pydantic read a mapping whose keys are known, each by its own leaf.
+
+    Parameters
+    ----------
+    leaves
+        What each key takes.
+    noun
+        What a key is, in the plural: ``parts``.
+    """
+
+    leaves: Mapping[str, Leaf]
+    noun: str
+
+    def parse(self, written: object) -> dict[str, Any]:
+        """Return the values by key; raise `Refusals` for all that are refused."""
+        if not isinstance(written, Mapping):
+            raise Refusal(_form(written), f"a mapping of {self.noun}")
+        values: dict[str, Any] = {}
+        refusals: list[tuple[tuple[str | int, ...], Refusal]] = []
+        for key, value in written.items():
+            try:
+                if key not in self.leaves:
+                    raise UnknownKey(unknown(str(key), self.leaves, self.noun))
+                values[str(key)] = self.leaves[key].parse(value)
+            except Refusal as refusal:
+                refusals.append(((str(key),), refusal))
+        if refusals:
+            raise Refusals(refusals)
+        return values
+
+    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
+        return core_schema.no_info_plain_validator_function(self.parse)
+
+    def __get_pydantic_json_schema__(
+        self, schema: CoreSchema, handler: GetJsonSchemaHandler
+    ) -> dict[str, Any]:
+        properties = {key: leaf.json_schema() for key, leaf in self.leaves.items()}
+        return {"type": "object", "additionalProperties": False, "properties": properties}
+
+
+class UnknownKey(Refusal):
+    """A refusal of the key itself, not of its value."""
+
+
+def unknown(key: str, known: Mapping[str, Any], noun: str) -> str:
+    """Word the refusal of an unknown key, with the nearest known one."""
+    near = suggestion(key, known)
+    if not near:
+        short = [item for item in known if "." not in item]
+        near = f"; known {noun}: {listed(short)}"
+    return f"{shown(key)} is not among the known {noun}{near}"
+
+
+def _form(written: object) -> str:
+    if isinstance(written, Mapping):
+        return "this is a mapping"
+    if isinstance(written, list | tuple):
+        return "this is a list"
+    text = str(written)
+    return f"{shown(text)} is a single value" if text.strip() else "no value is given"
+
+
+OPAMP_NAME = Name("an op-amp name", "quiet-bipolar")
+TITLE = Text("a title", 200)
+NOTE = Text("a note", 500)
+FILE_NAME = Text("a file name", 500)
+TOPOLOGY = Choice("a topology", tuple(TOPOLOGIES))
+
+_SR = PARTS["RSP"].kind
+_CAP = PARTS["CCP"].kind
+
+OpampName = Annotated[str, Reads(OPAMP_NAME)]
+GainValue = Annotated[float, Reads(GAIN)]
+FrequencyValue = Annotated[float, Reads(FREQUENCY)]
+ResistanceOrZero = Annotated[float, Reads(_SR)]
+Capacitance = Annotated[float, Reads(_CAP)]
+
+
+def _parameter(name: str) -> Reads:
+    return Reads(OPAMP_PARAMETERS[name])
+
+
+class Section(BaseModel):
+    """Base of all sections: frozen, unknown keys refused."""
+
+    model_config = ConfigDict(frozen=True, extra="forbid", arbitrary_types_allowed=True)
+
+
+class Opamp(Section):
+    """An op-amp candidate's small-signal macromodel; every value in SI units, ratios plain.
+
+    Parameters
+    ----------
+    open_loop_gain
+        Gain at dc, V/V.
+    gain_bandwidth
+        Open-loop gain times the first pole, Hz.
+    phase_margin
+        Of the unity-gain loop, degrees; None: one pole.
+    cmrr
+        At dc, V/V; None: none modelled.
+    cmrr_corner
+        Where the op-amp's own CMRR has fallen 3 dB, Hz; None: flat.
+    cmrr_sign
+        1 or -1; None: 1.
+    input_resistance_differential, input_resistance_common
+        Ohm; the latter from each input to ground. None: none.
+    input_capacitance_differential, input_capacitance_common
+        Farad; the latter from each input to ground. None: none.
+    output_resistance
+        Ohm; None: none.
+    note
+        Free text for comparisons.
+    unit_price
+        Free number for comparisons.
+    """
+
+    open_loop_gain: Annotated[float, _parameter("open_loop_gain")]
+    gain_bandwidth: Annotated[float, _parameter("gain_bandwidth")]
+    phase_margin: Annotated[float, _parameter("phase_margin")] | None = None
+    cmrr: Annotated[float, _parameter("cmrr")] | None = None
+    cmrr_corner: Annotated[float, _parameter("cmrr_corner")] | None = None
+    cmrr_sign: Annotated[float, _parameter("cmrr_sign")] | None = None
+    input_resistance_differential: Annotated[float, _parameter("input_resistance_differential")] | None = None
+    input_capacitance_differential: Annotated[float, _parameter("input_capacitance_differential")] | None = (
+        None
+    )
+    input_resistance_common: Annotated[float, _parameter("input_resistance_common")] | None = None
+    input_capacitance_common: Annotated[float, _parameter("input_capacitance_common")] | None = None
+    output_resistance: Annotated[float, _parameter("output_resistance")] | None = None
+    note: Annotated[str, Reads(NOTE)] = ""
+    unit_price: Annotated[float, Reads(NUMBER)] | None = None
+
+    @property
+    def parameters(self) -> dict[str, float]:
+        """The macromodel's parameters that are given, SI values by name."""
+        values = {name: getattr(self, name) for name in OPAMP_PARAMETERS}
+        return {name: value for name, value in values.items() if value is not None}
+
+
+class Stage(Section):
+    """The amplifier stage.
+
+    Parameters
+    ----------
+    topology
+        difference, buffered-difference, two-opamp or three-opamp. Where only an axis gives it, its first value.
+    parts
+        SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``.
+    gain
+        Ideal differential gain, a ratio; sets RG, or R2 and R4.
+    opamp
+        One candidate's name for every instance.
+    opamps
+        Candidates' names by instance; instead of `opamp`.
+    reference_resistance
+        From the reference node to ground, ohm.
+    load
+        From the output to ground, ohm.
+    """
+
+    topology: Annotated[str, Reads(TOPOLOGY)]
+    parts: Annotated[dict[str, float], ReadsMapping(STAGE_PART_KINDS, "parts of the stage")] = Field(
+        default_factory=dict
+    )
+    gain: GainValue | None = None
+    opamp: OpampName | None = None
+    opamps: (
+        Annotated[dict[str, str], ReadsMapping(dict.fromkeys(INSTANCES, OPAMP_NAME), "instances")] | None
+    ) = None
+    reference_resistance: ResistanceOrZero | None = None
+    load: Annotated[float, Reads(PARTS["RL"].kind)] | None = None
+
+
+class Filter(Section):
+    """The filter in front of the stage.
+
+    Parameters
+    ----------
+    resistance
+        In series with each leg, ohm.
+    to_ground
+        Each leg to ground, farad.
+    between
+        Leg to leg, farad.
+    """
+
+    resistance: ResistanceOrZero | None = None
+    to_ground: Capacitance | None = None
+    between: Capacitance | None = None
+
+
+class Source(Section):
+    """The source network.
+
+    Parameters
+    ----------
+    resistance
+        Of each leg, ohm.
+    imbalance
+        Added to the plus leg, ohm; negative: to the minus leg.
+    imbalance_capacitance
+        Across the imbalance, farad.
+    cable_capacitance
+        Each leg to ground, farad.
+    between_capacitance
+        Leg to leg, farad.
+    bias_resistance
+        Each stage input to ground, ohm; None: none.
+    filter
+        Filter in front of the stage.
+    parts
+        SI values by part name, which override the keys above.
+    """
+
+    resistance: ResistanceOrZero | None = None
+    imbalance: Annotated[float, Reads(PARTS["RI"].kind)] | None = None
+    imbalance_capacitance: Capacitance | None = None
+    cable_capacitance: Capacitance | None = None
+    between_capacitance: Capacitance | None = None
+    bias_resistance: Annotated[float, Reads(PARTS["RBP"].kind)] | None = None
+    filter: Filter = Field(default_factory=Filter)
+    parts: Annotated[dict[str, float], ReadsMapping(SOURCE_PART_KINDS, "parts of the source")] = Field(
+        default_factory=dict
+    )
+
+
+_POINTS = Kind("points per decade", prefixes="", least=1, most=1000, example="20", whole=True)
+
+
+class Frequency(Section):
+    """The frequencies at which every case is solved.
+
+    Parameters
+    ----------
+    start, stop
+        Ends of the logarithmic grid, Hz; equal: one point.
+    points_per_decade
+        Density of the grid.
+    spots
+        Further frequencies that are solved exactly, Hz, within start..stop.
+    """
+
+    start: FrequencyValue
+    stop: FrequencyValue
+    points_per_decade: Annotated[float, Reads(_POINTS)] = 20.0
+    spots: tuple[FrequencyValue, ...] = ()
+
+    @property
+    def grid_hz(self) -> NDArray[np.float64]:
+        """The logarithmic grid, Hz, shape (G,), both ends included.
+
+        It has max(1, floor(points_per_decade log10(stop/start))) equal steps in log f, as ngspice's ``ac dec``
+        has; 1e-9 is added before rounding down, so that whole decades are not lost to round-off.
+        """
+        if self.start == self.stop:
+            return np.array([self.start])
+        steps = max(1, math.floor(self.points_per_decade * math.log10(self.stop / self.start) + 1e-9))
+        return np.geomspace(self.start, self.stop, steps + 1)
+
+    @property
+    def off_grid_spots_hz(self) -> tuple[float, ...]:
+        """The spots that are not on the grid, ascending, Hz."""
+        grid = self.grid_hz
+        return tuple(
+            spot for spot in sorted(self.spots) if not np.any(np.abs(grid - spot) <= SPOT_MATCH * spot)
+        )
+
+    @property
+    def frequency_hz(self) -> NDArray[np.float64]:
+        """Grid and spots together, ascending, Hz, shape (F,); a spot on the grid keeps its exact value."""
+        grid = self.grid_hz
+        spots = np.array(sorted(self.spots), dtype=np.float64)
+        if spots.size:
+            near = np.abs(grid[:, None] - spots[None, :]) <= SPOT_MATCH * spots[None, :]
+            grid = grid[~near.any(axis=1)]
+        return np.sort(np.concatenate([grid, spots]))
