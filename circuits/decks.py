@@ -1,0 +1,155 @@
+"""Decks and values: cases of the same structure share one deck and differ in a vector of element values."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from modepair.circuits.elements import Element, Values
+from modepair.circuits.netlist import COPIES, netlist
+from modepair.circuits.sources import source_elements
+from modepair.circuits.stages import stage_elements
+
+__all__ = ["Deck", "Structure", "structures"]
+
+Rows = npt.NDArray[np.int64]
+GivenParts = Mapping[str, float | Values]
+
+
+@dataclass(frozen=True)
+class Deck:
+    """What the engine loads once: a netlist, and how to alter its elements.
+
+    Attributes
+    ----------
+    text : str
+        The netlist, without analyses.
+    commands : tuple of tuple of str
+        For each element, in the order of its values, the start of the engine command that sets it in
+        each copy.
+    values : ndarray, shape (m,)
+        The element values that the text holds.
+    """
+
+    text: str
+    commands: tuple[tuple[str, ...], ...]
+    values: Values
+
+
+@dataclass(frozen=True)
+class Structure:
+    """Cases whose circuits have the same nodes and elements.
+
+    A part of value zero is not there: a wire in series, nothing in parallel. So which parts are zero, and
+    for the imbalance its leg, decide the structure.
+
+    Attributes
+    ----------
+    topology : str
+        A key of `modepair.circuits.stages.STAGES`.
+    present : frozenset of str
+        The parts that are there.
+    imbalanced_leg : {"P", "N"}
+        The leg that carries RI.
+    parts : mapping of str to float or ndarray, shape (n,)
+        Part values of all the cases handed in.
+    rows : ndarray of int, shape (k,)
+        Which of the n cases have this structure, ascending.
+    """
+
+    topology: str
+    present: frozenset[str]
+    imbalanced_leg: str
+    parts: GivenParts
+    rows: Rows
+
+    def elements(self, rows: Rows) -> tuple[Element, ...]:
+        """Elements of some of the cases.
+
+        Parameters
+        ----------
+        rows : ndarray of int, shape (j,)
+            Rows of the part values.
+
+        Returns
+        -------
+        tuple of Element
+            In the order of the netlist, with values of shape (j,).
+        """
+        here = {
+            name: _taken(self.parts[name], rows) for name in self.parts if name in self.present
+        }
+        if "RI" in here:
+            here["RI"] = np.abs(here["RI"])
+        network, plus, minus = source_elements(here, self.imbalanced_leg)
+        return (*network, *stage_elements(self.topology, here, plus, minus))
+
+    def values(self, rows: Rows) -> Values:
+        """Element values of some of the cases: shape (j, m), a column per element of the deck."""
+        return np.stack([element.values for element in self.elements(rows)], axis=1)
+
+    def text(self, row: int) -> str:
+        """Netlist of one case, without analyses."""
+        return netlist(self.elements(np.array([row])))
+
+    @property
+    def key(self) -> tuple[str, frozenset[str], str]:
+        """What two structures have in common when one deck serves both."""
+        return self.topology, self.present, self.imbalanced_leg
+
+    def deck(self) -> Deck:
+        """Write the deck, with the values of the structure's first case."""
+        elements = self.elements(self.rows[:1])
+        commands = tuple(_commands(element) for element in elements)
+        return Deck(netlist(elements), commands, np.array([element.values[0] for element in elements]))
+
+
+def _taken(values: float | Values, rows: Rows) -> Values:
+    array = np.asarray(values, float)
+    return array[rows] if array.ndim else np.full(len(rows), array)
+
+
+def _commands(element: Element) -> tuple[str, ...]:
+    parameter = " gain" if element.kind in "GE" else ""
+    return tuple(f"alter {element.name.lower()}_{copy}{parameter} = " for copy in COPIES)
+
+
+def structures(topology: str, parts: GivenParts, count: int) -> list[Structure]:
+    """Split cases by structure.
+
+    Parameters
+    ----------
+    topology : str
+        A key of `modepair.circuits.stages.STAGES`.
+    parts : mapping of str to float or ndarray, shape (n,)
+        Part values in SI units; a part that no case has needs no key.
+    count : int
+        Number of cases n.
+
+    Returns
+    -------
+    list of Structure
+        In the order of the first case of each.
+    """
+    names = list(parts)
+    signs = np.empty((len(names), count), dtype=np.int8)
+    for index, name in enumerate(names):
+        values = np.asarray(parts[name], float)
+        signs[index] = np.sign(values) if name == "RI" else values != 0
+    patterns, first, member = np.unique(signs, axis=1, return_index=True, return_inverse=True)
+    result = []
+    for pattern in np.argsort(first):
+        sign = dict(zip(names, patterns[:, pattern].tolist(), strict=True))
+        result.append(
+            Structure(
+                topology,
+                frozenset(name for name in names if sign[name]),
+                "N" if sign.get("RI", 1) < 0 else "P",
+                parts,
+                np.flatnonzero(member.ravel() == pattern),
+            )
+        )
+    return result

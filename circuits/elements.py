@@ -1,0 +1,65 @@
+"""Circuit elements with their values for many cases at once."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+import numpy.typing as npt
+
+__all__ = ["GROUND", "Element", "Kind", "Parts", "Values", "between"]
+
+Values = npt.NDArray[np.float64]
+Parts = Mapping[str, Values]
+Kind = Literal["R", "C", "G", "E"]
+
+GROUND = "0"
+
+
+@dataclass(frozen=True)
+class Element:
+    """One linear element of a circuit, with its value in each of n cases.
+
+    Attributes
+    ----------
+    name : str
+        Name in the netlist; its first letter is the kind.
+    kind : {"R", "C", "G", "E"}
+        Resistor, capacitor, voltage-controlled current source (current out of the second node, into the
+        first, through the circuit: `nodes` are ordered so that a positive value drives the first node up)
+        or voltage-controlled voltage source.
+    nodes : tuple of str
+        Two nodes for R and C; output pair, then controlling pair for G and E.
+    values : ndarray, shape (n,)
+        Ohm, farad, siemens or volt per volt.
+    """
+
+    name: str
+    kind: Kind
+    nodes: tuple[str, ...]
+    values: Values
+
+
+def between(parts: Parts, name: str, node_a: str, node_b: str) -> list[Element]:
+    """Connect the part `name` between two nodes, if the circuit has it.
+
+    Parameters
+    ----------
+    parts : mapping of str to ndarray, shape (n,)
+        Part values in SI units; a part that is not there has no key.
+    name : str
+        Part name; its first letter, R or C, tells what it is.
+    node_a, node_b : str
+        The nodes it joins.
+
+    Returns
+    -------
+    list of Element
+        One element, or none.
+    """
+    if name not in parts:
+        return []
+    kind: Kind = "R" if name.startswith("R") else "C"
+    return [Element(name, kind, (node_a, node_b), parts[name])]

@@ -1,0 +1,225 @@
+"""The ngspice engine: one library instance in this process, and rules that let no wrong result pass.
+
+ngspice reports many failures only as text on its error stream, keeps simulating an older circuit when a new
+one did not load, and leaves older plots in place when an analysis fails. So every load starts from an empty
+simulator, any unexpected line of text is a failure, and a result counts only if it is in a new plot, complete
+and finite.
+"""
+
+from __future__ import annotations
+
+import logging
+import os
+from collections.abc import Sequence
+from ctypes.util import find_library
+from functools import cache
+from pathlib import Path
+
+import numpy as np
+import numpy.typing as npt
+
+from modepair.runner.errors import EngineDeadError, EngineMissingError, SimulationError
+
+__all__ = ["Engine", "engine", "locate_library"]
+
+LIBRARY_VARIABLE = "NGSPICE_LIBRARY_PATH"
+
+COMMAND_LENGTH = 1000
+"""Longest command ngspice takes is 1023 characters."""
+
+COMMANDS_BEFORE_RELEASE = 400
+"""ngspice keeps each command it is given, about a kilobyte a run, until told to let go."""
+
+HARMLESS = ("Note: can't find init file.", "Using SPARSE 1.3 as Direct Linear Solver", "Note: No compatibility mode")
+"""Starts of the lines that some versions print on their error stream at a good start or load."""
+
+_MACOS_PLACES = ("/opt/homebrew/lib/libngspice.dylib", "/usr/local/lib/libngspice.dylib")
+
+
+def locate_library() -> str:
+    """Find the ngspice library.
+
+    Returns
+    -------
+    str
+        What `NGSPICE_LIBRARY_PATH` says, else what the system's search for libngspice finds.
+
+    Raises
+    ------
+    EngineMissingError
+        If there is none.
+    """
+    named = os.environ.get(LIBRARY_VARIABLE)
+    if named:
+        return named
+    found = find_library("ngspice") or next((place for place in _MACOS_PLACES if Path(place).exists()), None)
+    if found is None:
+        raise EngineMissingError(LIBRARY_VARIABLE)
+    return found
+
+
+class Engine:
+    """ngspice in this process.
+
+    Use `engine()`: the library allows one instance in a process.
+
+    Raises
+    ------
+    EngineMissingError
+        If the ngspice library is not found or cannot be opened.
+    """
+
+    def __init__(self) -> None:
+        # PySpice reads this variable once, when it is imported.
+        os.environ[LIBRARY_VARIABLE] = locate_library()
+        # PySpice logs each line that ngspice prints; the lines are read and judged here instead.
+        logger = logging.getLogger("PySpice")
+        logger.addHandler(logging.NullHandler())
+        logger.propagate = False
+        logger.setLevel(logging.CRITICAL)
+        from PySpice.Spice.NgSpice.Shared import NgSpiceShared
+
+        try:
+            self._shared = NgSpiceShared.new_instance()
+        except OSError as error:
+            raise EngineMissingError(LIBRARY_VARIABLE, str(error)) from error
+        self._shared.NUMBER_OF_EXEC_CALLS_TO_RELEASE_MEMORY = COMMANDS_BEFORE_RELEASE
+        self._holds_result = False
+
+    @property
+    def version(self) -> str:
+        """Version of the ngspice library."""
+        return str(self._shared.ngspice_version)
+
+    def load(self, netlist: str) -> None:
+        """Load a circuit, in place of any other.
+
+        Parameters
+        ----------
+        netlist : str
+            SPICE text without analyses and without `.end`.
+
+        Raises
+        ------
+        SimulationError
+            If ngspice says anything against it.
+        EngineDeadError
+            If the library can load nothing any more; the process must be given up.
+        """
+        self._quietly("destroy all")
+        self._quietly("remcirc")
+        self._holds_result = False
+        try:
+            self._shared.load_circuit(f"{netlist}\n.end\n")
+        except NameError as error:
+            raise EngineDeadError(self._said() or str(error)) from error
+        complaints = self._complaints()
+        loaded = any(line.startswith("Circuit:") for line in self._shared.stdout.splitlines())
+        if complaints or not loaded:
+            raise SimulationError("the netlist was refused: " + ("; ".join(complaints) or "no circuit loaded"))
+
+    def alter(self, commands: Sequence[str]) -> None:
+        """Set element values of the loaded circuit.
+
+        Parameters
+        ----------
+        commands : sequence of str
+            `alter` commands; they are sent many at a time.
+
+        Raises
+        ------
+        SimulationError
+            If ngspice says anything.
+        """
+        line = ""
+        for command in commands:
+            if len(line) + len(command) >= COMMAND_LENGTH:
+                self._command(line)
+                line = ""
+            line = f"{line};{command}" if line else command
+        if line:
+            self._command(line)
+
+    def analyse(
+        self, command: str, frequency_hz: npt.NDArray[np.float64], vectors: Sequence[str]
+    ) -> npt.NDArray[np.complex128]:
+        """Run one AC analysis of the loaded circuit.
+
+        Parameters
+        ----------
+        command : str
+            The analysis, such as "ac dec 20 1.0 1000000.0".
+        frequency_hz : ndarray, shape (F,)
+            The frequencies it must come back with, in hertz.
+        vectors : sequence of str, length v
+            Node names to read.
+
+        Returns
+        -------
+        ndarray, shape (v, F)
+            Complex node voltages.
+
+        Raises
+        ------
+        SimulationError
+            If ngspice says anything, or the result is not new, not complete, not at these frequencies or
+            not finite.
+        """
+        if self._holds_result:
+            self._quietly("destroy all")
+        self._holds_result = True
+        self._command(command)
+        name = self._shared.last_plot
+        if not name.startswith("ac"):
+            raise SimulationError("the analysis left no result")
+        plot = self._shared.plot(None, name)
+        try:
+            arrays = [np.asarray(plot[vector].to_waveform()) for vector in ("frequency", *vectors)]
+        except KeyError as error:
+            raise SimulationError(f"the analysis left no {error}") from error
+        self._command("destroy")
+        self._holds_result = False
+        got = arrays[0].real
+        if got.shape != frequency_hz.shape or not np.allclose(got, frequency_hz, rtol=1e-9, atol=0):
+            raise SimulationError(
+                f"the analysis came back with {got.size} frequencies, not the {frequency_hz.size} asked for"
+            )
+        result = np.array(arrays[1:], dtype=np.complex128)
+        if result.shape != (len(vectors), frequency_hz.size):
+            raise SimulationError("the analysis came back incomplete")
+        if not np.isfinite(result).all():
+            raise SimulationError("the analysis gave values that are not finite numbers")
+        return result
+
+    def _command(self, command: str) -> None:
+        try:
+            self._shared.exec_command(command)
+        except NameError as error:
+            raise SimulationError(self._said() or str(error)) from error
+        complaints = self._complaints()
+        if complaints:
+            raise SimulationError("; ".join(complaints))
+
+    def _quietly(self, command: str) -> None:
+        """Run a command whose complaint, that there is nothing to remove, does not matter."""
+        try:
+            self._shared.exec_command(command)
+        except NameError:
+            return
+
+    def _complaints(self) -> list[str]:
+        lines = (line.strip() for line in self._shared.stderr.splitlines())
+        return [line for line in lines if line and not line.startswith(HARMLESS)]
+
+    def _said(self) -> str:
+        """The error text of the last command, or its output where it printed the error there."""
+        return "; ".join(self._complaints() or [
+            line.strip() for line in self._shared.stdout.splitlines() if "error" in line.lower()
+        ])
+
+
+@cache
+def engine() -> Engine:
+    """Return the engine of this process, started at the first call."""
+    return Engine()
+

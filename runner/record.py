@@ -1,0 +1,72 @@
+"""The record of a run: what makes it repeatable."""
+
+from __future__ import annotations
+
+import platform
+from datetime import datetime
+from importlib.metadata import version
+from pathlib import Path
+from typing import Any
+
+from modepair.runner.results import Results
+from modepair.sweeps import Sweep
+
+__all__ = ["run_record", "versions"]
+
+
+def versions(engine: str) -> dict[str, str]:
+    """Versions of what computes a run.
+
+    Parameters
+    ----------
+    engine : str
+        Version of ngspice.
+
+    Returns
+    -------
+    dict of str to str
+        modepair, ngspice, PySpice, numpy, Python.
+    """
+    packages = {name: version(name) for name in ("modepair", "PySpice", "numpy")}
+    return {**packages, "ngspice": engine, "Python": platform.python_version()}
+
+
+def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float) -> dict[str, Any]:
+    """Content of `run.json`.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        The sweep.
+    results : Results
+        What it came to.
+    started : datetime
+        When it began.
+    seconds : float
+        How long it took, up to the writing of this record.
+
+    Returns
+    -------
+    dict
+        Spec text and digest, op-amp data, versions, times, counts.
+    """
+    spec = sweep.spec
+    used = sorted({name for block in sweep.blocks for name in block.opamps.values()})
+    failed = int((results.cases["state"] != "done").sum())
+    return {
+        "title": spec.title,
+        "spec_file": Path(spec.path).name,
+        "spec_digest": spec.digest,
+        "spec": spec.text,
+        "opamps": {name: spec.candidates[name].model_dump(exclude_none=True) for name in used},
+        "axes": {axis.path: list(axis.labels) for axis in sweep.axes},
+        "versions": versions(results.engine),
+        "seed": None,
+        "started": started.isoformat(timespec="seconds"),
+        "seconds": round(seconds, 3),
+        "counts": {
+            "cases": sweep.count,
+            "failed": failed,
+            "frequencies": len(spec.frequency.frequency_hz),
+        },
+    }

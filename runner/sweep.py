@@ -1,0 +1,113 @@
+"""A run: from a sweep spec to a run folder."""
+
+from __future__ import annotations
+
+import os
+import time
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from functools import cached_property
+from pathlib import Path
+
+import pandas as pd
+
+from modepair.circuits import candidates
+from modepair.runner.analyses import plan_analyses
+from modepair.runner.batches import plan_batches
+from modepair.runner.decks import write_decks
+from modepair.runner.engine import locate_library
+from modepair.runner.folder import run_folder
+from modepair.runner.pool import ExecutorFactory, solve_batches, worker_pool
+from modepair.runner.record import run_record
+from modepair.runner.results import Progress, collect
+from modepair.runner.written import write_reports
+from modepair.sweeps import Spec, expand, load_spec
+
+__all__ = ["Run", "run"]
+
+
+@dataclass(frozen=True)
+class Run:
+    """What a run left behind.
+
+    Attributes
+    ----------
+    folder : Path
+        The run folder.
+    spec : Spec
+        What was asked.
+    cases : DataFrame
+        A row per case: `case`, a column per axis, the figures, and `state`.
+    """
+
+    folder: Path
+    spec: Spec
+    cases: pd.DataFrame
+
+    @cached_property
+    def curves(self) -> pd.DataFrame:
+        """A row per solved case, draw and frequency; read from the run folder."""
+        return pd.read_parquet(self.folder / "curves.parquet")
+
+    @property
+    def failed(self) -> int:
+        """Number of failed cases."""
+        return int((self.cases["state"] != "done").sum())
+
+
+def run(
+    spec: Spec | str | Path,
+    output: str | Path | None = None,
+    *,
+    jobs: int | None = None,
+    progress: Progress | None = None,
+    executors: ExecutorFactory | None = None,
+) -> Run:
+    """Run a sweep and write its run folder.
+
+    Parameters
+    ----------
+    spec : Spec, str or Path
+        The spec, or its file.
+    output : str or Path, optional
+        The run folder; `runs/<name of the spec's file>` where absent.
+    jobs : int, optional
+        Number of worker processes; the number of processors where absent.
+    progress : callable, optional
+        Called with the number of results so far and of all.
+    executors : callable, optional
+        Makes a `concurrent.futures.Executor` of so many workers, in place of local processes.
+
+    Returns
+    -------
+    Run
+        With a row for each case; a case that failed says why, and the others are complete.
+
+    Raises
+    ------
+    SpecError
+        If the spec cannot be used.
+    EngineMissingError
+        If there is no ngspice library.
+    OutputError
+        If the run folder cannot be written.
+    """
+    started = datetime.now(UTC)
+    clock = time.perf_counter()
+    if not isinstance(spec, Spec):
+        spec = load_spec(spec, candidates())
+    locate_library()
+    sweep = expand(spec)
+    analyses = plan_analyses(spec.frequency)
+    plans = plan_batches(sweep)
+    target = Path(output) if output is not None else Path("runs") / Path(spec.path).stem
+    workers = min(jobs or os.cpu_count() or 1, len(plans))
+    with run_folder(target) as folder, worker_pool() as local:
+        batches = (plan.batch() for plan in plans)
+        solved = solve_batches(batches, analyses, executors or local, workers)
+        results = collect(solved, sweep, analyses.frequency_hz, folder.path("curves.parquet"), progress)
+        results.cases.to_csv(folder.path("cases.csv"), index=False)
+        write_decks(folder, sweep, plans, analyses)
+        write_reports(folder, sweep, results)
+        folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
+    return Run(folder.target, spec, results.cases)
