@@ -26,8 +26,8 @@ def random_parts(topology: str, rng: np.random.Generator) -> dict[str, float]:
     Returns
     -------
     dict
-        Part name to SI value. Half of the stages have resistors off by parts per thousand, half are matched far
-        better, so that CMRR reaches 140 dB too. Each op-amp is a different one, with gains of 80 to 140 dB,
+        Part name to SI value. Half of the stages have resistors off by parts per thousand, half are matched
+        far better, so that CMRR reaches 140 dB too. Each op-amp is a different one: gains of 80 to 140 dB,
         gain-bandwidths of 100 kHz to 50 MHz, CMRR of either sign with and without a corner, phase margins,
         input and output impedances; the source has cable, filter and bias. Every optional part is sometimes
         absent.
@@ -90,7 +90,7 @@ def random_parts(topology: str, rng: np.random.Generator) -> dict[str, float]:
 
     pair("RSP", "RSN", spread(10, 1e4), 0.8)
     if rng.random() < 0.8:
-        parts["RI"] = care * spread(1, 1e4) * float(rng.choice((-1, 1)))
+        parts["RI"] = max(0.1, care * spread(1, 1e4)) * float(rng.choice((-1, 1)))
         if rng.random() < 0.5:
             parts["CI"] = spread(1e-10, 1e-7)
     pair("CCP", "CCN", spread(1e-11, 5e-9), 0.8)
