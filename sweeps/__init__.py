@@ -2,7 +2,7 @@
 
 from modepair.sweeps.axes import Axis
 from modepair.sweeps.cases import Block, Sweep, expand
-from modepair.sweeps.faults import Fault, ModepairError, Refusal, SpecError
+from modepair.sweeps.faults import Fault, ModepairError, RefusedError, SpecError
 from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, TOPOLOGIES, resolve_parts
 from modepair.sweeps.quantities import render
 from modepair.sweeps.reader import load_spec, read_candidates
@@ -19,7 +19,7 @@ __all__ = [
     "Frequency",
     "ModepairError",
     "Opamp",
-    "Refusal",
+    "RefusedError",
     "Source",
     "Spec",
     "SpecError",

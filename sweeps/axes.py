@@ -10,10 +10,9 @@ from functools import cache
 from types import UnionType
 from typing import Any
 
-from modepair.sweeps.faults import Refusal, Refusals, shown
+from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.parts import OPAMP_PARAMETERS
-from modepair.sweeps.quantities import Kind
-from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKey
+from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKeyError
 from modepair.sweeps.words import suggestion
 from pydantic import BaseModel
 
@@ -115,7 +114,7 @@ def setting_at(path: str, known: Mapping[str, Leaf]) -> Leaf:
 
     Raises
     ------
-    Refusal
+    RefusedError
         With the nearest known path, when there is no such setting.
     """
     leaf = known.get(re.sub(r"\[[0-9]+\]", "[]", path))
@@ -123,7 +122,7 @@ def setting_at(path: str, known: Mapping[str, Leaf]) -> Leaf:
         near = (
             suggestion(path, known) or "; paths are such as stage.opamp, stage.parts.R1 or source.imbalance"
         )
-        raise UnknownKey(f"there is no setting {shown(path)} to vary{near}")
+        raise UnknownKeyError(f"there is no setting {shown(path)} to vary{near}")
     return leaf
 
 
@@ -145,36 +144,30 @@ def read_axis(path: str, written: object, known: Mapping[str, Leaf]) -> Axis:
 
     Raises
     ------
-    Refusal
+    RefusedError
         When the path is unknown or there is no list of values.
-    Refusals
+    SeveralRefusedError
         One for each value that is refused or given twice, located by its index.
     """
     leaf = setting_at(path, known)
     if not isinstance(written, list | tuple):
-        what = f"{shown(str(written))} is not a list" if isinstance(written, str) else "this is not a list"
-        raise Refusal(what, "a list of values, such as [a, b]")
+        raise RefusedError(form_of(written), "a list of values, such as [a, b]")
     if not written:
-        raise Refusal("the list is empty", "at least one value")
+        raise RefusedError("the list is empty", "at least one value")
     values: dict[Any, int] = {}
     labels: list[str] = []
-    refusals: list[tuple[tuple[str | int, ...], Refusal]] = []
+    refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
     for index, item in enumerate(written):
         try:
             value = leaf.parse(item)
             if value in values:
                 first = written[values[value]]
                 same = "" if first == item else f" (as {shown(str(first))})"
-                raise Refusal(f"{shown(str(item))} is on this axis twice{same}; remove one of them")
+                raise RefusedError(f"{shown(str(item))} is on this axis twice{same}; remove one of them")
             values[value] = index
             labels.append(str(item).strip())
-        except Refusal as refusal:
-            refusals.append(((index,), Refusal(refusal.what, refusal.takes)))
+        except RefusedError as refusal:
+            refusals.append(((index,), RefusedError(refusal.what, refusal.takes)))
     if refusals:
-        raise Refusals(refusals)
+        raise SeveralRefusedError(refusals)
     return Axis(path, tuple(values), tuple(labels))
-
-
-def varies_number(path: str, known: Mapping[str, Leaf]) -> bool:
-    """Return whether the setting at `path` is a number."""
-    return isinstance(setting_at(path, known), Kind)

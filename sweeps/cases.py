@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from modepair.sweeps.axes import Axis
-from modepair.sweeps.faults import Fault, Refusal, SpecError
+from modepair.sweeps.faults import Fault, RefusedError, SpecError
 from modepair.sweeps.parts import TOPOLOGIES, Value, gain_refusals, parts_for_gain, resolve_parts
 from modepair.sweeps.spec import Spec
 from numpy.typing import NDArray
@@ -108,7 +108,7 @@ def expand(spec: Spec) -> Sweep:
     """
     try:
         blocks = [block for raw in _raw_blocks(spec) for block in _resolved(*raw)]
-    except Refusal as refusal:
+    except RefusedError as refusal:
         raise SpecError(gain_faults(spec) or [Fault(spec.path, 0, 0, "", str(refusal))]) from refusal
     blocks.sort(key=lambda block: int(block.case[0]))
     return Sweep(spec, spec.axes, _count(spec.axes), tuple(blocks))

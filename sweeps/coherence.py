@@ -1,6 +1,7 @@
 """Coherence: what the keys of a spec must agree on between them.
 
-The checks look at which keys the document has, so that they find their faults even where single values are refused.
+The checks look at which keys the document has, so that they find their faults even where single values are
+refused.
 """
 
 from __future__ import annotations
@@ -9,7 +10,7 @@ from collections.abc import Collection, Iterator, Mapping
 
 from modepair.sweeps.axes import MOST_CASES
 from modepair.sweeps.document import Document, Location, Node
-from modepair.sweeps.faults import Fault, Refusal, shown
+from modepair.sweeps.faults import Fault, RefusedError, shown
 from modepair.sweeps.parts import (
     INSTANCES,
     OPAMP_PARAMETERS,
@@ -21,7 +22,7 @@ from modepair.sweeps.parts import (
     Topology,
 )
 from modepair.sweeps.quantities import FREQUENCY
-from modepair.sweeps.schema import MOST_SPOTS, SPOT_MATCH
+from modepair.sweeps.schema import MOST_SPOTS, OPAMP_NAME, SPOT_MATCH
 from modepair.sweeps.words import listed, suggestion
 
 
@@ -34,11 +35,14 @@ class Coherence:
         The spec as read.
     names
         Names of all op-amp candidates.
+    all_named
+        Whether every candidate file could be read, so that a name not in `names` is unknown.
     """
 
-    def __init__(self, document: Document, names: Collection[str]) -> None:
+    def __init__(self, document: Document, names: Collection[str], *, all_named: bool = True) -> None:
         self.document = document
         self.names = names
+        self.all_named = all_named
         vary = document.node(("vary",))
         self.axes: dict[str, Node] = dict(vary.entries or {}) if vary else {}
         self.topologies = [
@@ -87,7 +91,8 @@ class Coherence:
             product = " x ".join(map(str, lengths[:10])) + (" x ..." if len(lengths) > 10 else "")
             yield self.document.fault(
                 ("vary",),
-                f"the axes make {count:,} cases ({product}); at most {MOST_CASES:,} are taken, so shorten an axis",
+                f"the axes make {count:,} cases ({product}); "
+                f"at most {MOST_CASES:,} are taken, so shorten an axis",
                 at_key=True,
             )
 
@@ -95,7 +100,7 @@ class Coherence:
         def value(*location: str | int) -> float | None:
             try:
                 return FREQUENCY.parse(self._text(("frequency", *location)))
-            except Refusal:
+            except RefusedError:
                 return None
 
         start, stop = value("start"), value("stop")
@@ -172,11 +177,12 @@ class Coherence:
             for part in topology.required
             if part not in set_by_gain and not self._given(f"stage.parts.{part}")
         ]
-        if missing:
+        section = self.document.node(("stage", "parts"))
+        if missing and (section is None or section.entries is not None):
             instead = ""
             if not gain and any(part in topology.set_by_gain for part in missing):
                 instead = f" (or gain, which sets {listed(topology.set_by_gain)})"
-            location = ("stage", "parts") if self.document.has(("stage", "parts")) else ("stage",)
+            location = ("stage", "parts") if section else ("stage",)
             message = (
                 f"the {topology.name} stage needs {listed(missing)}{instead}; give a value for each in parts"
             )
@@ -195,7 +201,7 @@ class Coherence:
             yield self.document.fault(("stage",), message, at_key=True)
         for path in ("stage.opamp", *(f"stage.opamps.{instance}" for instance in each)):
             for location, name in self._words(path):
-                if name not in self.names:
+                if self.all_named and name not in self.names and OPAMP_NAME.pattern.fullmatch(name):
                     near = (
                         suggestion(name, self.names)
                         or f"; known candidates: {listed(sorted(self.names)[:20])}"
@@ -213,7 +219,8 @@ class Coherence:
         missing = [instance for instance in self.instances if instance not in each]
         if missing and not one:
             location = ("stage", "opamps") if self.document.has(("stage", "opamps")) else ("stage",)
-            message = f"the {in_use} stage needs op-amps {listed(self.instances)}; name one for {listed(missing)} too"
+            needs = f"the {in_use} stage needs op-amps {listed(self.instances)}"
+            message = f"{needs}; name one for {listed(missing)} too"
             yield self.document.fault(location, message, at_key=True)
 
     def _overridden(self) -> Iterator[Fault]:

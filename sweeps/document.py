@@ -1,8 +1,8 @@
 """The YAML reader: plain text, mappings and lists, each with the line and column where it stands.
 
-Every scalar stays the text that was written: YAML's own guesses (``no`` as a truth value, ``1:30`` as ninety, ``010``
-as eight) never happen. What a spec has no use for is refused: keys given twice, tags, anchors and aliases, merge
-keys, directives, more than one document, deep nesting, control characters.
+Every scalar stays the text that was written: YAML's own guesses (``no`` as a truth value, ``1:30`` as ninety,
+``010`` as eight) never happen. What a spec has no use for is refused: keys given twice, tags, anchors and
+aliases, merge keys, directives, more than one document, deep nesting, control characters.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Any
 
 import yaml
 from modepair.sweeps.faults import Fault, SpecError, shown
@@ -122,7 +123,7 @@ class Document:
         return _walk(self.root, tuple(location))[0]
 
     def key_place(self, location: Sequence[str | int]) -> Place:
-        """Return where the key (or list item) at `location` stands, or the nearest one above it that exists."""
+        """Return where the key or list item at `location` stands, or the nearest one above that exists."""
         return _walk(self.root, tuple(location))[1]
 
     def value_place(self, location: Sequence[str | int]) -> Place:
@@ -193,21 +194,26 @@ def read_document(path: str | Path) -> Document:
 
 def _read_text(path: str | Path) -> str:
     file = str(path)
+    data = b""
     try:
+        # A pipe or a device is not opened: it could block for ever, or never end.
         where = Path(path)
         if not where.exists():
-            raise SpecError([Fault(file, 0, 0, "", "no such file")])
-        if where.is_dir():
-            raise SpecError([Fault(file, 0, 0, "", "this is a directory; a YAML file is needed")])
-        if not where.is_file():
-            raise SpecError([Fault(file, 0, 0, "", "this is not a regular file; a YAML file is needed")])
-        with where.open("rb") as stream:
-            data = stream.read(LARGEST_FILE + 1)
+            problem = "no such file"
+        elif where.is_dir():
+            problem = "this is a directory; a YAML file is needed"
+        elif not where.is_file():
+            problem = "this is not a regular file; a YAML file is needed"
+        else:
+            problem = ""
+            with where.open("rb") as stream:
+                data = stream.read(LARGEST_FILE + 1)
     except OSError as error:
-        reason = (error.strerror or "unknown reason").lower()
-        raise SpecError([Fault(file, 0, 0, "", f"the file cannot be read: {reason}")]) from error
-    except ValueError as error:
-        raise SpecError([Fault(file, 0, 0, "", "this is not a file name")]) from error
+        problem = f"the file cannot be read: {(error.strerror or 'unknown reason').lower()}"
+    except ValueError:
+        problem = "this is not a file name"
+    if problem:
+        raise SpecError([Fault(file, 0, 0, "", problem)])
     if len(data) > LARGEST_FILE:
         raise SpecError(
             [Fault(file, 0, 0, "", f"the file is larger than {LARGEST_FILE:,} bytes, the most allowed")]
@@ -271,7 +277,9 @@ class _Builder:
             elif isinstance(event, yaml.MappingEndEvent | yaml.SequenceEndEvent):
                 self._close()
             elif isinstance(event, yaml.AliasEvent):
-                self._fault(self.last, f"the alias *{shown(event.anchor)} is not taken; write the value out")
+                self._fault(
+                    self.last, f"the alias *{shown(event.anchor or '')} is not taken; write the value out"
+                )
                 self.unread.add(self.last)
                 self._add(Node(self.last, text=""), self.last)
         if self.root is None or (self.root.text is not None and not self.root.text.strip()):
@@ -370,8 +378,8 @@ class _Builder:
         return node.text
 
 
-def _place(mark: yaml.Mark) -> Place:
-    return Place(mark.line + 1, mark.column + 1)
+def _place(mark: Any) -> Place:
+    return Place(mark.line + 1, mark.column + 1) if mark else Place(1, 1)
 
 
 def _syntax(error: yaml.MarkedYAMLError, text: str, place: Place) -> str:

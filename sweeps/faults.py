@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 SHOWN_LENGTH = 60
@@ -38,7 +38,17 @@ def shown(text: str) -> str:
     )
 
 
-class Refusal(ModepairError, ValueError):
+def form_of(written: object) -> str:
+    """Say what form a value has that is of the wrong form: a mapping, a list, a single value, or none."""
+    if isinstance(written, Mapping):
+        return "this is a mapping"
+    if isinstance(written, list | tuple):
+        return "this is a list"
+    text = "" if written is None else str(written).strip()
+    return f"{shown(text)} is a single value" if text else "no value is given"
+
+
+class RefusedError(ModepairError, ValueError):
     """A value that a key does not take; it does not know yet where the value stands.
 
     Parameters
@@ -56,13 +66,15 @@ class Refusal(ModepairError, ValueError):
 
     def message(self, name: str) -> str:
         """Return the wording for the key called `name`."""
-        return f"{self.what}; {name} takes {self.takes}" if self.takes else self.what
+        if not self.takes:
+            return self.what
+        return f"{self.what}{'' if self.what.endswith('?') else ';'} {name} takes {self.takes}"
 
     def __str__(self) -> str:
         return self.message("this key")
 
 
-class Refusals(ModepairError, ValueError):
+class SeveralRefusedError(ModepairError, ValueError):
     """Several refusals inside one mapping or list, each with its place relative to it.
 
     Parameters
@@ -71,7 +83,7 @@ class Refusals(ModepairError, ValueError):
         Pairs of a relative location (keys and list indexes) and the refusal there.
     """
 
-    def __init__(self, refusals: Iterable[tuple[tuple[str | int, ...], Refusal]]) -> None:
+    def __init__(self, refusals: Iterable[tuple[tuple[str | int, ...], RefusedError]]) -> None:
         self.refusals = tuple(refusals)
         super().__init__(self.refusals)
 

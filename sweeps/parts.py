@@ -1,4 +1,4 @@
-"""The vocabulary of parts: their names, their kinds, the stages that have them, and how settings give their values."""
+"""The vocabulary of parts: names, kinds, the stages that have them, and how settings give their values."""
 
 from __future__ import annotations
 
@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
-from modepair.sweeps.faults import Refusal
+from modepair.sweeps.faults import RefusedError
 from modepair.sweeps.quantities import (
     ANGLE,
     CAPACITANCE,
@@ -24,7 +24,7 @@ Value = float | NDArray[np.float64]
 """One SI value, or one per case: shape (n,)."""
 
 RG_LESS = 1e-9
-"""Relative distance from the gain without RG below which RG is left out; far below any resistor's tolerance."""
+"""Relative distance from the gain without RG below which RG is left out; far below any tolerance."""
 
 
 @dataclass(frozen=True)
@@ -148,7 +148,7 @@ STAGE_PART_KINDS: dict[str, Kind] = {
     **{name: PARTS[name].kind for name in _STAGE_PARTS},
     **{f"{a}.{parameter}": kind for a in INSTANCES for parameter, kind in OPAMP_PARAMETERS.items()},
 }
-"""What `stage.parts` takes: passive parts, and parameters of op-amp instances such as ``A1.gain_bandwidth``."""
+"""What `stage.parts` takes: passive parts, and parameters of instances such as ``A1.gain_bandwidth``."""
 
 SOURCE_PART_KINDS: dict[str, Kind] = {name: PARTS[name].kind for name in _SOURCE_PARTS}
 """What `source.parts` takes."""
@@ -203,8 +203,9 @@ def least_gain(topology: str, parts: Mapping[str, Value]) -> Value:
 def parts_for_gain(topology: str, gain: Value, parts: Mapping[str, Value]) -> dict[str, Value]:
     """Return the values of the parts that set a stage's gain.
 
-    The closed forms are the stages' ideal differential gain solved for the part: difference G = R2/R1 = R4/R3;
-    three-op-amp G = (1 + (RF1 + RF2)/RG) R2/R1; two-op-amp G = 1 + R4/R3 + 2 R4/RG (for R1 = R4, R2 = R3).
+    The closed forms are the stages' ideal differential gain solved for the part: difference
+    G = R2/R1 = R4/R3; three-op-amp G = (1 + (RF1 + RF2)/RG) R2/R1; two-op-amp G = 1 + R4/R3 + 2 R4/RG (for
+    R1 = R4, R2 = R3).
 
     Parameters
     ----------
@@ -253,12 +254,12 @@ def resolve_parts(
     Returns
     -------
     dict of str to float or ndarray of shape (n,)
-        SI values by part name; absent parts have no key. RG is infinite in rows whose gain needs none, and has
-        no key where no row has it.
+        SI values by part name; absent parts have no key. RG is infinite in rows whose gain needs none, and
+        has no key where no row has it.
 
     Raises
     ------
-    Refusal
+    RefusedError
         When a gain is below the least that the stage can have, or needs a part out of any range.
     """
     stage = TOPOLOGIES[topology]
@@ -291,7 +292,7 @@ def _checked_gain(topology: str, gain: Value, parts: Mapping[str, Value]) -> dic
 
 def gain_refusals(
     topology: str, gain: Value, parts: Mapping[str, Value], given: Mapping[str, Value]
-) -> dict[float, Refusal]:
+) -> dict[float, RefusedError]:
     """Return why gains cannot be had, by gain.
 
     Parameters
@@ -307,10 +308,10 @@ def gain_refusals(
 
     Returns
     -------
-    dict of float to Refusal
+    dict of float to RefusedError
         One refusal for each distinct gain that some row cannot have.
     """
-    refusals: dict[float, Refusal] = {}
+    refusals: dict[float, RefusedError] = {}
     for name, value in given.items():
         values, gains, least = np.broadcast_arrays(
             np.asarray(value, dtype=np.float64),
@@ -324,12 +325,12 @@ def gain_refusals(
             if asked in refusals:
                 continue
             if np.isnan(values.flat[row]):
-                refusals[asked] = Refusal(
-                    f"a gain of {asked:g} is below {float(least.flat[row]):.6g}, the least that the {topology} "
-                    f"stage has with these resistors (without RG)"
+                refusals[asked] = RefusedError(
+                    f"a gain of {asked:g} is below {float(least.flat[row]):.6g}, the least that the "
+                    f"{topology} stage has with these resistors (without RG)"
                 )
             else:
-                refusals[asked] = Refusal(
+                refusals[asked] = RefusedError(
                     f"a gain of {asked:g} needs {name} = {render(float(values.flat[row]), 'Ω')}, "
                     f"out of range; {name} takes {kind.limits}"
                 )

@@ -1,8 +1,8 @@
 """Quantities as they are written in a spec: a number, an SI prefix, a unit.
 
-A strict pattern decides whether a text is a quantity of the kind asked for; only then does quantiphy convert it.
-Value codes with the prefix in place of the decimal point (4k7, 2R2, 4n7) follow IEC 60062. As in SI, M is
-mega and m is milli. Everything else is refused: no text is ever read as another number than the one it states.
+A strict pattern decides whether a text is a quantity of the kind asked for; only then does quantiphy convert
+it. Value codes with the prefix in place of the decimal point (4k7, 2R2, 4n7) follow IEC 60062. As in SI, M is
+mega and m is milli. Everything else is refused: no text is read as another number than the one it states.
 """
 
 from __future__ import annotations
@@ -13,7 +13,7 @@ from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
 
-from modepair.sweeps.faults import Refusal, shown
+from modepair.sweeps.faults import RefusedError, form_of, shown
 from quantiphy import Quantity
 
 _PREFIXES = "afpnuµμmkKMGTP"
@@ -131,6 +131,18 @@ class Kind:
     whole: bool = False
     choices: tuple[float, ...] = ()
 
+    @property
+    def pattern(self) -> str:
+        """Regular expression of the forms that are read, in the syntax of JSON Schema as of Python."""
+        forms = [] if self.decibels == "only" else [self._plain.pattern]
+        if self.codes:
+            forms.append(self._coded.pattern)
+        if self.decibels != "no":
+            forms.append(f"{_NUMBER} ?dB")
+        if self.percents:
+            forms.append(f"{_NUMBER}(?:{_EXPONENT})? ?(?:%|ppm)")
+        return f"^(?:{'|'.join(forms)})$"
+
     @cached_property
     def _plain(self) -> re.Pattern[str]:
         units = "|".join(map(re.escape, self.units)) or "(?!)"
@@ -198,27 +210,22 @@ class Kind:
 
         Raises
         ------
-        Refusal
+        RefusedError
             When the text is no quantity of this kind, or is beyond its limits.
         """
-        if isinstance(written, int | float) and not isinstance(written, bool):
-            return self._within(float(written), f"{written}")
+        if isinstance(written, float):
+            return self._within(written, f"{written}")
+        if isinstance(written, int) and not isinstance(written, bool):
+            written = str(written)
         if not isinstance(written, str):
-            form = (
-                "a mapping"
-                if isinstance(written, dict)
-                else "a list"
-                if isinstance(written, list)
-                else "not a value"
-            )
-            raise Refusal(f"this is {form}", self.takes)
-        text = " ".join(written.translate(_SPACES).split(" ")).strip(" ")
-        while "  " in text:
-            text = text.replace("  ", " ")
+            raise RefusedError(form_of(written), self.takes)
+        text = re.sub(" +", " ", written.translate(_SPACES)).strip(" ")
         if not text:
-            raise Refusal("no value is given", self.takes)
+            raise RefusedError("no value is given", self.takes)
         if len(text) > _LONGEST:
-            raise Refusal(f"{shown(text)} is {len(text)} characters long, too long for a number", self.takes)
+            raise RefusedError(
+                f"{shown(text)} is {len(text)} characters long, too long for a number", self.takes
+            )
         return self._within(self._convert(text), text)
 
     def _convert(self, text: str) -> float:
@@ -228,11 +235,11 @@ class Kind:
             return float(10.0 ** max(-300.0, min(300.0, exponent)))
         if self.percents and (match := re.fullmatch(rf"({_NUMBER})({_EXPONENT})? ?(%|ppm)", text)):
             self._check_zeros(match[1], text)
-            return float(f"{match[1]}{match[2] or ''}") / (100.0 if match[3] == "%" else 1e6)
+            return self._number(match[1] + (match[2] or ""), "", text) / (100.0 if match[3] == "%" else 1e6)
         if match := self._plain.fullmatch(text):
             self._check_zeros(match[1], text)
             if self.decibels == "only":
-                raise Refusal(f"{text} has no unit; write {match[1]} dB if dB is meant", self.takes)
+                raise RefusedError(f"{text} has no unit; write {match[1]} dB if dB is meant", self.takes)
             return self._number(match[1] + (match[2] or ""), match[3] or "", text)
         if self.codes and (match := self._coded.fullmatch(text)):
             sign, whole, prefix, part = match.groups()
@@ -241,12 +248,12 @@ class Kind:
                 return self._number(
                     f"{sign}{whole or '0'}.{part}", "" if prefix == self.code else prefix, text
                 )
-        raise Refusal(_complaint(text, self), self.takes)
+        raise RefusedError(_complaint(text, self), self.takes)
 
     def _check_zeros(self, number: str, text: str) -> None:
         digits = number.lstrip("+-").split(".")[0]
         if len(digits) > 1 and digits.startswith("0"):
-            raise Refusal(
+            raise RefusedError(
                 f"{text} begins with a zero; write {text.replace(digits, digits.lstrip('0') or '0', 1)}"
             )
 
@@ -254,45 +261,44 @@ class Kind:
         prefix = prefix.replace("K", "k").replace("µ", "u").replace("μ", "u")
         value = float(_Figure(f"{number}{prefix}"))
         if value == 0 and any(digit in "123456789" for digit in re.split("[eE]", number)[0]):
-            raise Refusal(f"{text} is too small for a number", self.limits)
+            raise RefusedError(f"{text} is too small for a number", self.limits)
         return value
 
     def _within(self, value: float, text: str) -> float:
         text = shown(text)
         if math.isnan(value) or math.isinf(value):
-            raise Refusal(f"{text} is not a finite number", self.limits)
+            raise RefusedError(f"{text} is not a finite number", self.limits)
         if self.choices:
             if value not in self.choices:
-                raise Refusal(f"{text} is not among the values", self.limits)
+                raise RefusedError(f"{text} is not among the values", self.limits)
             return value
         if value == 0:
             if not self.zero:
-                raise Refusal(f"{text} is zero", self.limits)
+                raise RefusedError(f"{text} is zero", self.limits)
             return 0.0
         if value < 0 and not self.signed:
-            raise Refusal(f"{text} is negative", self.limits)
+            raise RefusedError(f"{text} is negative", self.limits)
         if not self.least <= abs(value) <= self.most:
-            raise Refusal(f"{text} is out of range", self.limits)
+            raise RefusedError(f"{text} is out of range", self.limits)
         if self.whole and value != int(value):
-            raise Refusal(f"{text} is not a whole number", self.limits)
+            raise RefusedError(f"{text} is not a whole number", self.limits)
         if self.plain_from and value < self.plain_from and not text.endswith("dB"):
             decibels = 20 * math.log10(value)
-            raise Refusal(
+            raise RefusedError(
                 f"{text} could be dB or a ratio; write {text} dB, or {decibels:.4g} dB if the ratio is meant"
             )
         return value
 
     def json_schema(self) -> dict[str, Any]:
         """Return the JSON Schema of a value of this kind, for editors."""
-        examples: list[str | int] = [int(self.example) if self.example.isdigit() else self.example]
         if self.choices:
-            return {
-                "enum": [
-                    *(int(choice) for choice in self.choices),
-                    *(f"{choice:g}" for choice in self.choices),
-                ]
-            }
-        return {"type": ["string", "number"], "description": self.limits, "examples": examples}
+            return {"enum": [form(choice) for form in (int, "{:g}".format) for choice in self.choices]}
+        return {
+            "type": "string" if self.decibels == "only" else ["string", "number"],
+            "pattern": self.pattern,
+            "description": self.limits,
+            "examples": [int(self.example) if self.example.isdigit() else self.example],
+        }
 
 
 def _complaint(text: str, kind: Kind) -> str:
@@ -306,7 +312,8 @@ def _complaint(text: str, kind: Kind) -> str:
         return f"{shown(text)} is not a number{_strange(text)}"
     suffix = text[match.end() :]
     if meg := re.fullmatch(r"meg ?(.*)", suffix, re.IGNORECASE):
-        return f"{shown(text)} has SPICE's meg for mega; write {match[1]}M{meg[1] if meg[1] in kind.units else ''}"
+        unit = meg[1] if meg[1] in kind.units else ""
+        return f"{shown(text)} has SPICE's meg for mega; write {match[1]}M{unit}"
     for unit, noun in _UNIT_KINDS.items():
         prefixed = re.fullmatch(rf"[{_PREFIXES}]? ?{re.escape(unit)}", suffix)
         if prefixed and unit not in kind.units and noun != kind.noun:

@@ -10,9 +10,9 @@ from modepair.sweeps.axes import Axis, read_axis, settings
 from modepair.sweeps.cases import gain_faults
 from modepair.sweeps.coherence import Coherence, candidate_faults
 from modepair.sweeps.document import Document, Location, read_document
-from modepair.sweeps.faults import Fault, Refusal, Refusals, SpecError, shown
+from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, SpecError, form_of, shown
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
-from modepair.sweeps.schema import FILE_NAME, Opamp, UnknownKey
+from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
 from modepair.sweeps.spec import CandidateFile, Spec
 from modepair.sweeps.words import listed, suggestion
 from pydantic import BaseModel, ValidationError
@@ -50,11 +50,11 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     from_files, nested = _read_files(document)
     raw: dict[str, Any] = document.root.raw  # type: ignore[assignment]
     in_place = raw.get("opamps")
-    names = [*candidates, *from_files, *(in_place if isinstance(in_place, dict) else ())]
-    known = settings(dict.fromkeys(names))
+    written = [*candidates, *from_files, *(in_place if isinstance(in_place, dict) else ())]
+    names = [name for name in dict.fromkeys(written) if OPAMP_NAME.pattern.fullmatch(name)]
     faults = list(document.faults)
-    axes, axis_faults = _read_axes(document, raw.get("vary", {}), known)
-    faults += axis_faults
+    axes, axis_faults = _read_axes(document, raw.get("vary", {}), settings(names))
+    faults += [fault for fault in axis_faults if not nested or not fault.key.startswith("vary.opamps.")]
     if isinstance(raw.get("vary"), dict):
         _fill(raw, axes)
         raw["vary"] = {axis.path: axis.labels for axis in axes}
@@ -63,7 +63,7 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
         spec = Spec.model_validate(raw)
     except ValidationError as error:
         faults += model_faults(document, Spec, error)
-    faults += Coherence(document, list(dict.fromkeys(names))).faults()
+    faults += Coherence(document, names, all_named=not nested).faults()
     ordered = _in_order(document, faults, nested)
     if ordered:
         raise SpecError(ordered)
@@ -121,24 +121,30 @@ def _read_files(document: Document) -> tuple[dict[str, Opamp], dict[Location, tu
         location: Location = ("opamp_files", index)
         try:
             written = FILE_NAME.parse(item.raw)
-        except Refusal:
+        except RefusedError:
             continue
         if not written:
             nested[location] = (document.fault(location, "no value is given; a file name is needed"),)
             continue
         path = Path(document.file).parent / written
-        if not path.is_file():
-            message = f"there is no file {shown(written)} (looked for {shown(str(path))}); paths start at the spec's folder"
-            nested[location] = (document.fault(location, message),)
-            continue
         try:
             read = read_candidates(path)
         except SpecError as error:
-            nested[location] = error.faults
+            nested[location] = tuple(
+                fault
+                if fault.line
+                else document.fault(
+                    location,
+                    f"{shown(written)} cannot be used: {fault.message} "
+                    f"(looked for {shown(str(path))}; paths start at the spec's folder)",
+                )
+                for fault in error.faults
+            )
             continue
         for name in read:
             if name in found:
-                message = f"{name} is in {shown(written)} and in {shown(source[name])}; rename or remove one of them"
+                both = f"{shown(written)} and in {shown(source[name])}"
+                message = f"{name} is in {both}; rename or remove one of them"
                 nested[location] = (*nested.get(location, ()), document.fault(location, message))
             found[name] = read[name]
             source[name] = written
@@ -151,22 +157,16 @@ def _read_axes(
     axes: list[Axis] = []
     faults: list[Fault] = []
     if not isinstance(written, dict):
-        return (), [
-            document.fault(
-                ("vary",),
-                "no axes are given; vary takes a mapping of lists by path, "
-                "such as {source.imbalance: [0, 10]}",
-            )
-        ]
+        return (), []
     for path, values in written.items():
         location: Location = ("vary", path)
         try:
             axes.append(read_axis(path, values, known))
-        except UnknownKey as refusal:
+        except UnknownKeyError as refusal:
             faults.append(document.fault(location, refusal.what, at_key=True))
-        except Refusal as refusal:
+        except RefusedError as refusal:
             faults.append(document.fault(location, refusal.message("an axis")))
-        except Refusals as refusals:
+        except SeveralRefusedError as refusals:
             name = path.rpartition(".")[2]
             faults += [
                 document.fault((*location, *where), one.message(name)) for where, one in refusals.refusals
@@ -182,7 +182,8 @@ def _fill(raw: dict[str, Any], axes: Sequence[Axis]) -> None:
         if axis.path == "stage.topology" and isinstance(raw.get("stage"), dict):
             raw["stage"].setdefault("topology", axis.labels[0])
         elif section == "opamps" and parameter in REQUIRED_PARAMETERS:
-            candidate = (raw.get("opamps") or {}).get(name)
+            in_place = raw.get("opamps")
+            candidate = in_place.get(name) if isinstance(in_place, dict) else None
             if isinstance(candidate, dict):
                 candidate.setdefault(parameter, axis.labels[0])
 
@@ -193,12 +194,12 @@ def model_faults(document: Document, model: type[BaseModel], error: ValidationEr
         location: Location = item["loc"]
         name = str(next((token for token in reversed(location) if isinstance(token, str)), ""))
         raised = item.get("ctx", {}).get("error")
-        if isinstance(raised, Refusals):
+        if isinstance(raised, SeveralRefusedError):
             for where, refusal in raised.refusals:
                 inner = (*location, *where)
-                at_key = isinstance(refusal, UnknownKey)
+                at_key = isinstance(refusal, UnknownKeyError)
                 yield document.fault(inner, refusal.message(str(inner[-1])), at_key=at_key)
-        elif isinstance(raised, Refusal):
+        elif isinstance(raised, RefusedError):
             yield document.fault(location, raised.message(name))
         elif item["type"] == "missing":
             if name in _MISSING:
@@ -213,16 +214,7 @@ def model_faults(document: Document, model: type[BaseModel], error: ValidationEr
 
 def _form_message(document: Document, location: Location, name: str, problem: str) -> str:
     node = document.node(location)
-    if node is None or node.entries is not None:
-        what = "this is a mapping"
-    elif node.items is not None:
-        what = "this is a list"
-    else:
-        what = (
-            f"{shown(node.text or '')} is a single value"
-            if (node.text or "").strip()
-            else "no value is given"
-        )
+    what = form_of(node.raw if node else None)
     wanted = "a list" if problem in ("tuple_type", "list_type") else "a mapping of keys"
     return f"{what}; {name or 'this'} takes {wanted}"
 

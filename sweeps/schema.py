@@ -1,4 +1,4 @@
-"""The schema of a spec's sections: stage, source, frequency and op-amp candidates, as frozen pydantic models."""
+"""The schema of a spec's sections: stage, source, frequency, op-amp candidates, as frozen models."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from typing import Annotated, Any, Protocol
 
 import numpy as np
-from modepair.sweeps.faults import Refusal, Refusals, shown
+from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.parts import (
     INSTANCES,
     OPAMP_PARAMETERS,
@@ -38,7 +38,7 @@ class Leaf(Protocol):
         """What is taken, for messages."""
 
     def parse(self, written: object) -> Any:
-        """Return the value, or raise `Refusal`."""
+        """Return the value, or raise `RefusedError`."""
 
     def json_schema(self) -> dict[str, Any]:
         """Return the JSON Schema of the value."""
@@ -75,20 +75,20 @@ class ReadsMapping:
     noun: str
 
     def parse(self, written: object) -> dict[str, Any]:
-        """Return the values by key; raise `Refusals` for all that are refused."""
+        """Return the values by key; raise `SeveralRefusedError` for all that are refused."""
         if not isinstance(written, Mapping):
-            raise Refusal(_form(written), f"a mapping of {self.noun}")
+            raise RefusedError(form_of(written), f"a mapping of {self.noun}")
         values: dict[str, Any] = {}
-        refusals: list[tuple[tuple[str | int, ...], Refusal]] = []
+        refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
         for key, value in written.items():
             try:
                 if key not in self.leaves:
-                    raise UnknownKey(unknown(str(key), self.leaves, self.noun))
+                    raise UnknownKeyError(unknown(str(key), self.leaves, self.noun))
                 values[str(key)] = self.leaves[key].parse(value)
-            except Refusal as refusal:
+            except RefusedError as refusal:
                 refusals.append(((str(key),), refusal))
         if refusals:
-            raise Refusals(refusals)
+            raise SeveralRefusedError(refusals)
         return values
 
     def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
@@ -101,7 +101,7 @@ class ReadsMapping:
         return {"type": "object", "additionalProperties": False, "properties": properties}
 
 
-class UnknownKey(Refusal):
+class UnknownKeyError(RefusedError):
     """A refusal of the key itself, not of its value."""
 
 
@@ -114,19 +114,10 @@ def unknown(key: str, known: Mapping[str, Any], noun: str) -> str:
     return f"{shown(key)} is not among the known {noun}{near}"
 
 
-def _form(written: object) -> str:
-    if isinstance(written, Mapping):
-        return "this is a mapping"
-    if isinstance(written, list | tuple):
-        return "this is a list"
-    text = str(written)
-    return f"{shown(text)} is a single value" if text.strip() else "no value is given"
-
-
 OPAMP_NAME = Name("an op-amp name", "quiet-bipolar")
-TITLE = Text("a title", 200)
-NOTE = Text("a note", 500)
-FILE_NAME = Text("a file name", 500)
+TITLE = Text(200)
+NOTE = Text(500)
+FILE_NAME = Text(500)
 TOPOLOGY = Choice("a topology", tuple(TOPOLOGIES))
 
 _SR = PARTS["RSP"].kind
@@ -207,7 +198,8 @@ class Stage(Section):
     Parameters
     ----------
     topology
-        difference, buffered-difference, two-opamp or three-opamp. Where only an axis gives it, its first value.
+        difference, buffered-difference, two-opamp or three-opamp. Where only an axis gives it, its
+        first value.
     parts
         SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``.
     gain
@@ -313,8 +305,8 @@ class Frequency(Section):
     def grid_hz(self) -> NDArray[np.float64]:
         """The logarithmic grid, Hz, shape (G,), both ends included.
 
-        It has max(1, floor(points_per_decade log10(stop/start))) equal steps in log f, as ngspice's ``ac dec``
-        has; 1e-9 is added before rounding down, so that whole decades are not lost to round-off.
+        It has max(1, floor(points_per_decade log10(stop/start))) equal steps in log f, as ngspice's
+        ``ac dec`` has; 1e-9 is added before rounding down, so that whole decades are not lost to round-off.
         """
         if self.start == self.stop:
             return np.array([self.start])

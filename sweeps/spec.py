@@ -8,7 +8,7 @@ from typing import Annotated, Any
 
 from modepair.sweeps.axes import Axis, settings
 from modepair.sweeps.document import Document, Node, Place, split_path
-from modepair.sweeps.faults import Refusal, Refusals
+from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
     FILE_NAME,
@@ -20,7 +20,7 @@ from modepair.sweeps.schema import (
     Section,
     Source,
     Stage,
-    UnknownKey,
+    UnknownKeyError,
 )
 from pydantic import Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
 from pydantic_core import CoreSchema, core_schema
@@ -35,15 +35,15 @@ class _NameKeys:
     @staticmethod
     def _check(written: object, inner: core_schema.ValidatorFunctionWrapHandler) -> Any:
         if isinstance(written, Mapping):
-            refusals: list[tuple[tuple[str | int, ...], Refusal]] = []
+            refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
             for name in written:
                 try:
                     OPAMP_NAME.parse(name)
-                except Refusal as refusal:
+                except RefusedError as refusal:
                     message = f"{refusal.what}; a candidate takes {refusal.takes}"
-                    refusals.append(((str(name),), UnknownKey(message)))
+                    refusals.append(((str(name),), UnknownKeyError(message)))
             if refusals:
-                raise Refusals(refusals)
+                raise SeveralRefusedError(refusals)
         return inner(written)
 
     def __get_pydantic_json_schema__(

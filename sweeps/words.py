@@ -6,9 +6,9 @@ import difflib
 import re
 from collections.abc import Iterable
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, ClassVar
 
-from modepair.sweeps.faults import Refusal, shown
+from modepair.sweeps.faults import RefusedError, form_of, shown
 
 
 def nearest(word: str, known: Iterable[str]) -> str:
@@ -26,7 +26,7 @@ def nearest(word: str, known: Iterable[str]) -> str:
     str
         One of `known`, or empty.
     """
-    by_lower = {item.lower(): item for item in known}
+    by_lower = {item.lower(): item for item in known if item.isprintable()}
     found = difflib.get_close_matches(word[:200].lower(), by_lower, n=1, cutoff=0.6)
     return by_lower[found[0]] if found else ""
 
@@ -46,8 +46,7 @@ def listed(words: Iterable[str]) -> str:
 def _as_text(written: object, takes: str) -> str:
     if isinstance(written, str):
         return written
-    form = "a mapping" if isinstance(written, dict) else "a list" if isinstance(written, list) else "not text"
-    raise Refusal(f"this is {form}", takes)
+    raise RefusedError(form_of(written), takes)
 
 
 @dataclass(frozen=True)
@@ -68,16 +67,16 @@ class Choice:
     @property
     def takes(self) -> str:
         """The words that are taken."""
-        return f"{self.noun}: {', '.join(self.words)}"
+        return f"{', '.join(self.words[:-1])} or {self.words[-1]}"
 
     def parse(self, written: object) -> str:
-        """Return the word; raise `Refusal` with the nearest known one where it is not among the words."""
+        """Return the word; raise `RefusedError` with the nearest known one for any other."""
         text = _as_text(written, self.takes).strip()
         if not text:
-            raise Refusal("no value is given", self.takes)
+            raise RefusedError("no value is given", self.takes)
         if text not in self.words:
             near = suggestion(text, self.words)
-            raise Refusal(f"{shown(text)} is not known{near}", self.takes)
+            raise RefusedError(f"{shown(text)} is not {self.noun}{near}", self.takes)
         return text
 
     def json_schema(self) -> dict[str, Any]:
@@ -102,6 +101,7 @@ class Name:
     noun: str
     example: str
     longest: int = 64
+    pattern: ClassVar[re.Pattern[str]] = re.compile("[a-z0-9][a-z0-9_-]*")
 
     @property
     def takes(self) -> str:
@@ -112,19 +112,19 @@ class Name:
         )
 
     def parse(self, written: object) -> str:
-        """Return the name; raise `Refusal` where it holds anything else than its plain characters."""
+        """Return the name; raise `RefusedError` where it holds anything else than its plain characters."""
         text = _as_text(written, self.takes)
         if not text:
-            raise Refusal("no value is given", self.takes)
-        if not re.fullmatch(r"[a-z0-9][a-z0-9_-]*", text, re.ASCII) or len(text) > self.longest:
-            raise Refusal(f"{shown(text)} is not a name", self.takes)
+            raise RefusedError("no value is given", self.takes)
+        if not self.pattern.fullmatch(text) or len(text) > self.longest:
+            raise RefusedError(f"{shown(text)} is not a name", self.takes)
         return text
 
     def json_schema(self) -> dict[str, Any]:
         """Return the JSON Schema of the name."""
         return {
             "type": "string",
-            "pattern": "^[a-z0-9][a-z0-9_-]*$",
+            "pattern": f"^{self.pattern.pattern}$",
             "maxLength": self.longest,
             "examples": [self.example],
         }
@@ -136,28 +136,25 @@ class Text:
 
     Parameters
     ----------
-    noun
-        With its article: ``a title``.
     longest
         Characters allowed.
     """
 
-    noun: str
     longest: int
 
     @property
     def takes(self) -> str:
         """What is taken."""
-        return f"{self.noun}: printable text in one line, at most {self.longest} characters"
+        return f"printable text in one line, at most {self.longest} characters"
 
     def parse(self, written: object) -> str:
-        """Return the text without blanks around it; raise `Refusal` for line breaks and control characters."""
+        """Return the text without blanks around it; raise `RefusedError` for line breaks and controls."""
         text = _as_text(written, self.takes).strip()
         if len(text) > self.longest:
-            raise Refusal(f"{shown(text)} has {len(text)} characters", self.takes)
+            raise RefusedError(f"{shown(text)} has {len(text)} characters", self.takes)
         for character in text:
             if not character.isprintable() and character != "\u00a0":
-                raise Refusal(f"{shown(text)} holds the character U+{ord(character):04X}", self.takes)
+                raise RefusedError(f"{shown(text)} holds the character U+{ord(character):04X}", self.takes)
         return text
 
     def json_schema(self) -> dict[str, Any]:
