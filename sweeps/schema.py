@@ -118,6 +118,7 @@ OPAMP_NAME = Name("an op-amp name", "quiet-bipolar")
 TITLE = Text(200)
 NOTE = Text(500)
 FILE_NAME = Text(500)
+CAUTION = Choice("a caution", ("medical", "mains", "safety"))
 TOPOLOGY = Choice("a topology", tuple(TOPOLOGIES))
 
 _SR = PARTS["RSP"].kind

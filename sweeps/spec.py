@@ -11,6 +11,7 @@ from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
+    CAUTION,
     FILE_NAME,
     OPAMP_NAME,
     TITLE,
@@ -97,6 +98,8 @@ class Spec(Section):
     ----------
     title
         One line of text.
+    cautions
+        Ways in which the circuit can hurt people, of which its reports warn: medical, mains, safety.
     stage
         The amplifier stage.
     source
@@ -112,6 +115,7 @@ class Spec(Section):
     """
 
     title: Annotated[str, Reads(TITLE)] = ""
+    cautions: tuple[Annotated[str, Reads(CAUTION)], ...] = ()
     stage: Stage
     source: Source = Field(default_factory=Source)
     frequency: Frequency
