@@ -81,7 +81,7 @@ def random_parts(topology: str, rng: np.random.Generator) -> dict[str, float]:
         for parameter, low, high in (
             ("input_resistance_differential", 3e4, 1e12),
             ("input_capacitance_differential", 1e-13, 2e-11),
-            ("input_resistance_common", 1e8, 1e13),
+            ("input_resistance_common", 1e8 / care, 1e13),
             ("input_capacitance_common", 1e-13, 1e-11),
             ("output_resistance", 1, 300),
         ):

@@ -8,6 +8,7 @@ seconds; frequencies are therefore given in rad/s and handed to the tool over 2 
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cache
 from math import atan, degrees, pi, sqrt
 from typing import Any
 
@@ -183,6 +184,7 @@ def stage(topology: str) -> tuple[str, dict[str, float]]:
     return text, SOURCE_PARTS | parts
 
 
+@cache
 def transfers(topology: str) -> tuple[Any, Any]:
     """Common-mode and differential transfer function: elements of the field of rational functions QQ(s)."""
     from lcapy import Circuit  # type: ignore[import-untyped]
