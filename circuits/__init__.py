@@ -1,8 +1,5 @@
 """What is simulated: op-amp macromodels, stages, source networks, and the decks made of them."""
 
-from modepair.circuits.decks import Deck, Structure, structures
-from modepair.circuits.library import candidates
-from modepair.circuits.netlist import COPIES, netlist, standalone
-from modepair.circuits.stages import OUTPUT
+import lazy_loader
 
-__all__ = ["COPIES", "OUTPUT", "Deck", "Structure", "candidates", "netlist", "standalone", "structures"]
+__getattr__, __dir__, __all__ = lazy_loader.attach_stub(__name__, __file__)

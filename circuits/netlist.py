@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 from PySpice.Spice.Netlist import Circuit
 
@@ -10,12 +10,12 @@ from modepair.circuits.elements import GROUND, Element
 from modepair.circuits.sources import GENERATORS
 from modepair.circuits.stages import OUTPUT
 
-__all__ = ["COPIES", "DRIVES", "netlist", "standalone"]
+__all__ = ["COPIES", "DRIVES", "circuit", "netlist", "standalone"]
 
 COPIES = ("c", "d")
 """Suffixes of the two copies: common-mode drive, differential drive."""
 
-DRIVES = {"c": (1.0, 1.0), "d": (0.5, -0.5)}
+DRIVES: Mapping[str, tuple[float, float]] = {"c": (1.0, 1.0), "d": (0.5, -0.5)}
 """Amplitudes of the plus and the minus generator of each copy, in volts."""
 
 OPTIONS = ".option noopac pivrel=0.1"
@@ -24,35 +24,61 @@ a hundred times ngspice's own: against a dense solve of random stages the larges
 from 1e-9 to 3e-11 V per volt of drive, at no cost in time."""
 
 
-def _add(circuit: Circuit, element: Element, row: int, copy: str) -> None:
+def _add(built: Circuit, element: Element, row: int, copy: str) -> None:
     name = f"{element.name[1:]}_{copy}"
     nodes = [node if node == GROUND else f"{node}_{copy}" for node in element.nodes]
     value = float(element.values[row])
     if element.kind == "R":
-        circuit.R(name, *nodes, value)
+        built.R(name, *nodes, value)
     elif element.kind == "C":
-        circuit.C(name, *nodes, value)
+        built.C(name, *nodes, value)
     elif element.kind == "G":
         # SPICE counts the current of a G element from its first to its second node, through the source.
         into, out_of, *controlling = nodes
-        circuit.VCCS(name, out_of, into, *controlling, transconductance=value)
+        built.VCCS(name, out_of, into, *controlling, transconductance=value)
     else:
-        circuit.VCVS(name, *nodes, voltage_gain=value)
+        built.VCVS(name, *nodes, voltage_gain=value)
 
 
-def netlist(
-    elements: Sequence[Element], row: int = 0, drives: dict[str, tuple[float, float]] | None = None
-) -> str:
-    """Write the deck of a circuit, both copies, with the values of one case.
+def circuit(
+    elements: Sequence[Element], row: int = 0, drives: Mapping[str, tuple[float, float]] = DRIVES
+) -> Circuit:
+    """Build the PySpice circuit of one case, a copy for each drive.
 
     Parameters
     ----------
     elements : sequence of Element
         The circuit between the generators and its output.
     row : int
-        Which of the elements' values to write.
-    drives : dict of str to (float, float), optional
-        Amplitudes of the two generators for each copy; `DRIVES` where absent.
+        Which of the elements' values to take.
+    drives : mapping of str to (float, float)
+        Amplitudes in volts of the plus and the minus generator, by the suffix of the copy.
+
+    Returns
+    -------
+    PySpice.Spice.Netlist.Circuit
+        Without analyses.
+    """
+    built = Circuit("modepair")
+    built.raw_spice = OPTIONS + "\n.save " + " ".join(f"v({OUTPUT}_{copy})" for copy in drives) + "\n"
+    for copy, amplitudes in drives.items():
+        for generator, amplitude in zip(GENERATORS, amplitudes, strict=True):
+            node = f"{generator}_{copy}"
+            built.V(node, node, GROUND, f"DC 0 AC {float(amplitude)!r}")
+        for element in elements:
+            _add(built, element, row, copy)
+    return built
+
+
+def netlist(
+    elements: Sequence[Element], row: int = 0, drives: Mapping[str, tuple[float, float]] = DRIVES
+) -> str:
+    """Write the netlist of one case, a copy for each drive.
+
+    Parameters
+    ----------
+    elements, row, drives
+        As for `circuit`.
 
     Returns
     -------
@@ -60,15 +86,7 @@ def netlist(
         SPICE text without analyses and without `.end`. Every number is written so that it reads back to
         the same double.
     """
-    circuit = Circuit("modepair")
-    circuit.raw_spice = OPTIONS + "\n.save " + " ".join(f"v({OUTPUT}_{copy})" for copy in COPIES) + "\n"
-    for copy, amplitudes in (drives or DRIVES).items():
-        for generator, amplitude in zip(GENERATORS, amplitudes, strict=True):
-            node = f"{generator}_{copy}"
-            circuit.V(node, node, GROUND, f"DC 0 AC {amplitude!r}")
-        for element in elements:
-            _add(circuit, element, row, copy)
-    return str(circuit)
+    return str(circuit(elements, row, drives))
 
 
 def standalone(text: str, analyses: Sequence[str], comment: str) -> str:

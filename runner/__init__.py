@@ -1,6 +1,5 @@
 """How it runs: the ngspice engine, batches, worker processes, the run folder and the command line."""
 
-from modepair.runner.errors import EngineMissingError, OutputError, SimulationError
-from modepair.runner.sweep import Run, run
+import lazy_loader
 
-__all__ = ["EngineMissingError", "OutputError", "Run", "SimulationError", "run"]
+__getattr__, __dir__, __all__ = lazy_loader.attach_stub(__name__, __file__)

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
 
-from modepair.runner.engine import Engine
-from modepair.sweeps import Frequency
+if TYPE_CHECKING:
+    from modepair.runner.engine import Engine
+    from modepair.sweeps import Frequency
 
 __all__ = ["Analyses", "plan_analyses"]
 
@@ -81,7 +83,7 @@ def plan_analyses(frequency: Frequency) -> Analyses:
     everything = np.asarray(frequency.frequency_hz)
     grid = np.asarray(frequency.grid_hz)
     if grid.size > 1:
-        sweep = f"ac dec {frequency.points_per_decade} {float(grid[0])!r} {float(grid[-1])!r}"
+        sweep = f"ac dec {frequency.points_per_decade:g} {float(grid[0])!r} {float(grid[-1])!r}"
     else:
         sweep = f"ac lin 1 {float(grid[0])!r} {float(grid[0])!r}"
     commands = [(sweep, grid, np.array([np.abs(everything - f).argmin() for f in grid]))]

@@ -1,4 +1,4 @@
-"""Batches: the cases a worker solves in one go, on one deck."""
+"""Batches: the cases a worker solves in one go, on one deck. Light to import, since every worker does."""
 
 from __future__ import annotations
 
@@ -8,19 +8,12 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import COPIES, OUTPUT, Deck, Structure, structures
+from modepair.circuits.deck import Deck
 from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
 from modepair.runner.errors import EngineDeadError, SimulationError
-from modepair.sweeps import Sweep
 
-__all__ = ["BATCH_CASES", "Batch", "BatchPlan", "Solved", "plan_batches", "solve_batch"]
-
-BATCH_CASES = 64
-"""Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
-deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
-
-VECTORS = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
+__all__ = ["Batch", "Solved", "solve_batch"]
 
 
 @dataclass(frozen=True)
@@ -35,11 +28,14 @@ class Batch:
         Their deck.
     values : ndarray, shape (k, m)
         Their element values.
+    vectors : tuple of str
+        The output nodes of the common-mode and the differential copy.
     """
 
     position: npt.NDArray[np.int64]
     deck: Deck
     values: npt.NDArray[np.float64]
+    vectors: tuple[str, ...]
 
     def part(self, start: int, stop: int) -> Batch:
         """Some of the cases, as a batch of their own."""
@@ -68,53 +64,19 @@ class Solved:
     engine: str = ""
 
 
-@dataclass(frozen=True)
-class BatchPlan:
-    """A batch not yet worked out: a structure, its deck, and the rows of it."""
-
-    position: npt.NDArray[np.int64]
-    structure: Structure
-    deck: Deck
-    rows: npt.NDArray[np.int64]
-
-    def batch(self) -> Batch:
-        """Work out the element values."""
-        return Batch(self.position, self.deck, self.structure.values(self.rows))
-
-
-def plan_batches(sweep: Sweep) -> list[BatchPlan]:
-    """Cut a sweep into batches.
-
-    Parameters
-    ----------
-    sweep : Sweep
-        The expanded spec.
-
-    Returns
-    -------
-    list of BatchPlan
-        By the first case of each. A batch holds cases of one structure, one topology and one choice of
-        op-amps.
-    """
-    plans = []
-    decks: dict[object, Deck] = {}
-    for block in sweep.blocks:
-        for structure in structures(block.topology, block.parts, len(block.case)):
-            deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
-            for start in range(0, len(structure.rows), BATCH_CASES):
-                rows = structure.rows[start : start + BATCH_CASES]
-                plans.append(BatchPlan(block.case[rows] - 1, structure, deck, rows))
-    return sorted(plans, key=lambda plan: int(plan.position[0]))
-
-
-def _unusable(deck: Deck, values: npt.NDArray[np.float64]) -> str | None:
-    """Reason why ngspice must not see these values: it would replace or misread them without a word."""
-    for commands, value in zip(deck.commands, values.tolist(), strict=True):
-        element = commands[0].split()[1]
-        if not np.isfinite(value) or (element[0] in "rc" and value <= 0):
-            name = element.rpartition("_")[0].upper()
-            return f"element {name} would be {value:g}; it must be a finite number above zero"
-    return None
+def _unusable(batch: Batch) -> dict[int, str]:
+    """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
+    names = [commands[0].split()[1].rpartition("_")[0] for commands in batch.deck.commands]
+    passive = np.array([name[0] in "rc" for name in names])
+    bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
+    reasons = {}
+    for row in np.flatnonzero(bad.any(axis=1)):
+        column = int(bad[row].argmax())
+        name, value = names[column].upper(), batch.values[row, column]
+        reasons[int(batch.position[row])] = (
+            f"element {name} would be {value:g}; it must be a finite number above zero"
+        )
+    return reasons
 
 
 def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> Iterator[str]:
@@ -148,12 +110,10 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
     """
     simulator = simulator or engine()
     gains = np.full((len(batch.position), 2, analyses.frequency_hz.size), np.nan, np.complex128)
-    failures: dict[int, str] = {}
+    failures = _unusable(batch)
     loaded: npt.NDArray[np.float64] | None = None
     for index, (position, values) in enumerate(zip(batch.position.tolist(), batch.values, strict=True)):
-        reason = _unusable(batch.deck, values)
-        if reason:
-            failures[position] = reason
+        if position in failures:
             continue
         try:
             if loaded is None:
@@ -161,7 +121,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
                 loaded = batch.deck.values
             simulator.alter(list(_alterations(batch.deck, loaded, values)))
             loaded = values
-            gains[index] = analyses.solve(simulator, VECTORS)
+            gains[index] = analyses.solve(simulator, batch.vectors)
         except EngineDeadError:
             raise
         except SimulationError as error:

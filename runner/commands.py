@@ -71,8 +71,8 @@ def netlist_command(
     """
     from modepair.circuits import candidates
     from modepair.runner.analyses import plan_analyses
-    from modepair.runner.batches import plan_batches
     from modepair.runner.decks import case_deck, structure_decks
+    from modepair.runner.plans import plan_batches
     from modepair.sweeps import expand, load_spec
 
     sweep = expand(load_spec(spec, candidates()))

@@ -6,7 +6,7 @@ from collections.abc import Iterable
 
 from modepair.circuits import standalone
 from modepair.runner.analyses import Analyses
-from modepair.runner.batches import BatchPlan
+from modepair.runner.plans import BatchPlan
 from modepair.runner.folder import RunFolder
 from modepair.sweeps import Sweep
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from modepair.sweeps import ModepairError
+from modepair.sweeps.faults import ModepairError
 
 __all__ = ["EngineDeadError", "EngineMissingError", "OutputError", "SimulationError"]
 

@@ -20,16 +20,22 @@ from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing.connection import wait
 from pathlib import Path
+from types import TracebackType
+from typing import ParamSpec, TypeVar
 
 import numpy as np
 
 from modepair.runner.analyses import Analyses
 from modepair.runner.batches import Batch, Solved, solve_batch
+from modepair.runner.engine import engine
 from modepair.runner.errors import EngineDeadError
 
-__all__ = ["ExecutorFactory", "solve_batches", "worker_pool"]
+__all__ = ["BatchSolver", "ExecutorFactory", "worker_pool"]
 
 ExecutorFactory = Callable[[int], Executor]
+
+P = ParamSpec("P")
+R = TypeVar("R")
 
 DIED = "the simulator process died on this case"
 
@@ -88,90 +94,114 @@ def worker_pool() -> Iterator[ExecutorFactory]:
         shutil.rmtree(home, ignore_errors=True)
 
 
-def _submit(executor: Executor, batch: Batch, analyses: Analyses) -> Future[Solved]:
-    try:
-        with _main_module_hidden():
-            return executor.submit(solve_batch, batch, analyses)
-    except BrokenProcessPool as error:
-        broken: Future[Solved] = Future()
-        broken.set_exception(error)
-        return broken
+def _warm() -> None:
+    """Import and start the engine, so that it is ready when the first batch comes."""
+    engine()
 
 
-def _alone(batch: Batch, analyses: Analyses, factory: ExecutorFactory) -> Solved:
-    """Solve a batch whose worker may die, in processes of its own; halve it until the cause stands alone."""
-    with factory(1) as executor:
-        try:
-            return _submit(executor, batch, analyses).result()
-        except (BrokenProcessPool, EngineDeadError) as error:
-            dead = error
-    count = len(batch.position)
-    if count > 1:
-        halves = [
-            _alone(half, analyses, factory)
-            for half in (batch.part(0, count // 2), batch.part(count // 2, count))
-        ]
-        return Solved(
-            batch.position,
-            np.concatenate([half.gains for half in halves]),
-            {place: why for half in halves for place, why in half.failures.items()},
-        )
-    reason = str(dead) if isinstance(dead, EngineDeadError) else DIED
-    gains = np.full((1, 2, analyses.frequency_hz.size), np.nan, np.complex128)
-    return Solved(batch.position, gains, {int(batch.position[0]): reason})
+class BatchSolver:
+    """Solves batches in many processes; a worker that dies costs the case it died on, and no other.
 
-
-def solve_batches(
-    batches: Iterable[Batch], analyses: Analyses, factory: ExecutorFactory, jobs: int
-) -> Iterator[Solved]:
-    """Solve batches in many processes and give them back in their order.
+    Use it as a context manager.
 
     Parameters
     ----------
-    batches : iterable of Batch
-        Taken only as fast as they are solved.
-    analyses : Analyses
-        What to run on each case.
     factory : callable
         Makes an executor of so many workers.
     jobs : int
         Number of workers.
-
-    Yields
-    ------
-    Solved
-        For each batch. A worker that dies costs the case it died on, and no other.
     """
-    source = iter(batches)
-    waiting: deque[tuple[Batch, Future[Solved]]] = deque()
-    executor = factory(jobs)
-    try:
+
+    def __init__(self, factory: ExecutorFactory, jobs: int) -> None:
+        self._factory = factory
+        self._jobs = jobs
+        self._executor = factory(jobs)
+
+    def __enter__(self) -> BatchSolver:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self._executor.shutdown(wait=True, cancel_futures=True)
+
+    def warm(self) -> None:
+        """Start the workers, while the caller goes on."""
+        for _ in range(self._jobs):
+            _submit(self._executor, _warm)
+
+    def solve(self, batches: Iterable[Batch], analyses: Analyses) -> Iterator[Solved]:
+        """Solve batches and give them back in their order.
+
+        Parameters
+        ----------
+        batches : iterable of Batch
+            Taken only as fast as they are solved.
+        analyses : Analyses
+            What to run on each case.
+
+        Yields
+        ------
+        Solved
+            For each batch.
+        """
+        source = iter(batches)
+        waiting: deque[tuple[Batch, Future[Solved]]] = deque()
         exhausted = False
         while waiting or not exhausted:
-            while not exhausted and len(waiting) < 2 * jobs + 1:
+            while not exhausted and len(waiting) < 2 * self._jobs + 1:
                 batch = next(source, None)
                 if batch is None:
                     exhausted = True
                 else:
-                    waiting.append((batch, _submit(executor, batch, analyses)))
+                    waiting.append((batch, _submit(self._executor, solve_batch, batch, analyses)))
             if not waiting:
                 return
             batch, future = waiting.popleft()
             try:
                 yield future.result()
             except (BrokenProcessPool, EngineDeadError):
-                executor.shutdown(wait=True, cancel_futures=True)
-                yield _alone(batch, analyses, factory)
-                executor = factory(jobs)
-                again = [(other, future) for other, future in waiting]
+                self._executor.shutdown(wait=True, cancel_futures=True)
+                yield self._alone(batch, analyses)
+                self._executor = self._factory(self._jobs)
                 waiting = deque(
-                    (other, future if _kept(future) else _submit(executor, other, analyses))
-                    for other, future in again
+                    (other, kept if _is_solved(kept) else _submit(self._executor, solve_batch, other, analyses))
+                    for other, kept in waiting
                 )
-    finally:
-        executor.shutdown(wait=True, cancel_futures=True)
+
+    def _alone(self, batch: Batch, analyses: Analyses) -> Solved:
+        """Solve a batch whose worker may die in a process of its own; halve it until the cause stands alone."""
+        with self._factory(1) as executor:
+            try:
+                return _submit(executor, solve_batch, batch, analyses).result()
+            except (BrokenProcessPool, EngineDeadError) as error:
+                reason = str(error) if isinstance(error, EngineDeadError) else DIED
+        count = len(batch.position)
+        if count == 1:
+            gains = np.full((1, 2, analyses.frequency_hz.size), np.nan, np.complex128)
+            return Solved(batch.position, gains, {int(batch.position[0]): reason})
+        halves = [
+            self._alone(half, analyses)
+            for half in (batch.part(0, count // 2), batch.part(count // 2, count))
+        ]
+        return Solved(
+            batch.position,
+            np.concatenate([half.gains for half in halves]),
+            {place: why for half in halves for place, why in half.failures.items()},
+            next((half.engine for half in halves if half.engine), ""),
+        )
 
 
-def _kept(future: Future[Solved]) -> bool:
+def _submit(executor: Executor, task: Callable[P, R], *args: P.args, **kwargs: P.kwargs) -> Future[R]:
+    try:
+        with _main_module_hidden():
+            return executor.submit(task, *args, **kwargs)
+    except BrokenProcessPool as error:
+        broken: Future[R] = Future()
+        broken.set_exception(error)
+        return broken
+
+
+def _is_solved(future: Future[Solved]) -> bool:
     """Whether a batch in flight was solved before its pool broke."""
     return future.done() and not future.cancelled() and future.exception() is None

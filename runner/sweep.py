@@ -8,20 +8,19 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from functools import cached_property
 from pathlib import Path
-
-import pandas as pd
+from typing import TYPE_CHECKING
 
 from modepair.circuits import candidates
 from modepair.runner.analyses import plan_analyses
-from modepair.runner.batches import plan_batches
-from modepair.runner.decks import write_decks
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
-from modepair.runner.pool import ExecutorFactory, solve_batches, worker_pool
-from modepair.runner.record import run_record
-from modepair.runner.results import Progress, collect
-from modepair.runner.written import write_reports
+from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
 from modepair.sweeps import Spec, expand, load_spec
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+    from modepair.runner.results import Progress
 
 __all__ = ["Run", "run"]
 
@@ -47,6 +46,8 @@ class Run:
     @cached_property
     def curves(self) -> pd.DataFrame:
         """A row per solved case, draw and frequency; read from the run folder."""
+        import pandas as pd
+
         return pd.read_parquet(self.folder / "curves.parquet")
 
     @property
@@ -98,13 +99,24 @@ def run(
         spec = load_spec(spec, candidates())
     locate_library()
     sweep = expand(spec)
-    analyses = plan_analyses(spec.frequency)
-    plans = plan_batches(sweep)
     target = Path(output) if output is not None else Path("runs") / Path(spec.path).stem
-    workers = min(jobs or os.cpu_count() or 1, len(plans))
-    with run_folder(target) as folder, worker_pool() as local:
-        batches = (plan.batch() for plan in plans)
-        solved = solve_batches(batches, analyses, executors or local, workers)
+    workers = min(jobs or os.cpu_count() or 1, sweep.count)
+    with (
+        run_folder(target) as folder,
+        worker_pool() as local,
+        BatchSolver(executors or local, workers) as solver,
+    ):
+        solver.warm()
+        # What follows takes a second to import, in which the workers start.
+        from modepair.runner.decks import write_decks
+        from modepair.runner.plans import plan_batches
+        from modepair.runner.record import run_record
+        from modepair.runner.results import collect
+        from modepair.runner.written import write_reports
+
+        analyses = plan_analyses(spec.frequency)
+        plans = plan_batches(sweep)
+        solved = solver.solve((plan.batch() for plan in plans), analyses)
         results = collect(solved, sweep, analyses.frequency_hz, folder.path("curves.parquet"), progress)
         results.cases.to_csv(folder.path("cases.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)

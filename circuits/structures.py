@@ -1,4 +1,4 @@
-"""Decks and values: cases of the same structure share one deck and differ in a vector of element values."""
+"""Structures: cases with the same nodes and elements share one deck and differ in a vector of values."""
 
 from __future__ import annotations
 
@@ -8,35 +8,16 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from modepair.circuits.deck import Deck
 from modepair.circuits.elements import Element, Values
 from modepair.circuits.netlist import COPIES, netlist
 from modepair.circuits.sources import source_elements
 from modepair.circuits.stages import stage_elements
 
-__all__ = ["Deck", "Structure", "structures"]
+__all__ = ["Structure", "structures"]
 
 Rows = npt.NDArray[np.int64]
 GivenParts = Mapping[str, float | Values]
-
-
-@dataclass(frozen=True)
-class Deck:
-    """What the engine loads once: a netlist, and how to alter its elements.
-
-    Attributes
-    ----------
-    text : str
-        The netlist, without analyses.
-    commands : tuple of tuple of str
-        For each element, in the order of its values, the start of the engine command that sets it in
-        each copy.
-    values : ndarray, shape (m,)
-        The element values that the text holds.
-    """
-
-    text: str
-    commands: tuple[tuple[str, ...], ...]
-    values: Values
 
 
 @dataclass(frozen=True)
