@@ -1,6 +1,52 @@
-"""What is read: CMRR and gain figures, tables, plots and the summary page."""
+"""What is read: CMRR and gain figures, tables, plots and the summary page.
+
+Tables, plots and summary load when first asked for: matplotlib alone takes half a second to import.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
 
 from modepair.reports.figures import figures, spot_column
 from modepair.reports.pairs import FLOOR_VOLTS, ModePair
 
-__all__ = ["FLOOR_VOLTS", "ModePair", "figures", "spot_column"]
+if TYPE_CHECKING:
+    from modepair.reports.axis_labels import axis_columns
+    from modepair.reports.plots import plot_cmrr, plot_gains, write_plot
+    from modepair.reports.summary import Summary, cautions, summary_text
+    from modepair.reports.tables import console_for, print_cases
+
+__all__ = [
+    "FLOOR_VOLTS",
+    "ModePair",
+    "Summary",
+    "axis_columns",
+    "cautions",
+    "console_for",
+    "figures",
+    "plot_cmrr",
+    "plot_gains",
+    "print_cases",
+    "spot_column",
+    "summary_text",
+    "write_plot",
+]
+
+_LATER = {
+    "Summary": "summary",
+    "axis_columns": "axis_labels",
+    "cautions": "summary",
+    "console_for": "tables",
+    "plot_cmrr": "plots",
+    "plot_gains": "plots",
+    "print_cases": "tables",
+    "summary_text": "summary",
+    "write_plot": "plots",
+}
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _LATER:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    return getattr(import_module(f"{__name__}.{_LATER[name]}"), name)

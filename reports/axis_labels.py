@@ -135,5 +135,5 @@ def case_texts(columns: Mapping[str, Sequence[str]], joint: str = ", ") -> list[
     for path, values in vary.items():
         for text, value in zip(texts, values, strict=True):
             named = value[:1].isdigit() or value[:1] in "+-.−"
-            text.append(f"{names[path]} {value}" if named else value)
+            text.append(f"{names[path].replace('_', ' ')} {value}" if named else value)
     return [joint.join(text) for text in texts]

@@ -211,7 +211,7 @@ def print_cases(
     is_done = cases["state"] == "done"
     done = cases[is_done]
     many = len(cases) > MOST_ROWS
-    shown = done.nsmallest(ROWS_OF_MANY, "cmrr_db_lowest") if many else cases
+    shown = cases if not many else done.nsmallest(ROWS_OF_MANY, "cmrr_db_lowest") if len(done) else done
     vary, fixed = varying(axis_columns(cases, axis_list))
     labels = axis_columns(shown, axis_list)
     lead = _lead_columns(shown, {path: labels[path] for path in vary})
