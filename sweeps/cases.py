@@ -153,7 +153,7 @@ def _flatten(values: dict[str, object], prefix: str, found: dict[str, float]) ->
 RawBlock = tuple[str, dict[str, str], NDArray[np.int64], dict[str, Value]]
 
 
-def _raw_blocks(spec: Spec) -> Iterator[RawBlock]:
+def _raw_blocks(spec: Spec, *, by_topology_only: bool = False) -> Iterator[RawBlock]:
     """Yield stage, op-amps, case numbers and settings of each combination of the axes of names."""
     axes = spec.axes
     count = _count(axes)
@@ -161,6 +161,8 @@ def _raw_blocks(spec: Spec) -> Iterator[RawBlock]:
     base = base_settings(spec)
     numeric = [(axis, position) for axis, position in zip(axes, positions, strict=True) if axis.numeric]
     named = [(axis, position) for axis, position in zip(axes, positions, strict=True) if not axis.numeric]
+    if by_topology_only:
+        named = [(axis, position) for axis, position in named if axis.path == "stage.topology"]
     values = {axis.path: np.array(axis.values, dtype=np.float64) for axis, _ in numeric}
     group = np.zeros(count, dtype=np.int64)
     for axis, position in named:
@@ -221,7 +223,7 @@ def gain_faults(spec: Spec) -> list[Fault]:
     if axis is None and spec.stage.gain is None:
         return []
     faults: dict[Fault, None] = {}
-    for topology, _, _, settings in _raw_blocks(spec):
+    for topology, _, _, settings in _raw_blocks(spec, by_topology_only=True):
         parts = {
             path.removeprefix("stage.parts."): value
             for path, value in settings.items()
