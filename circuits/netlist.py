@@ -111,7 +111,7 @@ def standalone(text: str, analyses: Sequence[str], comment: str) -> str:
     common, differential = (f"{OUTPUT}_{copy}" for copy in COPIES)
     control = [".control", "set numdgt=12", "set nopage"]
     for analysis in analyses:
-        control += [analysis, f"let cmrr_db = db({differential}) - db({common})"]
+        control += [f"echo {analysis}", analysis, f"let cmrr_db = db({differential}) - db({common})"]
         control += [f"print {common} {differential} cmrr_db"]
     control += ["quit", ".endc", ".end", ""]
     return "\n".join([title, f"* {printable}", body.rstrip("\n"), *control])

@@ -31,6 +31,10 @@ CAUTIONS: Mapping[str, str] = {
         "Mains use: circuits connected to the mains can hurt people. A simulation shows no compliance; "
         "the applicable standards, local codes and qualified people decide."
     ),
+    "safety": (
+        "Safety-relevant use: a circuit that people rely on can hurt them when it fails. A simulation shows no "
+        "compliance; the applicable standards, local codes and qualified people decide."
+    ),
 }
 """Text of each caution, by its flag."""
 
@@ -41,7 +45,7 @@ def cautions(flags: Iterable[str]) -> list[str]:
     Parameters
     ----------
     flags : iterable of str
-        Keys of `CAUTIONS`: ``model``, ``nominal``, ``medical``, ``mains``.
+        Keys of `CAUTIONS`: ``model``, ``nominal``, ``medical``, ``mains``, ``safety``.
 
     Returns
     -------

@@ -9,9 +9,9 @@ from pathlib import Path
 from typing import Any
 
 from modepair.runner.results import Results
-from modepair.sweeps import Sweep
+from modepair.sweeps import Spec, Sweep
 
-__all__ = ["run_record", "versions"]
+__all__ = ["provenance", "run_record", "versions"]
 
 
 def versions(engine: str) -> dict[str, str]:
@@ -29,6 +29,16 @@ def versions(engine: str) -> dict[str, str]:
     """
     packages = {name: version(name) for name in ("modepair", "PySpice", "numpy")}
     return {**packages, "ngspice": engine, "Python": platform.python_version()}
+
+
+def provenance(spec: Spec, engine: str, started: datetime) -> dict[str, str]:
+    """Tell on a page what made a run: spec file and digest, versions, date."""
+    return {
+        "spec": Path(spec.path).name,
+        "digest": f"sha256 {spec.digest}",
+        "date": started.strftime("%Y-%m-%d %H:%M UTC"),
+        **versions(engine),
+    }
 
 
 def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float) -> dict[str, Any]:

@@ -109,10 +109,10 @@ def run(
         solver.warm()
         # What follows takes a second to import, in which the workers start.
         from modepair.runner.decks import write_decks
+        from modepair.runner.pages import write_pages
         from modepair.runner.plans import plan_batches
-        from modepair.runner.record import run_record
+        from modepair.runner.record import provenance, run_record
         from modepair.runner.results import collect
-        from modepair.runner.written import write_reports
 
         analyses = plan_analyses(spec.frequency)
         plans = plan_batches(sweep)
@@ -120,6 +120,6 @@ def run(
         results = collect(solved, sweep, analyses.frequency_hz, folder.path("curves.parquet"), progress)
         results.cases.to_csv(folder.path("cases.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
-        write_reports(folder, sweep, results)
+        write_pages(folder, sweep, results, provenance(spec, results.engine, started))
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
     return Run(folder.target, spec, results.cases)

@@ -1,0 +1,108 @@
+"""The pages of a run folder: plots and summary."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+
+from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
+from modepair.runner.folder import RunFolder
+from modepair.runner.results import Results
+from modepair.sweeps import Sweep, render
+from modepair.sweeps.axes import settings
+from modepair.sweeps.cases import base_settings
+from modepair.sweeps.quantities import Kind
+
+__all__ = ["asked", "write_pages"]
+
+SECTIONS = {"stage.parts.": "parts", "stage.": "stage", "source.parts.": "source", "source.": "source"}
+
+
+def _written(value: float, kind: object) -> str:
+    """Write a value as a spec would."""
+    if isinstance(kind, Kind) and kind.decibels != "no":
+        return f"{20 * math.log10(value):.6g} dB"
+    return render(value, kind.unit if isinstance(kind, Kind) else "")
+
+
+def asked(sweep: Sweep) -> dict[str, str]:
+    """Tell what a spec asks for, section by section.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        The sweep.
+
+    Returns
+    -------
+    dict of str to str
+        Such as "source" to "resistance 350 Ω, cable_capacitance 3 nF"; axes last.
+    """
+    spec = sweep.spec
+    kinds = settings(spec.candidates)
+    varied = {axis.path for axis in sweep.axes}
+    found: dict[str, list[str]] = {"stage": [], "parts": [], "source": []}
+    if "stage.topology" not in varied:
+        found["stage"].append(spec.stage.topology)
+    used = sorted({name for block in sweep.blocks for name in block.opamps.values()})
+    opamps: dict[str, list[str]] = {name: [] for name in used}
+    for path, value in base_settings(spec).items():
+        if path in varied:
+            continue
+        if path.startswith("opamps."):
+            name, _, parameter = path.removeprefix("opamps.").rpartition(".")
+            if name in opamps:
+                opamps[name].append(f"{parameter.replace('_', ' ')} {_written(value, kinds[path])}")
+            continue
+        prefix = next(prefix for prefix in SECTIONS if path.startswith(prefix))
+        key = path.removeprefix(prefix)
+        name = key if prefix.endswith("parts.") else key.replace("_", " ").replace(".", " ")
+        found[SECTIONS[prefix]].append(f"{name} {_written(value, kinds[path])}")
+    texts = {section: ", ".join(items) for section, items in found.items() if items}
+    texts |= {f"op-amp {name}": ", ".join(items) for name, items in opamps.items()}
+    plan = spec.frequency
+    texts["frequency"] = (
+        f"{render(plan.start, 'Hz')} to {render(plan.stop, 'Hz')}, {plan.points_per_decade:g} points per decade"
+    )
+    return texts | {f"axis {axis.path}": ", ".join(axis.labels) for axis in sweep.axes}
+
+
+def write_pages(folder: RunFolder, sweep: Sweep, results: Results, provenance: dict[str, str]) -> None:
+    """Write plots and summary of a run.
+
+    Parameters
+    ----------
+    folder : RunFolder
+        Where to.
+    sweep : Sweep
+        What was asked.
+    results : Results
+        What it came to.
+    provenance : dict of str to str
+        What makes the run repeatable.
+    """
+    spec = sweep.spec
+    plots = {}
+    if results.kept is not None:
+        rows = results.cases.set_index("case", drop=False).loc[results.kept_case]
+        labels = axis_columns(rows, sweep.axes)
+        case = results.kept_case.tolist()
+        title = spec.title
+        for caption, name, draw in (
+            ("CMRR over frequency", "cmrr", plot_cmrr),
+            ("Differential and common-mode gain over frequency", "gains", plot_gains),
+        ):
+            figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
+            plots[caption] = write_plot(figure, folder.path(name))[0].name
+    summary = Summary(
+        title=spec.title or Path(spec.path).stem,
+        asked=asked(sweep),
+        cases=results.cases,
+        axes=sweep.axes,
+        spots_hz=spec.frequency.spots,
+        band_hz=(spec.frequency.start, spec.frequency.stop),
+        provenance=provenance,
+        caution_flags=("model", "nominal", *spec.cautions),
+        plots=plots,
+    )
+    folder.write_text("summary.md", summary_text(summary))
