@@ -20,7 +20,7 @@ SECTIONS = {"stage.parts.": "parts", "stage.": "stage", "source.parts.": "source
 
 def _written(value: float, kind: object) -> str:
     """Write a value as a spec would."""
-    if isinstance(kind, Kind) and kind.decibels != "no":
+    if isinstance(kind, Kind) and (kind.decibels == "only" or (kind.decibels != "no" and value >= 1000)):
         return f"{20 * math.log10(value):.6g} dB"
     return render(value, kind.unit if isinstance(kind, Kind) else "")
 

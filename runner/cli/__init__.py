@@ -1,0 +1,1 @@
+"""The command line: a module for each command, entered in `modepair.runner.cli.app`."""

@@ -1,0 +1,57 @@
+"""The command line.
+
+Exit status: 0 done, 1 judged and failing, 2 usage or spec, 3 simulation failed.
+"""
+
+from __future__ import annotations
+
+import sys
+
+import typer
+
+from modepair.runner.cli.netlist import netlist_command
+from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
+from modepair.runner.cli.run import run_command
+from modepair.runner.cli.schema import schema_command
+
+__all__ = ["app", "main"]
+
+INTERRUPTED = 130
+
+app = typer.Typer(
+    help="CMRR over frequency of difference and instrumentation amplifier stages, swept in ngspice.",
+    no_args_is_help=True,
+    add_completion=False,
+    pretty_exceptions_enable=False,
+    rich_markup_mode=None,
+)
+app.command("run")(run_command)
+app.command("netlist")(netlist_command)
+app.command("schema")(schema_command)
+
+
+def main() -> None:
+    """Run the command line and turn every known error into its message and exit status."""
+    from modepair.sweeps import ModepairError, SpecError
+
+    try:
+        app(prog_name="modepair")
+    except SpecError as error:
+        _fail(str(error), USAGE)
+    except ModepairError as error:
+        from modepair.runner.errors import OutputError
+
+        _fail(f"modepair: {error}", USAGE if isinstance(error, OutputError) else SIMULATION_FAILED)
+    except KeyboardInterrupt:
+        _fail("modepair: interrupted; nothing was written", INTERRUPTED)
+    except BrokenPipeError:
+        # Whoever read the output has left; keep the interpreter from complaining as it closes the stream.
+        sys.stderr.close()
+        sys.exit(1)
+    except OSError as error:
+        _fail(f"modepair: {error.filename or ''}: {error.strerror or error}", USAGE)
+
+
+def _fail(message: str, status: int) -> None:
+    print(message, file=sys.stderr)
+    sys.exit(status)

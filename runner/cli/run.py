@@ -1,0 +1,56 @@
+"""`modepair run`."""
+
+from __future__ import annotations
+
+import json
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import typer
+
+from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, SpecFile
+from modepair.runner.cli.progress import progress_bar
+
+if TYPE_CHECKING:
+    from modepair.runner.sweep import Run
+
+__all__ = ["run_command"]
+
+
+def run_command(spec: SpecFile, output: Folder = None, jobs: Jobs = None, as_json: AsJson = False) -> None:
+    """Run a sweep: curves, figures, plots and decks go to a run folder."""
+    from modepair.runner.sweep import run
+
+    with progress_bar() as progress:
+        result = run(spec, output, jobs=jobs, progress=progress)
+    if as_json:
+        print(_as_json(result))
+    else:
+        _print_run(result)
+    if result.failed:
+        raise typer.Exit(SIMULATION_FAILED)
+
+
+def _print_run(result: Run) -> None:
+    from modepair.reports.tables import console_for, print_cases
+
+    spec = result.spec
+    console = console_for(sys.stdout)
+    if spec.title:
+        console.print(f"{spec.title}\n", markup=False)
+    band = (spec.frequency.start, spec.frequency.stop)
+    print_cases(console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv"))
+    console.print(f"Run folder: {_shown_path(result.folder)}", markup=False, soft_wrap=True)
+
+
+def _shown_path(path: Path) -> Path:
+    """Path as the user would write it from here."""
+    here = Path.cwd()
+    return path.relative_to(here) if path.is_relative_to(here) else path
+
+
+def _as_json(result: Run) -> str:
+    rows = json.loads(result.cases.to_json(orient="records", double_precision=15))
+    content = {"folder": str(result.folder), "failed": result.failed, "cases": rows}
+    return json.dumps(content, indent=2, ensure_ascii=False)
