@@ -8,6 +8,9 @@ from dataclasses import dataclass
 SHOWN_LENGTH = 60
 """Characters of a written value that a message repeats before it cuts the rest."""
 
+LONGEST_PATH = 4096
+"""Characters that a message shows of a file's path: as many as a path may have."""
+
 SHOWN_FAULTS = 50
 """Faults that the text of a `SpecError` lists; `SpecError.faults` holds all of them."""
 
@@ -16,20 +19,22 @@ class ModepairError(Exception):
     """Base class of the errors that modepair raises."""
 
 
-def shown(text: str) -> str:
+def shown(text: str, longest: int = SHOWN_LENGTH) -> str:
     """Return `text` safe to print in one line: control characters escaped, long text cut.
 
     Parameters
     ----------
     text
         Any text, as it stood in a file.
+    longest
+        Characters shown.
 
     Returns
     -------
     str
         The same text where it is short and printable.
     """
-    cut = text if len(text) <= SHOWN_LENGTH else text[:SHOWN_LENGTH] + "..."
+    cut = text if len(text) <= longest else text[:longest] + "..."
     return "".join(
         character
         if character.isprintable()
@@ -116,7 +121,7 @@ class Fault:
     @property
     def where(self) -> str:
         """``file:line:column``, or the file alone."""
-        file = shown(self.file) if not self.file.isprintable() else self.file
+        file = shown(self.file, LONGEST_PATH)
         return f"{file}:{self.line}:{self.column}" if self.line else file
 
     def __str__(self) -> str:

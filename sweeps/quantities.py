@@ -16,8 +16,8 @@ from typing import Any
 from modepair.sweeps.faults import RefusedError, form_of, shown
 from quantiphy import Quantity
 
-_PREFIXES = "afpnuµμmkKMGTP"
-_OHM = ("Ω", "Ω", "ohms", "ohm", "Ohm")
+_PREFIXES = "afpnu\u00b5\u03bcmkKMGTP"  # micro sign and Greek mu
+_OHM = ("\u03a9", "\u2126", "ohms", "ohm", "Ohm")  # Greek omega and ohm sign
 _NUMBER = r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)"
 _EXPONENT = r"[eE][+-]?[0-9]+"
 _SPACES = dict.fromkeys(map(ord, "\u00a0\u2009\u202f"), " ")
@@ -258,7 +258,7 @@ class Kind:
             )
 
     def _number(self, number: str, prefix: str, text: str) -> float:
-        prefix = prefix.replace("K", "k").replace("µ", "u").replace("μ", "u")
+        prefix = prefix.replace("K", "k").replace("\u00b5", "u").replace("\u03bc", "u")
         value = float(_Figure(f"{number}{prefix}"))
         if value == 0 and any(digit in "123456789" for digit in re.split("[eE]", number)[0]):
             raise RefusedError(f"{text} is too small for a number", self.limits)
@@ -334,7 +334,7 @@ def _complaint(text: str, kind: Kind) -> str:
 
 def _strange(text: str) -> str:
     for character in text:
-        if not (character.isascii() or character in "µμΩΩ°"):
+        if not (character.isascii() or character in f"{_PREFIXES}{_OHM[0]}{_OHM[1]}°"):
             name = f" {character}" if character.isprintable() else ""
             return f" (the character{name} U+{ord(character):04X} is not taken; write plain digits and signs)"
     return ""

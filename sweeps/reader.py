@@ -10,7 +10,15 @@ from modepair.sweeps.axes import Axis, read_axis, settings
 from modepair.sweeps.cases import gain_faults
 from modepair.sweeps.coherence import Coherence, candidate_faults
 from modepair.sweeps.document import Document, Location, read_document
-from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, SpecError, form_of, shown
+from modepair.sweeps.faults import (
+    LONGEST_PATH,
+    Fault,
+    RefusedError,
+    SeveralRefusedError,
+    SpecError,
+    form_of,
+    shown,
+)
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
 from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
 from modepair.sweeps.spec import CandidateFile, Spec
@@ -136,7 +144,7 @@ def _read_files(document: Document) -> tuple[dict[str, Opamp], dict[Location, tu
                 else document.fault(
                     location,
                     f"{shown(written)} cannot be used: {fault.message} "
-                    f"(looked for {shown(str(path))}; paths start at the spec's folder)",
+                    f"(looked for {shown(str(path), LONGEST_PATH)}; paths start at the spec's folder)",
                 )
                 for fault in error.faults
             )

@@ -390,6 +390,13 @@ MALFORMED = [
         ],
     ),
     Malformed(
+        "unknown caution",
+        spec(plus="cautions: [medical, mainz]\n"),
+        [
+            "9:21: cautions[1]: mainz is not a caution; did you mean mains? cautions takes medical, mains or safety"
+        ],
+    ),
+    Malformed(
         "escape in title",
         'title: "a\\x07b"\n' + BASE,
         [
