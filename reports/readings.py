@@ -47,7 +47,7 @@ def gain_text(ratio: float) -> str:
 
 
 def decibel_text(level_db: float, at_floor: bool = False) -> str:
-    """Write a level in dB to a tenth; a bound as ``> 240``, rounded down so that it stays true.
+    """Write a level in dB to a tenth; a bound as ``> 240``, rounded down so that it stays true (to 0.05 dB).
 
     Parameters
     ----------
@@ -61,4 +61,4 @@ def decibel_text(level_db: float, at_floor: bool = False) -> str:
     str
         The number, without its unit.
     """
-    return f"> {math.floor(level_db):d}" if at_floor else f"{level_db:.1f}"
+    return f"> {math.floor(level_db + 0.05):d}" if at_floor else f"{level_db:.1f}"

@@ -32,8 +32,8 @@ CAUTIONS: Mapping[str, str] = {
         "the applicable standards, local codes and qualified people decide."
     ),
     "safety": (
-        "Safety-relevant use: a circuit that people rely on can hurt them when it fails. A simulation shows no "
-        "compliance; the applicable standards, local codes and qualified people decide."
+        "Safety-relevant use: a circuit that people rely on can hurt them when it fails. A simulation shows "
+        "no compliance; the applicable standards, local codes and qualified people decide."
     ),
 }
 """Text of each caution, by its flag."""
