@@ -11,7 +11,7 @@ import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any
+from typing import Any, NoReturn
 
 import yaml
 from modepair.sweeps.faults import Fault, SpecError, shown
@@ -290,8 +290,7 @@ class _Builder:
                 self.root.place,
                 f"the top of the file is {form}; it takes a mapping of keys, such as title: ...",
             )
-        root = self.root or Node(Place(1, 1), entries={})
-        return Document(self.file, self.text, root, tuple(self.faults), frozenset(self.unread))
+        return Document(self.file, self.text, self.root, self._in_order(), frozenset(self.unread))
 
     def _events(self) -> Iterator[yaml.Event]:
         try:
@@ -303,8 +302,13 @@ class _Builder:
         except (yaml.YAMLError, ValueError, OverflowError, LookupError):
             self._stop(self.last, "what begins here is not YAML: a number or an escape in it is out of range")
 
-    def _stop(self, place: Place, message: str) -> None:
-        raise SpecError([*self.faults, Fault(self.file, place.line, place.column, "", message)]) from None
+    def _in_order(self) -> tuple[Fault, ...]:
+        """The faults in file order: a key given twice is noticed only after its value."""
+        return tuple(sorted(self.faults, key=lambda fault: (fault.line, fault.column)))
+
+    def _stop(self, place: Place, message: str) -> NoReturn:
+        self._fault(place, message)
+        raise SpecError(self._in_order()) from None
 
     def _fault(self, place: Place, message: str, key: str = "") -> None:
         self.faults.append(Fault(self.file, place.line, place.column, key, message))

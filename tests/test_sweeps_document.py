@@ -103,6 +103,13 @@ def test_keys_after_a_collection_used_as_a_key_keep_their_paths() -> None:
     assert [fault.key for fault in read.faults] == ["", "b.c"]
 
 
+def test_faults_before_a_stop_are_in_file_order() -> None:
+    with pytest.raises(SpecError, match="alias") as caught:
+        document("a: *x\na: *y\nb: {\n")
+    places = [(fault.line, fault.column) for fault in caught.value.faults]
+    assert places == [(1, 4), (2, 1), (2, 4), (4, 1)]
+
+
 def refusal(path: str | Path) -> str:
     with pytest.raises(SpecError, match=r"file|UTF-8") as caught:
         read_document(path)
