@@ -303,7 +303,7 @@ class _Builder:
             self._stop(self.last, "what begins here is not YAML: a number or an escape in it is out of range")
 
     def _in_order(self) -> tuple[Fault, ...]:
-        """The faults in file order: a key given twice is noticed only after its value."""
+        """Return the faults in file order: a key given twice is noticed only after its value."""
         return tuple(sorted(self.faults, key=lambda fault: (fault.line, fault.column)))
 
     def _stop(self, place: Place, message: str) -> NoReturn:
