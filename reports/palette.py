@@ -10,8 +10,11 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 
-HUES = ("#008a9e", "#551400", "#6352bb", "#69ba7e", "#ad8a38", "#652153", "#75cad5", "#7d3b43")
-"""Colours for the values of the first axis, in the order of use: far apart in hue first."""
+HUES = ("#008a9e", "#551400", "#69ba7e", "#6352bb", "#ad8a38", "#652153", "#75cad5", "#7d3b43")
+"""Colours for the values of the first axis, in the order of use: the first ones part best in grey."""
+
+SHADED_HUES = ("#008a9e", "#551400", "#6352bb", "#ad8a38", "#69ba7e", "#652153", "#75cad5", "#7d3b43")
+"""The same, in the order of use where lightness tells other axes: the first ones part best in hue."""
 
 RAMP = ("#551400", "#652153", "#6352bb", "#008a9e", "#75cad5")
 """Dark to light, for more values than there are hues."""
@@ -59,7 +62,7 @@ def curve_styles(keys: Sequence[tuple[str, ...]]) -> list[CurveStyle]:
     """
     firsts = list(dict.fromkeys(key[:1] for key in keys))
     others = list(dict.fromkeys(key[1:] for key in keys))
-    colours = _colours(len(firsts))
+    colours = _colours(len(firsts), shaded=len(others) > len(DASHES))
     styles = []
     for key in keys:
         first, other = firsts.index(key[:1]), others.index(key[1:])
@@ -75,9 +78,9 @@ def curve_styles(keys: Sequence[tuple[str, ...]]) -> list[CurveStyle]:
     return styles
 
 
-def _colours(count: int) -> list[str]:
+def _colours(count: int, shaded: bool) -> list[str]:
     if count <= len(HUES):
-        return list(HUES[:count])
+        return list((SHADED_HUES if shaded else HUES)[:count])
     return [_along(RAMP, index / (count - 1)) for index in range(count)]
 
 

@@ -4,7 +4,7 @@ import itertools
 
 import numpy as np
 import pytest
-from modepair.reports.palette import DASHES, HUES, RAMP, curve_styles, mix
+from modepair.reports.palette import DASHES, HUES, RAMP, SHADED_HUES, curve_styles, mix
 
 # Full protanopia and deuteranopia in linear RGB: Machado, Oliveira and Fernandes, 2009 (from memory).
 SIGHTS = {
@@ -44,6 +44,18 @@ def test_hues_part_in_grey():
     lightness = sorted(lab(colour)[0] for colour in HUES)
     assert np.diff(lightness).min() > 6
     assert lightness[-1] < 80  # a thin line still shows on white
+
+
+def test_the_first_three_hues_part_well_in_grey():
+    assert np.diff(sorted(lab(colour)[0] for colour in HUES[:3])).min() > 15
+
+
+def test_shading_keeps_the_hue_of_the_first_axis():
+    assert sorted(SHADED_HUES) == sorted(HUES)
+    styles = curve_styles([(a, str(b)) for a in "xyz" for b in range(9)])
+    for first in range(3):
+        lightness = [lab(style.colour)[0] for style in styles[9 * first : 9 * first + 9]]
+        assert np.all(np.diff(lightness) > 0)
 
 
 def test_ramp_gets_lighter():
