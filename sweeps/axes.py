@@ -13,6 +13,7 @@ from typing import Any
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.parts import OPAMP_PARAMETERS
 from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKeyError
+from modepair.sweeps.tolerances import ToleranceEntry
 from modepair.sweeps.words import suggestion
 from pydantic import BaseModel
 
@@ -76,7 +77,9 @@ def _collect(annotation: Any, metadata: Iterable[Any], path: str, found: dict[st
 
 @cache
 def _fixed_settings() -> dict[str, Leaf]:
-    return {**_leaves(Stage, "stage"), **_leaves(Source, "source")}
+    entry = _leaves(ToleranceEntry, "tolerance.parts[]")
+    varied = {path: entry[path] for path in entry if path.rpartition(".")[2] in ("absolute", "matching", "least")}
+    return {**_leaves(Stage, "stage"), **_leaves(Source, "source"), **varied}
 
 
 def settings(candidates: Iterable[str] = ()) -> dict[str, Leaf]:

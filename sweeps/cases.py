@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -31,12 +31,15 @@ class Block:
         Numbers of the cases, from 1, ascending, shape (n,).
     parts
         SI values by part name: one float for all cases, or one per case, shape (n,).
+    tolerances
+        Values of the tolerance section by their path, such as ``tolerance.parts[0].matching``, likewise.
     """
 
     topology: str
     opamps: dict[str, str]
     case: NDArray[np.int64]
     parts: dict[str, Value]
+    tolerances: dict[str, Value] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -137,6 +140,8 @@ def base_settings(spec: Spec) -> dict[str, float]:
     found: dict[str, float] = {}
     for section, model in (("stage", spec.stage), ("source", spec.source)):
         _flatten(model.model_dump(exclude_none=True), section, found)
+    for index, entry in enumerate(spec.tolerance.parts if spec.tolerance else ()):
+        _flatten(entry.model_dump(exclude_none=True), f"tolerance.parts[{index}]", found)
     for name, candidate in spec.candidates.items():
         found.update({f"opamps.{name}.{key}": value for key, value in candidate.parameters.items()})
     return found
@@ -193,17 +198,20 @@ def _resolved(
 ) -> Iterator[Block]:
     """Yield the block, or two where some of its cases have no RG."""
     parts = resolve_parts(topology, opamps, settings)
+    tolerances = {path: value for path, value in settings.items() if path.startswith("tolerance.")}
     without = np.isinf(parts.get("RG", 0.0))
     if not np.any(without):
-        yield Block(topology, opamps, case, parts)
+        yield Block(topology, opamps, case, parts, tolerances)
         return
     for rows, absent in ((~without, ()), (without, ("RG",))):
-        chosen = {
-            name: value[rows] if isinstance(value, np.ndarray) else value
-            for name, value in parts.items()
-            if name not in absent
-        }
-        yield Block(topology, opamps, case[rows], chosen)
+        chosen = {name: _taken(value, rows) for name, value in parts.items() if name not in absent}
+        yield Block(
+            topology, opamps, case[rows], chosen, {path: _taken(value, rows) for path, value in tolerances.items()}
+        )
+
+
+def _taken(value: Value, rows: NDArray[np.bool_]) -> Value:
+    return value[rows] if isinstance(value, np.ndarray) else value
 
 
 def gain_faults(spec: Spec) -> list[Fault]:

@@ -393,6 +393,8 @@ def _syntax(error: yaml.MarkedYAMLError, text: str, place: Place) -> str:
         return "a tab is not taken here; indent with spaces"
     if error.problem == "mapping values are not allowed here":
         return "not YAML: a second colon in one line; put the value in quotes, or check the indentation"
+    if line[place.column - 1 : place.column] == "[" and re.search(r"[\w.]$", line[: place.column - 1]):
+        return "not YAML: a bracket inside a name in braces; put the name in quotes, or one key on a line of its own"
     since = error.context_mark
     began = f" (in what begins at {since.line + 1}:{since.column + 1})" if since else ""
     return f"not YAML: {shown((error.problem or 'it cannot be read').replace(chr(10), ' '))}{began}"

@@ -7,7 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from modepair.sweeps.axes import Axis, read_axis, settings
-from modepair.sweeps.cases import gain_faults
+from modepair.sweeps.cases import expand, gain_faults
 from modepair.sweeps.coherence import Coherence, candidate_faults
 from modepair.sweeps.document import Document, Location, read_document
 from modepair.sweeps.faults import (
@@ -22,6 +22,7 @@ from modepair.sweeps.faults import (
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
 from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
 from modepair.sweeps.spec import CandidateFile, Spec
+from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults
 from modepair.sweeps.words import listed, suggestion
 from pydantic import BaseModel, ValidationError
 
@@ -71,14 +72,22 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
         spec = Spec.model_validate(raw)
     except ValidationError as error:
         faults += model_faults(document, Spec, error)
-    faults += Coherence(document, names, all_named=not nested).faults()
+    coherence = Coherence(document, names, all_named=not nested)
+    faults += coherence.faults()
+    faults += tolerance_faults(document, [topology.name for topology in coherence.topologies], coherence.axes)
     ordered = _in_order(document, faults, nested)
     if ordered:
         raise SpecError(ordered)
     if spec is None:
         raise SpecError([Fault(document.file, 0, 0, "", "the file cannot be read as a spec")])
     bound = spec.bind(document, {**candidates, **from_files, **spec.opamps}, axes)
-    faults = sorted(gain_faults(bound), key=lambda fault: (fault.line, fault.column))
+    faults = gain_faults(bound)
+    if spec.tolerance and not faults:
+        sweep = expand(bound)
+        valued = {name for block in sweep.blocks for name in block.parts}
+        results = sweep.count * int(spec.tolerance.draws)
+        faults = list(unvaried_faults(document, spec.tolerance, valued, results))
+    faults.sort(key=lambda fault: (fault.line, fault.column))
     if faults:
         raise SpecError(faults)
     return bound

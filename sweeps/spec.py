@@ -25,6 +25,7 @@ from modepair.sweeps.schema import (
 )
 from pydantic import Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
 from pydantic_core import CoreSchema, core_schema
+from modepair.sweeps.tolerances import Tolerance
 
 
 class _NameKeys:
@@ -112,6 +113,8 @@ class Spec(Section):
         Candidates given in place.
     opamp_files
         Files of candidates, relative to the spec's folder.
+    tolerance
+        What varies from board to board; None: nominal runs only.
     """
 
     title: Annotated[str, Reads(TITLE)] = ""
@@ -122,6 +125,7 @@ class Spec(Section):
     vary: Annotated[dict[str, tuple[str, ...]], _VarySchema()] = Field(default_factory=dict)
     opamps: Candidates = Field(default_factory=dict)
     opamp_files: tuple[Annotated[str, Reads(FILE_NAME)], ...] = ()
+    tolerance: Tolerance | None = None
 
     _document: Document = PrivateAttr(
         default_factory=lambda: Document("", "", Node(Place(1, 1), entries={}), (), frozenset())

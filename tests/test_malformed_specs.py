@@ -12,7 +12,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import pytest
-from modepair.sweeps import SpecError, load_spec
+from modepair.sweeps import Spec, SpecError, load_spec
+from modepair.sweeps.words import listed
 
 BASE = """\
 stage:
@@ -24,6 +25,9 @@ frequency: {start: 1, stop: 1M, spots: [50]}
 opamps:
   fast: {open_loop_gain: 120 dB, gain_bandwidth: 10M}
 """
+
+KNOWN_KEYS = listed(Spec.model_fields)
+"""The keys of a spec, as a message lists them."""
 
 
 @dataclass(frozen=True)
@@ -252,7 +256,7 @@ MALFORMED = [
         "unknown key, nothing near",
         spec(plus="zzz: 1\n"),
         [
-            "9:1: zzz: zzz is not a known key; known keys: title, cautions, stage, source, frequency, vary, opamps and opamp_files"
+            f"9:1: zzz: zzz is not a known key; known keys: {KNOWN_KEYS}"
         ],
     ),
     Malformed(
@@ -593,13 +597,13 @@ MALFORMED = [
         [
             "1:1: the stage is missing; give stage with topology, parts and opamp",
             "1:1: the frequencies are missing; give frequency, such as {start: 1, stop: 1M, spots: [50, 60]}",
-            "1:1: a: a is not a known key; known keys: title, cautions, stage, source, frequency, vary, opamps and opamp_files",
+            f"1:1: a: a is not a known key; known keys: {KNOWN_KEYS}",
             "1:4: the anchor &a is not taken; remove it and write values out",
-            "2:1: b: b is not a known key; known keys: title, cautions, stage, source, frequency, vary, opamps and opamp_files",
+            f"2:1: b: b is not a known key; known keys: {KNOWN_KEYS}",
             "2:4: the anchor &b is not taken; remove it and write values out",
             "2:8: the alias *a is not taken; write the value out",
             "2:12: the alias *a is not taken; write the value out",
-            "3:1: c: c is not a known key; known keys: title, cautions, stage, source, frequency, vary, opamps and opamp_files",
+            f"3:1: c: c is not a known key; known keys: {KNOWN_KEYS}",
             "3:4: the anchor &c is not taken; remove it and write values out",
             "3:8: the alias *b is not taken; write the value out",
             "3:12: the alias *b is not taken; write the value out",

@@ -1,0 +1,233 @@
+"""Tolerances: what varies from board to board, by how much and how."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Annotated, Any
+
+from pydantic import Field, ValidationError
+
+from modepair.sweeps.document import Document
+from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
+from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, STAGE_PART_KINDS, TOPOLOGIES
+from modepair.sweeps.quantities import COUNT, DECIBELS, FRACTION
+from modepair.sweeps.schema import Reads, Section
+from modepair.sweeps.words import Choice, listed, suggestion
+
+__all__ = ["MOST_DRAWS", "MOST_RESULTS", "Tolerance", "ToleranceEntry", "tolerance_faults", "unvaried_faults"]
+
+MOST_DRAWS = 1_000_000
+"""Draws of a case."""
+
+MOST_RESULTS = 20_000_000
+"""Draws of all cases together."""
+
+DISTRIBUTIONS = ("rectangular", "normal", "triangular", "two-point")
+SAMPLINGS = ("random", "latin-hypercube", "sobol")
+
+_SHARE = replace(FRACTION, noun="a tolerance", least=1e-9, most=0.999999, zero=False, example="0.1 %")
+_LEAST = replace(DECIBELS, noun="a least CMRR in dB", example="100 dB")
+_SEED = replace(COUNT, noun="a seed", least=0, most=2**53, zero=True, example="7")
+_DRAWS = replace(COUNT, noun="a number of draws", most=MOST_DRAWS, example="2000")
+
+
+@dataclass(frozen=True)
+class _ToleranceName:
+    """Reads the name of a part or of an op-amp's parameter."""
+
+    takes: str = "names of parts or op-amp parameters, such as R1, CCP or A1.gain_bandwidth"
+
+    def parse(self, written: object) -> str:
+        """Return the name; raise `RefusedError` with the nearest known one for any other."""
+        if not isinstance(written, str):
+            raise RefusedError(form_of(written), self.takes)
+        text = written.strip()
+        if text not in PARTS and text not in STAGE_PART_KINDS:
+            near = suggestion(text, [*PARTS, *STAGE_PART_KINDS])
+            raise RefusedError(f"{shown(text)} is no part{near}", self.takes)
+        if text.endswith(".cmrr_sign"):
+            raise RefusedError(
+                f"{text} has no tolerance of its own", "the cmrr instead, with least: its sign varies with it"
+            )
+        return text
+
+    def json_schema(self) -> dict[str, Any]:
+        """Return the JSON Schema of a name."""
+        known = [name for name in (*PARTS, *STAGE_PART_KINDS) if not name.endswith(".cmrr_sign")]
+        return {"type": "string", "enum": list(dict.fromkeys(known))}
+
+
+class ToleranceEntry(Section):
+    """One entry: parts that vary alike.
+
+    Parameters
+    ----------
+    of
+        Names of parts, or of op-amp parameters such as ``A1.gain_bandwidth``.
+    absolute
+        Bound of the relative error: of each part, or with `matching` of the whole set together.
+    matching
+        Bound of each part's relative error within the set.
+    least
+        For op-amps' CMRR: the data sheet's minimum, a ratio. The signed reciprocal of CMRR varies about
+        zero, three sigma (or the bound) at 1/least.
+    distribution
+        rectangular, normal (the tolerance is 3 sigma), triangular or two-point. None: normal for `least`,
+        else rectangular, since a bound is all that is known (JCGM 101:2008, 6.4.2).
+    """
+
+    of: tuple[Annotated[str, Reads(_ToleranceName())], ...]
+    absolute: Annotated[float, Reads(_SHARE)] | None = None
+    matching: Annotated[float, Reads(_SHARE)] | None = None
+    least: Annotated[float, Reads(_LEAST)] | None = None
+    distribution: Annotated[str, Reads(Choice("a distribution", DISTRIBUTIONS))] | None = None
+
+    @property
+    def law(self) -> str:
+        """The distribution that holds."""
+        return self.distribution or ("normal" if self.least is not None else "rectangular")
+
+
+class Tolerance(Section):
+    """The tolerances of a spec.
+
+    Parameters
+    ----------
+    draws
+        Boards to draw for each case.
+    seed
+        Whole number from which all draws follow.
+    sampling
+        random, latin-hypercube or sobol.
+    keep
+        quantiles, or curves to keep every draw's curve.
+    parts
+        The entries.
+    """
+
+    draws: Annotated[float, Reads(_DRAWS)]
+    seed: Annotated[float, Reads(_SEED)] = 1
+    sampling: Annotated[str, Reads(Choice("a way of sampling", SAMPLINGS))] = "random"
+    keep: Annotated[str, Reads(Choice("a way to keep draws", ("quantiles", "curves")))] = "quantiles"
+    parts: tuple[ToleranceEntry, ...] = Field(min_length=1)
+
+
+def tolerance_faults(document: Document, topologies: Sequence[str], axes: Mapping[str, Any]) -> Iterator[Fault]:
+    """Yield what the entries of a tolerance section do not agree on.
+
+    Parameters
+    ----------
+    document
+        The spec as read.
+    topologies
+        Names of the stages in use.
+    axes
+        Paths of the axes, as keys.
+    """
+    node = document.node(("tolerance", "parts"))
+    items = (node.items or []) if node else []
+    seen: dict[str, str] = {}
+    for index, item in enumerate(items):
+        place = ("tolerance", "parts", index)
+        keys = set(item.entries or {})
+        varied = {key for key in ("absolute", "matching", "least") if f"tolerance.parts[{index}].{key}" in axes}
+        try:
+            entry = ToleranceEntry.model_validate(item.raw)
+        except ValidationError:
+            entry = None
+        names = entry.of if entry else ()
+        if entry and not names:
+            yield document.fault((*place, "of"), "the list is empty; of takes at least one part")
+        for position, name in enumerate(names):
+            at = (*place, "of", position)
+            if topologies and not any(_has(topology, name) for topology in topologies):
+                yield document.fault(at, f"the {' and '.join(topologies)} stage has no {name}; {_known(topologies, name)}")
+            if name in seen:
+                yield document.fault(at, f"{name} has a tolerance already, at {seen[name]}; give it once")
+            seen.setdefault(name, _where(document, at))
+        given = keys | varied
+        if entry and not given & {"absolute", "least"}:
+            yield document.fault(place, "absolute is missing; it takes a tolerance, such as 0.1 %")
+        yield from _cmrr_faults(document, place, names, given)
+        yield from _matching_faults(document, place, entry, given)
+    for path in axes:
+        if path.startswith("tolerance.parts["):
+            index = int(path.removeprefix("tolerance.parts[").partition("]")[0])
+            if index >= len(items):
+                entries = f"its entries are 0 to {len(items) - 1}" if items else "it has no entries"
+                yield document.fault(("vary", path), f"the tolerance section has no parts[{index}]; {entries}", at_key=True)
+
+
+def _where(document: Document, location: tuple[str | int, ...]) -> str:
+    place = document.value_place(location)
+    return f"line {place.line}"
+
+
+def _has(topology: str, name: str) -> bool:
+    stage = TOPOLOGIES[topology]
+    instance, dot, _ = name.partition(".")
+    if dot:
+        return instance in stage.opamps
+    return PARTS[name].section == "source" or name in stage.parts
+
+
+def _known(topologies: Sequence[str], name: str) -> str:
+    if "." in name:
+        return f"its op-amps are {listed(sorted({a for t in topologies for a in TOPOLOGIES[t].opamps}))}"
+    return f"its parts are {listed(dict.fromkeys(part for t in topologies for part in TOPOLOGIES[t].parts))}"
+
+
+def _cmrr_faults(
+    document: Document, place: tuple[str | int, ...], names: Sequence[str], given: set[str]
+) -> Iterator[Fault]:
+    cmrr = [name for name in names if name.endswith(".cmrr")]
+    if cmrr and len(cmrr) < len(names):
+        other = next(name for name in names if name not in cmrr)
+        yield document.fault(place, f"{cmrr[0]} and {other} cannot share an entry; give CMRR an entry of its own, with least")
+    elif cmrr and given & {"absolute", "matching"}:
+        key = "absolute" if "absolute" in given else "matching"
+        yield document.fault((*place, key), f"{cmrr[0]} takes least, such as 100 dB, in place of {key}", at_key=True)
+    elif names and not cmrr and "least" in given:
+        yield document.fault((*place, "least"), f"{names[0]} takes absolute, such as 0.1 %; least is for op-amps' cmrr", at_key=True)
+
+
+def _matching_faults(
+    document: Document, place: tuple[str | int, ...], entry: ToleranceEntry | None, given: set[str]
+) -> Iterator[Fault]:
+    if entry is None or "matching" not in given:
+        return
+    at = (*place, "matching")
+    if len(entry.of) == 1:
+        yield document.fault(at, f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts", at_key=True)
+    units = {OPAMP_PARAMETERS[n.partition(".")[2]].unit if "." in n else PARTS[n].kind.unit for n in entry.of}
+    if len(units) > 1:
+        yield document.fault(place, "parts of different kinds cannot form a matched set; give each kind an entry of its own")
+    if entry.absolute is not None and entry.matching is not None and entry.matching > entry.absolute:
+        text = document.node(at)
+        written = shown(text.text or "") if text else "matching"
+        yield document.fault(at, f"{written} is wider than absolute; parts of a set match at least as well as absolute says")
+
+
+def unvaried_faults(document: Document, tolerance: Tolerance, valued: set[str], results: int) -> Iterator[Fault]:
+    """Yield the parts of a tolerance section that have no value in any case, and a product that is too large.
+
+    Parameters
+    ----------
+    document
+        The spec as read.
+    tolerance
+        Its tolerance section.
+    valued
+        Names of the parts that at least one case has.
+    results
+        Draws of all cases together.
+    """
+    for index, entry in enumerate(tolerance.parts):
+        for position, name in enumerate(entry.of):
+            if name not in valued and not name.endswith(".cmrr"):
+                at = ("tolerance", "parts", index, "of", position)
+                yield document.fault(at, f"{name} has no value in any case, so it cannot vary; give it one, or take it out here")
+    if results > MOST_RESULTS:
+        message = f"the cases make {results:,} draws together; at most {MOST_RESULTS:,} are taken, so draw less or shorten an axis"
+        yield document.fault(("tolerance", "draws"), message)
