@@ -6,6 +6,8 @@ from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+from pydantic import BaseModel, ValidationError
+
 from modepair.sweeps.axes import Axis, read_axis, settings
 from modepair.sweeps.cases import expand, gain_faults
 from modepair.sweeps.coherence import Coherence, candidate_faults
@@ -19,12 +21,12 @@ from modepair.sweeps.faults import (
     form_of,
     shown,
 )
+from modepair.sweeps.limits import limit_faults
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
 from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
 from modepair.sweeps.spec import CandidateFile, Spec
 from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults
 from modepair.sweeps.words import listed, suggestion
-from pydantic import BaseModel, ValidationError
 
 _MISSING = {
     "stage": "the stage is missing; give stage with topology, parts and opamp",
@@ -75,6 +77,7 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     coherence = Coherence(document, names, all_named=not nested)
     faults += coherence.faults()
     faults += tolerance_faults(document, [topology.name for topology in coherence.topologies], coherence.axes)
+    faults += limit_faults(document)
     ordered = _in_order(document, faults, nested)
     if ordered:
         raise SpecError(ordered)

@@ -3,11 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Annotated, Any, Protocol
 
 import numpy as np
+from numpy.typing import NDArray
+from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
+from pydantic_core import CoreSchema, core_schema
+
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.parts import (
     INSTANCES,
@@ -19,9 +23,6 @@ from modepair.sweeps.parts import (
 )
 from modepair.sweeps.quantities import FREQUENCY, GAIN, NUMBER, Kind
 from modepair.sweeps.words import Choice, Name, Text, listed, suggestion
-from numpy.typing import NDArray
-from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler
-from pydantic_core import CoreSchema, core_schema
 
 SPOT_MATCH = 1e-9
 """Relative distance within which a spot and a grid frequency are the same."""
@@ -302,6 +303,23 @@ class Frequency(Section):
     points_per_decade: Annotated[float, Reads(_POINTS)] = 20.0
     spots: tuple[FrequencyValue, ...] = ()
 
+    _further_hz: tuple[float, ...] = PrivateAttr(default=())
+
+    def solving_too(self, frequency_hz: Iterable[float]) -> Frequency:
+        """Return the same frequencies with further ones, Hz, that are solved exactly but are no spots."""
+        more = self.model_copy()
+        more._further_hz = tuple(sorted({*self._further_hz, *frequency_hz}))
+        return more
+
+    @property
+    def exact_hz(self) -> NDArray[np.float64]:
+        """The frequencies that are solved at their exact values, ascending, Hz: spots and further ones."""
+        exact = sorted(self.spots)
+        for further in self._further_hz:
+            if not any(abs(further - spot) <= SPOT_MATCH * spot for spot in exact):
+                exact.append(further)
+        return np.array(sorted(exact), dtype=np.float64)
+
     @property
     def grid_hz(self) -> NDArray[np.float64]:
         """The logarithmic grid, Hz, shape (G,), both ends included.
@@ -316,17 +334,17 @@ class Frequency(Section):
 
     @property
     def off_grid_spots_hz(self) -> tuple[float, ...]:
-        """The spots that are not on the grid, ascending, Hz."""
+        """The spots and further frequencies that are not on the grid, ascending, Hz."""
         grid = self.grid_hz
         return tuple(
-            spot for spot in sorted(self.spots) if not np.any(np.abs(grid - spot) <= SPOT_MATCH * spot)
+            spot for spot in self.exact_hz.tolist() if not np.any(np.abs(grid - spot) <= SPOT_MATCH * spot)
         )
 
     @property
     def frequency_hz(self) -> NDArray[np.float64]:
-        """Grid and spots together, ascending, Hz, shape (F,); a spot on the grid keeps its exact value."""
+        """Grid, spots and further frequencies, ascending, Hz, shape (F,); exact ones go first."""
         grid = self.grid_hz
-        spots = np.array(sorted(self.spots), dtype=np.float64)
+        spots = self.exact_hz
         if spots.size:
             near = np.abs(grid[:, None] - spots[None, :]) <= SPOT_MATCH * spots[None, :]
             grid = grid[~near.any(axis=1)]

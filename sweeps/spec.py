@@ -6,9 +6,13 @@ import hashlib
 from collections.abc import Mapping
 from typing import Annotated, Any
 
+from pydantic import Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
+from pydantic_core import CoreSchema, core_schema
+
 from modepair.sweeps.axes import Axis, settings
 from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
+from modepair.sweeps.limits import Limits
 from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
     CAUTION,
@@ -23,8 +27,6 @@ from modepair.sweeps.schema import (
     Stage,
     UnknownKeyError,
 )
-from pydantic import Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
-from pydantic_core import CoreSchema, core_schema
 from modepair.sweeps.tolerances import Tolerance
 
 
@@ -113,6 +115,8 @@ class Spec(Section):
         Candidates given in place.
     opamp_files
         Files of candidates, relative to the spec's folder.
+    limits
+        What every case must keep; None: nothing is judged.
     tolerance
         What varies from board to board; None: nominal runs only.
     """
@@ -125,6 +129,7 @@ class Spec(Section):
     vary: Annotated[dict[str, tuple[str, ...]], _VarySchema()] = Field(default_factory=dict)
     opamps: Candidates = Field(default_factory=dict)
     opamp_files: tuple[Annotated[str, Reads(FILE_NAME)], ...] = ()
+    limits: Limits | None = None
     tolerance: Tolerance | None = None
 
     _document: Document = PrivateAttr(
@@ -135,7 +140,8 @@ class Spec(Section):
 
     def bind(self, document: Document, candidates: Mapping[str, Opamp], axes: tuple[Axis, ...]) -> Spec:
         """Return the spec with what the reader found besides it: its document, all candidates, its axes."""
-        bound = self.model_copy()
+        judged = self.limits.frequency_hz if self.limits else ()
+        bound = self.model_copy(update={"frequency": self.frequency.solving_too(judged)})
         bound._document = document
         bound._candidates = dict(candidates)
         bound._axes = axes
