@@ -18,10 +18,10 @@ COPIES = ("c", "d")
 DRIVES: Mapping[str, tuple[float, float]] = {"c": (1.0, 1.0), "d": (0.5, -0.5)}
 """Amplitudes of the plus and the minus generator of each copy, in volts."""
 
-OPTIONS = ".option noopac pivrel=0.1"
+OPTIONS = ".option noopac pivrel=0.5"
 """A linear circuit needs no operating point, so a node that floats at DC is no matter. The pivot threshold is
-a hundred times ngspice's own: against a dense solve of random stages the largest error at the output fell
-from 1e-9 to 3e-11 V per volt of drive, at no cost in time."""
+far above ngspice's own 0.001: of random stages, the largest error at the output against a dense solve fell from
+1e-9 to 3e-11 V per volt of drive, at no cost in time."""
 
 
 def _add(built: Circuit, element: Element, row: int, copy: str) -> None:

@@ -229,7 +229,24 @@ class Engine:
 
 
 @cache
+def _started() -> Engine | EngineMissingError:
+    # A failed start is kept too: the library's declarations cannot be read a second time in a process.
+    try:
+        return Engine()
+    except EngineMissingError as error:
+        return error
+
+
 def engine() -> Engine:
-    """Return the engine of this process, started at the first call."""
-    return Engine()
+    """Return the engine of this process, started at the first call.
+
+    Raises
+    ------
+    EngineMissingError
+        If the ngspice library is not found or cannot be opened.
+    """
+    started = _started()
+    if isinstance(started, EngineMissingError):
+        raise started
+    return started
 

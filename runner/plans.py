@@ -2,22 +2,36 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from typing import Protocol
 
 import numpy as np
 import numpy.typing as npt
 
 from modepair.circuits import COPIES, OUTPUT, Deck, Structure, structures
 from modepair.runner.batches import Batch
-from modepair.sweeps import Sweep
+from modepair.sweeps import Streams, Sweep, Variate, boards, variates
 
-__all__ = ["BATCH_CASES", "BatchPlan", "plan_batches"]
+__all__ = ["BATCH_CASES", "BatchPlan", "DrawnCase", "Plan", "drawn_case", "plan_batches", "plan_draws"]
 
 BATCH_CASES = 64
 """Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
 deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
 
+DRAWS_OF_BATCH = 128
+"""Draws in a batch, cut the same way for the same reason."""
+
 VECTORS = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
+
+
+class Plan(Protocol):
+    """A batch not yet worked out."""
+
+    position: npt.NDArray[np.int64]
+
+    def batch(self) -> Batch:
+        """Work out the element values."""
 
 
 @dataclass(frozen=True)
@@ -34,13 +48,15 @@ class BatchPlan:
         return Batch(self.position, self.deck, self.structure.values(self.rows), VECTORS)
 
 
-def plan_batches(sweep: Sweep) -> list[BatchPlan]:
-    """Cut a sweep into batches.
+def plan_batches(sweep: Sweep, stride: int = 1) -> list[BatchPlan]:
+    """Cut the nominal cases of a sweep into batches.
 
     Parameters
     ----------
     sweep : Sweep
         The expanded spec.
+    stride : int
+        Distance of two cases in the order of results: 1, or one more than the draws of each.
 
     Returns
     -------
@@ -55,5 +71,102 @@ def plan_batches(sweep: Sweep) -> list[BatchPlan]:
             deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
             for start in range(0, len(structure.rows), BATCH_CASES):
                 rows = structure.rows[start : start + BATCH_CASES]
-                plans.append(BatchPlan(block.case[rows] - 1, structure, deck, rows))
+                plans.append(BatchPlan((block.case[rows] - 1) * stride, structure, deck, rows))
     return sorted(plans, key=lambda plan: int(plan.position[0]))
+
+
+@dataclass(frozen=True)
+class DrawnCase:
+    """A case and what varies in it.
+
+    Attributes
+    ----------
+    case : int
+        Its number.
+    topology : str
+        Its stage.
+    parts : mapping of str to float
+        Its nominal part values.
+    causes : tuple of Variate
+        What varies.
+    """
+
+    case: int
+    topology: str
+    parts: Mapping[str, float]
+    causes: tuple[Variate, ...]
+
+
+def drawn_case(sweep: Sweep, case: int) -> DrawnCase:
+    """Gather one case's nominal parts and variates.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        The expanded spec, with a tolerance section or without.
+    case : int
+        Case number.
+
+    Returns
+    -------
+    DrawnCase
+        Without variates where the spec has no tolerances.
+    """
+    block = next(block for block in sweep.blocks if case in block.case)
+    row = int(np.searchsorted(block.case, case))
+
+    def at_row(values: Mapping[str, float | npt.NDArray[np.float64]]) -> dict[str, float]:
+        return {name: float(value[row]) if isinstance(value, np.ndarray) else value for name, value in values.items()}
+
+    parts = at_row(block.parts)
+    tolerance = sweep.spec.tolerance
+    if tolerance is None:
+        return DrawnCase(case, block.topology, parts, ())
+    present = [name for name, value in parts.items() if value] + [f"{a}.cmrr" for a in block.opamps]
+    return DrawnCase(case, block.topology, parts, variates(tolerance, at_row(block.tolerances), present))
+
+
+@dataclass(frozen=True)
+class DrawPlan:
+    """Some draws of a case, not yet drawn."""
+
+    position: npt.NDArray[np.int64]
+    drawn: DrawnCase
+    streams: Streams
+    start: int
+    decks: dict[object, Deck] = field(repr=False)
+
+    def batch(self) -> Batch:
+        """Draw the boards and work out their element values."""
+        count = len(self.position)
+        errors = self.streams.errors(self.drawn.causes, self.start, self.start + count)
+        parts = boards(self.drawn.parts, self.drawn.causes, errors)
+        # Tolerances below 100 % leave every part on its side of zero, so all boards of a case share a structure.
+        (structure,) = structures(self.drawn.topology, parts, count)
+        deck = self.decks.get(structure.key) or self.decks.setdefault(structure.key, structure.deck())
+        return Batch(self.position, deck, structure.values(structure.rows), VECTORS)
+
+
+def plan_draws(sweep: Sweep, streams: Streams) -> Iterator[DrawPlan]:
+    """Cut the draws of all cases into batches.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        The expanded spec, with a tolerance section.
+    streams : Streams
+        Its random numbers.
+
+    Yields
+    ------
+    DrawPlan
+        Case by case; draw d of case c has the place (c - 1)(draws + 1) + d, behind the nominal run's.
+    """
+    draws = streams.draws
+    decks: dict[object, Deck] = {}
+    for case in range(1, sweep.count + 1):
+        drawn = drawn_case(sweep, case)
+        for start in range(0, draws, DRAWS_OF_BATCH):
+            count = min(DRAWS_OF_BATCH, draws - start)
+            first = (case - 1) * (draws + 1) + 1 + start
+            yield DrawPlan(np.arange(first, first + count), drawn, streams, start, decks)
