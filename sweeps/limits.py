@@ -4,26 +4,22 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
-from typing import Annotated, Any
+from typing import Annotated
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from pydantic import Field
 
+from modepair.sweeps.corners import Corners, ReadsCorners
 from modepair.sweeps.document import Document, Location
-from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.faults import Fault, RefusedError, shown
 from modepair.sweeps.quantities import DECIBELS, FRACTION, FREQUENCY, GAIN, VOLTAGE, Kind
 from modepair.sweeps.schema import SPOT_MATCH, FrequencyValue, Reads, Section
-
-MOST_CORNERS = 1000
-"""Corners that a mask may have."""
 
 _PART = replace(FRACTION, zero=False, example="0.5 %")
 _YIELD = replace(FRACTION, zero=False, most=0.999999, example="99 %")
 _ERROR = replace(VOLTAGE, zero=False, example="1 mV")
 _CODES = Kind("a number of converter codes", prefixes="", least=1e-6, most=1e9, example="2")
-_CORNERS = "a list of corners, such as [[50, 90 dB], [1k, 80 dB]]"
-_CORNER = "a corner of frequency and level, such as [50, 90 dB]"
 
 
 @dataclass(frozen=True)
@@ -36,7 +32,7 @@ class Mask:
         Pairs of frequency in Hz, ascending, and level in dB; at least one.
     """
 
-    corners: tuple[tuple[float, float], ...]
+    corners: Corners
 
     @property
     def frequency_hz(self) -> NDArray[np.float64]:
@@ -70,63 +66,12 @@ class Mask:
         return np.where(inside, level, np.nan)
 
 
-class ReadsMask:
-    """What reads a mask from its list of corners."""
+def _mask(corners: Corners) -> Mask:
+    """Make a mask from corners whose levels are plain ratios; rounded as they were written, in dB."""
+    return Mask(tuple((frequency, round(20 * float(np.log10(ratio)), 9)) for frequency, ratio in corners))
 
-    takes = _CORNERS
 
-    def parse(self, written: object) -> Mask:
-        """Return the mask; raise `RefusedError`, or `SeveralRefusedError` for all corners refused."""
-        if not isinstance(written, list | tuple):
-            raise RefusedError(form_of(written), self.takes)
-        if not written:
-            raise RefusedError("the list is empty", self.takes)
-        if len(written) > MOST_CORNERS:
-            raise RefusedError(f"there are {len(written)} corners; at most {MOST_CORNERS} are taken")
-        corners: list[tuple[float, float]] = []
-        refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
-        for index, item in enumerate(written):
-            if not isinstance(item, list | tuple):
-                refusals.append(((index,), RefusedError(f"{form_of(item)}; each item is {_CORNER}")))
-                continue
-            if len(item) != 2:
-                count = f"{len(item)} value{'' if len(item) == 1 else 's'}"
-                refusals.append(((index,), RefusedError(f"there are {count} here; each item is {_CORNER}")))
-                continue
-            values = []
-            for place, (kind, text) in enumerate(zip((FREQUENCY, DECIBELS), item, strict=True)):
-                try:
-                    values.append(kind.parse(text))
-                except RefusedError as refusal:
-                    name = ("the frequency", "the level")[place]
-                    refusals.append(((index, place), RefusedError(refusal.message(name))))
-            if len(values) < 2:
-                continue
-            if corners and not values[0] > corners[-1][0] * (1 + SPOT_MATCH):
-                message = (
-                    f"{shown(str(item[0]))} is not above the corner before it; corners ascend in frequency"
-                )
-                refusals.append(((index, 0), RefusedError(message)))
-                continue
-            corners.append((values[0], round(20 * float(np.log10(values[1])), 9)))
-        if refusals:
-            raise SeveralRefusedError(refusals)
-        return Mask(tuple(corners))
-
-    def json_schema(self) -> dict[str, Any]:
-        """Return the JSON Schema of a mask."""
-        return {
-            "type": "array",
-            "minItems": 1,
-            "maxItems": MOST_CORNERS,
-            "description": f"{_CORNERS}; straight lines in dB over log frequency",
-            "items": {
-                "type": "array",
-                "prefixItems": [FREQUENCY.json_schema(), DECIBELS.json_schema()],
-                "minItems": 2,
-                "maxItems": 2,
-            },
-        }
+_READS_MASK = ReadsCorners(DECIBELS, "[[50, 90 dB], [1k, 80 dB]]", _mask)
 
 
 class GainLimit(Section):
@@ -198,7 +143,7 @@ class Limits(Section):
         The greatest errors that interference leaves.
     """
 
-    cmrr: Annotated[Mask, Reads(ReadsMask())] | None = None
+    cmrr: Annotated[Mask, Reads(_READS_MASK)] | None = None
     differential_gain: GainLimit | None = None
     bandwidth: BandwidthLimit | None = None
     yield_: YieldLimit | None = Field(default=None, alias="yield")

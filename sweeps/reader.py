@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import Any
 
 from pydantic import BaseModel, ValidationError
+from pydantic.fields import FieldInfo
 
 from modepair.sweeps.axes import Axis, read_axis, settings
 from modepair.sweeps.cases import expand, gain_faults
@@ -21,6 +22,7 @@ from modepair.sweeps.faults import (
     form_of,
     shown,
 )
+from modepair.sweeps.interference import interference_faults
 from modepair.sweeps.limits import limit_faults
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
 from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
@@ -78,6 +80,7 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     faults += coherence.faults()
     faults += tolerance_faults(document, [topology.name for topology in coherence.topologies], coherence.axes)
     faults += limit_faults(document)
+    faults += interference_faults(document)
     ordered = _in_order(document, faults, nested)
     if ordered:
         raise SpecError(ordered)
@@ -243,13 +246,17 @@ def _fields_at(model: type[BaseModel], location: Location) -> list[str]:
     """Return the keys that the section at `location` takes."""
     current = model
     for token in location:
-        information = current.model_fields.get(token) if isinstance(token, str) else None
+        information = _by_key(current).get(token) if isinstance(token, str) else None
         if information is None:
             continue
         for candidate in (information.annotation, *getattr(information.annotation, "__args__", ())):
             if isinstance(candidate, type) and issubclass(candidate, BaseModel):
                 current = candidate
-    return list(current.model_fields)
+    return list(_by_key(current))
+
+
+def _by_key(model: type[BaseModel]) -> dict[str, FieldInfo]:
+    return {field.alias or name: field for name, field in model.model_fields.items()}
 
 
 def _in_order(

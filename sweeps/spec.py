@@ -12,6 +12,7 @@ from pydantic_core import CoreSchema, core_schema
 from modepair.sweeps.axes import Axis, settings
 from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
+from modepair.sweeps.interference import Interference
 from modepair.sweeps.limits import Limits
 from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
@@ -115,6 +116,8 @@ class Spec(Section):
         Candidates given in place.
     opamp_files
         Files of candidates, relative to the spec's folder.
+    interference
+        The common-mode voltage whose errors are worked out; None: none.
     limits
         What every case must keep; None: nothing is judged.
     tolerance
@@ -129,6 +132,7 @@ class Spec(Section):
     vary: Annotated[dict[str, tuple[str, ...]], _VarySchema()] = Field(default_factory=dict)
     opamps: Candidates = Field(default_factory=dict)
     opamp_files: tuple[Annotated[str, Reads(FILE_NAME)], ...] = ()
+    interference: Interference | None = None
     limits: Limits | None = None
     tolerance: Tolerance | None = None
 
@@ -140,8 +144,9 @@ class Spec(Section):
 
     def bind(self, document: Document, candidates: Mapping[str, Opamp], axes: tuple[Axis, ...]) -> Spec:
         """Return the spec with what the reader found besides it: its document, all candidates, its axes."""
-        judged = self.limits.frequency_hz if self.limits else ()
-        bound = self.model_copy(update={"frequency": self.frequency.solving_too(judged)})
+        wanted = [section.frequency_hz for section in (self.limits, self.interference) if section]
+        frequency = self.frequency.solving_too(hz for section in wanted for hz in section)
+        bound = self.model_copy(update={"frequency": frequency})
         bound._document = document
         bound._candidates = dict(candidates)
         bound._axes = axes
