@@ -38,8 +38,8 @@ def case_deck(sweep: Sweep, plans: Iterable[BatchPlan], analyses: Analyses, case
         If there is no such case.
     """
     for plan in plans:
-        if case - 1 in plan.position:
-            row = int(plan.rows[int((plan.position == case - 1).argmax())])
+        if case in plan.case:
+            row = int(plan.rows[int((plan.case == case).argmax())])
             commands = [command for command, _, _ in analyses.commands]
             labels = ", ".join(f"{path} {text}" for path, text in sweep.axis_labels(case).items())
             comment = f"case {case}{': ' + labels if labels else ''}"
@@ -69,7 +69,7 @@ def structure_decks(sweep: Sweep, plans: Iterable[BatchPlan], analyses: Analyses
         seen.add(plan.structure.key)
         topology = plan.structure.topology
         number = 1 + sum(name.startswith(f"{topology}-") for name in decks)
-        decks[f"{topology}-{number}.cir"] = case_deck(sweep, [plan], analyses, int(plan.position[0]) + 1)
+        decks[f"{topology}-{number}.cir"] = case_deck(sweep, [plan], analyses, int(plan.case[0]))
     return decks
 
 

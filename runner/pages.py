@@ -8,7 +8,7 @@ from pathlib import Path
 from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
 from modepair.runner.folder import RunFolder
 from modepair.runner.results import Results
-from modepair.sweeps import Sweep, render
+from modepair.sweeps import Sweep, ToleranceEntry, render
 from modepair.sweeps.axes import settings
 from modepair.sweeps.cases import base_settings
 from modepair.sweeps.quantities import Kind
@@ -23,6 +23,17 @@ def _written(value: float, kind: object) -> str:
     if isinstance(kind, Kind) and (kind.decibels == "only" or (kind.decibels != "no" and value >= 1000)):
         return f"{20 * math.log10(value):.6g} dB"
     return render(value, kind.unit if isinstance(kind, Kind) else "")
+
+
+def _tolerance_text(entry: ToleranceEntry) -> str:
+    shares = [
+        f"{key} {100 * value:.6g} %"
+        for key, value in (("absolute", entry.absolute), ("matching", entry.matching))
+        if value is not None
+    ]
+    if entry.least is not None:
+        shares.append(f"least {20 * math.log10(entry.least):.6g} dB")
+    return f"{', '.join(entry.of)}: {', '.join(shares)}, {entry.law}"
 
 
 def asked(sweep: Sweep) -> dict[str, str]:
@@ -47,7 +58,7 @@ def asked(sweep: Sweep) -> dict[str, str]:
     used = sorted({name for block in sweep.blocks for name in block.opamps.values()})
     opamps: dict[str, list[str]] = {name: [] for name in used}
     for path, value in base_settings(spec).items():
-        if path in varied:
+        if path in varied or path.startswith("tolerance."):
             continue
         if path.startswith("opamps."):
             name, _, parameter = path.removeprefix("opamps.").rpartition(".")
@@ -64,6 +75,10 @@ def asked(sweep: Sweep) -> dict[str, str]:
     texts["frequency"] = (
         f"{render(plan.start, 'Hz')} to {render(plan.stop, 'Hz')}, {plan.points_per_decade:g} points per decade"
     )
+    if spec.tolerance:
+        texts["draws"] = f"{spec.tolerance.draws:.0f}, seed {spec.tolerance.seed:.0f}, {spec.tolerance.sampling}"
+        for index, entry in enumerate(spec.tolerance.parts):
+            texts[f"tolerance {index}"] = _tolerance_text(entry)
     return texts | {f"axis {axis.path}": ", ".join(axis.labels) for axis in sweep.axes}
 
 

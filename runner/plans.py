@@ -36,8 +36,9 @@ class Plan(Protocol):
 
 @dataclass(frozen=True)
 class BatchPlan:
-    """A batch not yet worked out: a structure, its deck, and the rows of it."""
+    """A batch of nominal cases, not yet worked out: their numbers, a structure, its deck, and the rows of it."""
 
+    case: npt.NDArray[np.int64]
     position: npt.NDArray[np.int64]
     structure: Structure
     deck: Deck
@@ -71,7 +72,8 @@ def plan_batches(sweep: Sweep, stride: int = 1) -> list[BatchPlan]:
             deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
             for start in range(0, len(structure.rows), BATCH_CASES):
                 rows = structure.rows[start : start + BATCH_CASES]
-                plans.append(BatchPlan((block.case[rows] - 1) * stride, structure, deck, rows))
+                case = block.case[rows]
+                plans.append(BatchPlan(case, (case - 1) * stride, structure, deck, rows))
     return sorted(plans, key=lambda plan: int(plan.position[0]))
 
 

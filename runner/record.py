@@ -71,11 +71,12 @@ def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float
         "opamps": {name: spec.candidates[name].model_dump(exclude_none=True) for name in used},
         "axes": {axis.path: list(axis.labels) for axis in sweep.axes},
         "versions": versions(results.engine),
-        "seed": None,
+        "seed": int(spec.tolerance.seed) if spec.tolerance else None,
         "started": started.isoformat(timespec="seconds"),
         "seconds": round(seconds, 3),
         "counts": {
             "cases": sweep.count,
+            "draws": results.boards.draws if results.boards else 0,
             "failed": failed,
             "frequencies": len(spec.frequency.frequency_hz),
         },

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
+from contextlib import ExitStack
 from dataclasses import dataclass
-from pathlib import Path
 
 import numpy as np
 import numpy.typing as npt
@@ -12,8 +12,10 @@ import pandas as pd
 
 from modepair.reports import ModePair, figures
 from modepair.runner.batches import Solved
+from modepair.runner.boards import Boards
 from modepair.runner.collecting import in_order
 from modepair.runner.curves import CurvesWriter
+from modepair.runner.folder import RunFolder
 from modepair.sweeps import Sweep
 
 __all__ = ["Progress", "Results", "collect"]
@@ -38,12 +40,15 @@ class Results:
         Their case numbers.
     engine : str
         Version of ngspice.
+    boards : Boards or None
+        What the draws came to; none where nothing was drawn.
     """
 
     cases: pd.DataFrame
     kept: ModePair | None
     kept_case: npt.NDArray[np.int64]
     engine: str
+    boards: Boards | None = None
 
 
 class _Keeper:
@@ -78,30 +83,40 @@ def collect(
     solved: Iterable[Solved],
     sweep: Sweep,
     frequency_hz: npt.NDArray[np.float64],
-    curves: Path,
+    folder: RunFolder,
     progress: Progress | None = None,
+    *,
+    draws: int = 0,
+    only_draw: int = 0,
 ) -> Results:
     """Write curves and gather figures while results come in.
 
     Parameters
     ----------
     solved : iterable of Solved
-        Batches of a nominal sweep: position p is case p + 1.
+        Batches; draw d of case c has the place (c - 1)(draws + 1) + d, where 0 is the nominal run.
     sweep : Sweep
         The sweep.
     frequency_hz : ndarray, shape (F,)
         The solved frequencies.
-    curves : Path
-        The curves file to write.
+    folder : RunFolder
+        Gets `curves.parquet`, and with draws `quantiles.parquet`.
     progress : callable, optional
         Called with the number of results so far and of all.
+    draws : int
+        Draws of each case.
+    only_draw : int
+        Number of the draw that stands in for the nominal run.
 
     Returns
     -------
     Results
-        Memory grows with the table of cases only, not with their curves.
+        Memory grows with the table of cases only, not with curves or draws.
     """
-    spots = sweep.spec.frequency.spots
+    spec = sweep.spec
+    stride = draws + 1
+    total = sweep.count * stride
+    keep_all = spec.tolerance is not None and spec.tolerance.keep == "curves"
     keeper = _Keeper(sweep.count)
     tables: list[pd.DataFrame] = []
     engine = ""
@@ -113,31 +128,54 @@ def collect(
             engine = engine or batch.engine
             done += len(batch.position)
             if progress:
-                progress(done, sweep.count)
+                progress(done, total)
             yield batch
 
-    with CurvesWriter(curves) as writer:
-        for chunk in in_order(counted(solved), sweep.count):
-            case = chunk.position + 1
+    with ExitStack() as stack:
+        writer = stack.enter_context(CurvesWriter(folder.path("curves.parquet")))
+        boards = stack.enter_context(Boards(sweep, frequency_hz, folder, draws)) if draws else None
+        for chunk in in_order(counted(solved), total):
+            case, draw = chunk.position // stride + 1, chunk.position % stride
             good = np.array([position not in chunk.failures for position in chunk.position.tolist()])
-            table = pd.DataFrame({"case": case})
-            if good.any():
-                gains = chunk.gains[good]
-                pair = ModePair(frequency_hz, gains[:, 0], gains[:, 1])
-                writer.add(case[good], np.zeros(int(good.sum()), np.int64), pair)
-                found = figures(pair, spots)
-                keeper.take(case[good], gains, found["cmrr_db_lowest"])
-                table = table.join(found.set_axis(np.flatnonzero(good)))
-            table["state"] = [
-                f"failed: {chunk.failures[place]}" if place in chunk.failures else "done"
-                for place in chunk.position.tolist()
-            ]
-            tables.append(table)
-    cases = pd.concat(tables, ignore_index=True)
+            nominal = draw == 0
+            written = good & (nominal | keep_all)
+            if written.any():
+                writer.add(case[written], draw[written] + only_draw, _pair(frequency_hz, chunk.gains[written]))
+            if nominal.any():
+                reasons = {int(case[i]): chunk.failures[int(chunk.position[i])] for i in np.flatnonzero(nominal & ~good)}
+                tables.append(_nominal_rows(case[nominal], chunk.gains[nominal], reasons, frequency_hz, spec.frequency.spots, keeper))
+            if boards is not None:
+                boards.add(case[~nominal], draw[~nominal], chunk.gains[~nominal], good[~nominal], chunk)
+        cases = pd.concat(tables, ignore_index=True)
+        if boards is not None:
+            cases = boards.joined(cases)
     if "above_floor" in cases:
         cases["above_floor"] = cases["above_floor"].fillna("")
     cases = sweep.frame().merge(cases, on="case", validate="one_to_one")
     kept = keeper.kept()
     if kept is None:
-        return Results(cases, None, np.empty(0, np.int64), engine)
-    return Results(cases, ModePair(frequency_hz, kept[1][:, 0], kept[1][:, 1]), kept[0], engine)
+        return Results(cases, None, np.empty(0, np.int64), engine, boards)
+    return Results(cases, _pair(frequency_hz, kept[1]), kept[0], engine, boards)
+
+
+def _pair(frequency_hz: npt.NDArray[np.float64], gains: npt.NDArray[np.complex128]) -> ModePair:
+    return ModePair(frequency_hz, gains[:, 0], gains[:, 1])
+
+
+def _nominal_rows(
+    case: npt.NDArray[np.int64],
+    gains: npt.NDArray[np.complex128],
+    reasons: dict[int, str],
+    frequency_hz: npt.NDArray[np.float64],
+    spots_hz: tuple[float, ...],
+    keeper: _Keeper,
+) -> pd.DataFrame:
+    """Rows of the table of cases, with figures for those that did not fail."""
+    table = pd.DataFrame({"case": case})
+    good = np.array([number not in reasons for number in case.tolist()])
+    if good.any():
+        found = figures(_pair(frequency_hz, gains[good]), spots_hz)
+        keeper.take(case[good], gains[good], found["cmrr_db_lowest"])
+        table = table.join(found.set_axis(np.flatnonzero(good)))
+    table["state"] = [f"failed: {reasons[number]}" if number in reasons else "done" for number in case.tolist()]
+    return table

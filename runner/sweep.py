@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import os
 import time
+from collections.abc import Iterator
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from functools import cached_property
+from heapq import merge
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -15,7 +17,7 @@ from modepair.runner.analyses import plan_analyses
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
-from modepair.sweeps import Spec, expand, load_spec
+from modepair.sweeps import Spec, Streams, expand, load_spec
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -63,6 +65,7 @@ def run(
     jobs: int | None = None,
     progress: Progress | None = None,
     executors: ExecutorFactory | None = None,
+    draw: int | None = None,
 ) -> Run:
     """Run a sweep and write its run folder.
 
@@ -78,6 +81,9 @@ def run(
         Called with the number of results so far and of all.
     executors : callable, optional
         Makes a `concurrent.futures.Executor` of so many workers, in place of local processes.
+    draw : int, optional
+        Run that one of the spec's draws alone, in place of nominal parts and all draws; the run folder is then
+        `runs/<name>-draw-<draw>` where `output` is absent.
 
     Returns
     -------
@@ -92,15 +98,23 @@ def run(
         If there is no ngspice library.
     OutputError
         If the run folder cannot be written.
+    ValueError
+        If the spec has no such draw.
     """
     started = datetime.now(UTC)
     clock = time.perf_counter()
     if not isinstance(spec, Spec):
         spec = load_spec(spec, candidates())
     locate_library()
-    sweep = expand(spec)
-    target = Path(output) if output is not None else Path("runs") / Path(spec.path).stem
-    workers = min(jobs or os.cpu_count() or 1, sweep.count)
+    nominal = sweep = expand(spec)
+    name = Path(spec.path).stem
+    if draw is not None:
+        from modepair.runner.redraw import board_sweep, board_table
+
+        sweep, name = board_sweep(nominal, draw), f"{name}-draw-{draw}"
+    draws = int(spec.tolerance.draws) if spec.tolerance and draw is None else 0
+    target = Path(output) if output is not None else Path("runs") / name
+    workers = min(jobs or os.cpu_count() or 1, sweep.count * (draws + 1))
     with (
         run_folder(target) as folder,
         worker_pool() as local,
@@ -110,15 +124,21 @@ def run(
         # What follows takes a second to import, in which the workers start.
         from modepair.runner.decks import write_decks
         from modepair.runner.pages import write_pages
-        from modepair.runner.plans import plan_batches
+        from modepair.runner.plans import Plan, plan_batches, plan_draws
         from modepair.runner.record import provenance, run_record
         from modepair.runner.results import collect
 
         analyses = plan_analyses(spec.frequency)
-        plans = plan_batches(sweep)
-        solved = solver.solve((plan.batch() for plan in plans), analyses)
-        results = collect(solved, sweep, analyses.frequency_hz, folder.path("curves.parquet"), progress)
+        plans = plan_batches(sweep, draws + 1)
+        drawn = plan_draws(sweep, Streams(spec.tolerance)) if spec.tolerance and draws else ()
+        ordered: Iterator[Plan] = merge(plans, drawn, key=lambda plan: int(plan.position[0]))
+        solved = solver.solve((plan.batch() for plan in ordered), analyses)
+        results = collect(
+            solved, sweep, analyses.frequency_hz, folder, progress, draws=draws, only_draw=draw or 0
+        )
         results.cases.to_csv(folder.path("cases.csv"), index=False)
+        if draw is not None:
+            board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
         write_pages(folder, sweep, results, provenance(spec, results.engine, started))
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))

@@ -5,7 +5,7 @@ from __future__ import annotations
 import json
 import sys
 from pathlib import Path
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
@@ -18,12 +18,20 @@ if TYPE_CHECKING:
 __all__ = ["run_command"]
 
 
-def run_command(spec: SpecFile, output: Folder = None, jobs: Jobs = None, as_json: AsJson = False) -> None:
+def run_command(
+    spec: SpecFile,
+    output: Folder = None,
+    jobs: Jobs = None,
+    as_json: AsJson = False,
+    draw: Annotated[
+        int | None, typer.Option("--draw", min=1, metavar="N", help="Run that one of the drawn boards alone.")
+    ] = None,
+) -> None:
     """Run a sweep: curves, figures, plots and decks go to a run folder."""
     from modepair.runner.sweep import run
 
     with progress_bar() as progress:
-        result = run(spec, output, jobs=jobs, progress=progress)
+        result = run(spec, output, jobs=jobs, progress=progress, draw=draw)
     if as_json:
         print(_as_json(result))
     else:

@@ -1,0 +1,76 @@
+"""One board again: a draw by its number, as a sweep of its own."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+import pandas as pd
+
+from modepair.runner.plans import drawn_case
+from modepair.sweeps import Block, Streams, Sweep, boards
+
+__all__ = ["board_sweep", "board_table"]
+
+
+def board_sweep(sweep: Sweep, draw: int) -> Sweep:
+    """Put one draw in the place of the nominal parts of every case.
+
+    Parameters
+    ----------
+    sweep : Sweep
+        The expanded spec, with a tolerance section.
+    draw : int
+        Number of the draw, from 1.
+
+    Returns
+    -------
+    Sweep
+        The same cases with that draw's part values.
+
+    Raises
+    ------
+    ValueError
+        If the spec has no tolerances or no such draw.
+    """
+    tolerance = sweep.spec.tolerance
+    if tolerance is None:
+        raise ValueError("the spec has no tolerance section, so it has no draws")
+    if not 1 <= draw <= tolerance.draws:
+        raise ValueError(f"draw must be 1 to {tolerance.draws:.0f}, not {draw}")
+    streams = Streams(tolerance)
+    blocks = []
+    for block in sweep.blocks:
+        rows = []
+        for case in block.case.tolist():
+            drawn = drawn_case(sweep, case)
+            rows.append(boards(drawn.parts, drawn.causes, streams.errors(drawn.causes, draw - 1, draw)))
+        parts = {
+            name: np.array([float(np.ravel(row[name])[0]) if name in row else 0.0 for row in rows])
+            for name in dict.fromkeys(name for row in rows for name in row)
+        }
+        blocks.append(Block(block.topology, block.opamps, block.case, dict(parts), block.tolerances))
+    return replace(sweep, blocks=tuple(blocks))
+
+
+def board_table(sweep: Sweep, board: Sweep) -> pd.DataFrame:
+    """List the part values of a board beside the nominal ones.
+
+    Parameters
+    ----------
+    sweep, board : Sweep
+        The nominal sweep, and what `board_sweep` made of it.
+
+    Returns
+    -------
+    DataFrame
+        A row per case and part that differs: `case`, `part`, `nominal`, `board` (SI units; a CMRR is the signed
+        ratio).
+    """
+    rows = []
+    for case in range(1, sweep.count + 1):
+        nominal, drawn = drawn_case(sweep, case).parts, drawn_case(board, case).parts
+        for name, value in drawn.items():
+            if value != nominal.get(name):
+                rows.append({"case": case, "part": name, "nominal": nominal.get(name), "board": value})
+    return pd.DataFrame(rows, columns=["case", "part", "nominal", "board"])
