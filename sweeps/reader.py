@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -12,7 +12,7 @@ from pydantic.fields import FieldInfo
 from modepair.sweeps.axes import Axis, read_axis, settings
 from modepair.sweeps.cases import expand, gain_faults
 from modepair.sweeps.coherence import Coherence, candidate_faults
-from modepair.sweeps.document import Document, Location, read_document
+from modepair.sweeps.document import Document, Location, parse_document, read_document
 from modepair.sweeps.faults import (
     LONGEST_PATH,
     Fault,
@@ -24,8 +24,9 @@ from modepair.sweeps.faults import (
 )
 from modepair.sweeps.interference import interference_faults
 from modepair.sweeps.limits import limit_faults
+from modepair.sweeps.measured import Measurement, measured_faults, read_measurements
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
-from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp, UnknownKeyError
+from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Leaf, Opamp, UnknownKeyError
 from modepair.sweeps.spec import CandidateFile, Spec
 from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults
 from modepair.sweeps.words import listed, suggestion
@@ -57,16 +58,59 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     Raises
     ------
     SpecError
-        With every fault of the spec and of its candidate files, in file order.
+        With every fault of the spec and of its candidate files, in file order; where there is none, with
+        every fault of its measurements' files.
     """
     document = read_document(path)
     from_files, nested = _read_files(document)
+    spec, known = _read_spec(document, candidates, from_files, nested)
+    return spec.with_measurements(read_measurements(document, spec.measured, spec.axes, known))
+
+
+def restore_spec(
+    text: str, file: str, candidates: Mapping[str, Opamp], measurements: Iterable[Measurement] = ()
+) -> Spec:
+    """Read a spec that was kept as text, without the files that it names.
+
+    Parameters
+    ----------
+    text
+        The spec's text.
+    file
+        Its file's name, for messages.
+    candidates
+        Every op-amp candidate that it uses, those of its `opamp_files` among them.
+    measurements
+        Its measurements, as they were read when it was kept.
+
+    Returns
+    -------
+    Spec
+        As `load_spec` returned it then.
+
+    Raises
+    ------
+    SpecError
+        With every fault of the text, in file order.
+    """
+    spec, _ = _read_spec(parse_document(text, file), candidates, {}, {})
+    return spec.with_measurements(tuple(measurements))
+
+
+def _read_spec(
+    document: Document,
+    candidates: Mapping[str, Opamp],
+    from_files: Mapping[str, Opamp],
+    nested: Mapping[Location, tuple[Fault, ...]],
+) -> tuple[Spec, dict[str, Leaf]]:
+    """Read a spec but for its measurements; return also what each setting takes."""
     raw: dict[str, Any] = document.root.raw  # type: ignore[assignment]
     in_place = raw.get("opamps")
     written = [*candidates, *from_files, *(in_place if isinstance(in_place, dict) else ())]
     names = [name for name in dict.fromkeys(written) if OPAMP_NAME.pattern.fullmatch(name)]
     faults = list(document.faults)
-    axes, axis_faults = _read_axes(document, raw.get("vary", {}), settings(names))
+    known = settings(names)
+    axes, axis_faults = _read_axes(document, raw.get("vary", {}), known)
     faults += [fault for fault in axis_faults if not nested or not fault.key.startswith("vary.opamps.")]
     if isinstance(raw.get("vary"), dict):
         _fill(raw, axes)
@@ -81,6 +125,7 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     faults += tolerance_faults(document, [topology.name for topology in coherence.topologies], coherence.axes)
     faults += limit_faults(document)
     faults += interference_faults(document)
+    faults += measured_faults(document, axes, known)
     ordered = _in_order(document, faults, nested)
     if ordered:
         raise SpecError(ordered)
@@ -96,7 +141,7 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     faults.sort(key=lambda fault: (fault.line, fault.column))
     if faults:
         raise SpecError(faults)
-    return bound
+    return bound, known
 
 
 def read_candidates(path: str | Path) -> dict[str, Opamp]:

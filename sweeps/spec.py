@@ -14,6 +14,7 @@ from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.interference import Interference
 from modepair.sweeps.limits import Limits
+from modepair.sweeps.measured import Measured, Measurement
 from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
     CAUTION,
@@ -120,6 +121,8 @@ class Spec(Section):
         The common-mode voltage whose errors are worked out; None: none.
     limits
         What every case must keep; None: nothing is judged.
+    measured
+        Measurements of the circuit, to be laid over its curves.
     tolerance
         What varies from board to board; None: nominal runs only.
     """
@@ -134,6 +137,7 @@ class Spec(Section):
     opamp_files: tuple[Annotated[str, Reads(FILE_NAME)], ...] = ()
     interference: Interference | None = None
     limits: Limits | None = None
+    measured: tuple[Measured, ...] = ()
     tolerance: Tolerance | None = None
 
     _document: Document = PrivateAttr(
@@ -141,6 +145,7 @@ class Spec(Section):
     )
     _candidates: dict[str, Opamp] = PrivateAttr(default_factory=dict)
     _axes: tuple[Axis, ...] = PrivateAttr(default=())
+    _measurements: tuple[Measurement, ...] = PrivateAttr(default=())
 
     def bind(self, document: Document, candidates: Mapping[str, Opamp], axes: tuple[Axis, ...]) -> Spec:
         """Return the spec with what the reader found besides it: its document, all candidates, its axes."""
@@ -176,6 +181,17 @@ class Spec(Section):
     def axes(self) -> tuple[Axis, ...]:
         """The axes in file order."""
         return self._axes
+
+    @property
+    def measurements(self) -> tuple[Measurement, ...]:
+        """The measurements, read from their files."""
+        return self._measurements
+
+    def with_measurements(self, measurements: tuple[Measurement, ...]) -> Spec:
+        """Return the spec with its measurements, which the reader found in their files."""
+        bound = self.model_copy()
+        bound._measurements = measurements
+        return bound
 
     @property
     def document(self) -> Document:
