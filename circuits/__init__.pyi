@@ -1,4 +1,5 @@
 from .deck import Deck as Deck
+from .imperfections import imperfections as imperfections
 from .library import candidates as candidates
 from .netlist import COPIES as COPIES
 from .netlist import netlist as netlist

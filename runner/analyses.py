@@ -13,7 +13,7 @@ if TYPE_CHECKING:
     from modepair.runner.engine import Engine
     from modepair.sweeps import Frequency
 
-__all__ = ["Analyses", "plan_analyses"]
+__all__ = ["Analyses", "plan_analyses", "spot_analyses"]
 
 Frequencies = npt.NDArray[np.float64]
 
@@ -98,3 +98,23 @@ def plan_analyses(frequency: Frequency) -> Analyses:
         command = f"ac lin {frequencies.size} {pair[0]!r} {pair[-1]!r}"
         commands.append((command, frequencies, np.array(places)))
     return Analyses(everything, tuple(commands))
+
+
+def spot_analyses(spots_hz: Sequence[float]) -> Analyses:
+    """Solve some frequencies and no others.
+
+    Parameters
+    ----------
+    spots_hz : sequence of float, length F
+        Frequencies in hertz, ascending.
+
+    Returns
+    -------
+    Analyses
+        One analysis for each.
+    """
+    commands = tuple(
+        (f"ac lin 1 {float(f)!r} {float(f)!r}", np.array([float(f)]), np.array([place]))
+        for place, f in enumerate(spots_hz)
+    )
+    return Analyses(np.array(spots_hz, dtype=np.float64), commands)
