@@ -32,7 +32,7 @@ __all__ = [
     "mask_margins",
 ]
 
-PASS, FAIL, UNDECIDED = "pass", "fail", "undecided"
+PASS, FAIL, UNDECIDED, NEW = "pass", "fail", "undecided", "new"
 
 VERDICT_COLUMNS = (
     "case", "quantity", "verdict", "margin_db", "margin_percent", "at_hz", "value", "limit", "unit", "bound",
