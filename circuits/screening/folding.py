@@ -331,9 +331,11 @@ class _Folding:
             raise function.body.refused(f"function {name} calls itself; write it out")
         if self.nesting > self.folder.limits.expression_depth:
             raise self.refused("functions call functions too deep; write them out")
-        given = {
+        given: dict[str, Node] = {
             argument: self.node(term) for argument, term in zip(function.arguments, arguments, strict=True)
         }
+        if self.laplace:
+            given.setdefault("s", Name("s"))
         inner = _Folding(
             self.folder,
             function.body,
