@@ -110,12 +110,8 @@ def opamp_elements(name: str, plus: str, minus: str, out: str, parts: Parts) -> 
             bypass = 0.5 * error * bandwidth / corner
             error = error * (1.0 - bandwidth / gain / corner)
         elements += [
-            Element(
-                f"G{name}p", "G", (g, GROUND, plus, GROUND), transconductance * (1 + 0.5 * error)
-            ),
-            Element(
-                f"G{name}n", "G", (g, GROUND, GROUND, minus), transconductance * (1 - 0.5 * error)
-            ),
+            Element(f"G{name}p", "G", (g, GROUND, plus, GROUND), transconductance * (1 + 0.5 * error)),
+            Element(f"G{name}n", "G", (g, GROUND, GROUND, minus), transconductance * (1 - 0.5 * error)),
         ]
     else:
         elements.append(Element(f"G{name}d", "G", (g, GROUND, plus, minus), transconductance))

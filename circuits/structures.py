@@ -60,9 +60,7 @@ class Structure:
         tuple of Element
             In the order of the netlist, with values of shape (j,).
         """
-        here = {
-            name: _taken(self.parts[name], rows) for name in self.parts if name in self.present
-        }
+        here = {name: _taken(self.parts[name], rows) for name in self.parts if name in self.present}
         if "RI" in here:
             here["RI"] = np.abs(here["RI"])
         network, plus, minus = source_elements(here, self.imbalanced_leg)

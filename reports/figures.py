@@ -11,6 +11,7 @@ from collections.abc import Sequence
 import numpy as np
 import numpy.typing as npt
 import pandas as pd
+
 from modepair.reports.pairs import BoolArray, FloatArray, ModePair
 from modepair.reports.readings import frequency_text
 

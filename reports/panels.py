@@ -14,6 +14,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.ticker import FixedFormatter, FixedLocator, MultipleLocator, NullFormatter
 from matplotlib.transforms import ScaledTranslation
+
 from modepair.reports.pairs import FloatArray
 from modepair.reports.readings import frequency_text
 

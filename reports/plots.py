@@ -13,6 +13,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
+
 from modepair.reports.axis_labels import case_texts, varying
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.pairs import FLOOR_VOLTS, BoolArray, FloatArray, ModePair

@@ -10,6 +10,7 @@ from functools import cache
 import numpy as np
 import pandas as pd
 from jinja2 import Environment, PackageLoader, StrictUndefined, Template
+
 from modepair.reports.axis_labels import AxisValues, axis_columns, case_texts, short_names, varying
 from modepair.reports.readings import decibel_text, frequency_text
 from modepair.reports.tables import MOST_ROWS, ROWS_OF_MANY, figure_columns

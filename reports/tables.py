@@ -8,13 +8,14 @@ from dataclasses import dataclass
 from typing import Literal, TextIO
 
 import pandas as pd
-from modepair.reports.axis_labels import AxisValues, axis_columns, short_names, varying
-from modepair.reports.figures import spot_column, spot_text
-from modepair.reports.readings import decibel_text, frequency_text, gain_text
 from rich.box import Box
 from rich.console import Console
 from rich.table import Table
 from rich.text import Text
+
+from modepair.reports.axis_labels import AxisValues, axis_columns, short_names, varying
+from modepair.reports.figures import spot_column, spot_text
+from modepair.reports.readings import decibel_text, frequency_text, gain_text
 
 PIPED_WIDTH = 200
 """Characters in a line where the output is not a terminal: enough for a dozen spots."""

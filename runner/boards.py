@@ -134,9 +134,7 @@ class Boards:
             if current is None:
                 current = self._current = CaseBoards(number)
             first = (number - 1) * (self.draws + 1)
-            current.reasons += [
-                f"draw {d}: {chunk.failures[first + d]}" for d in draw[here & ~good].tolist()
-            ]
+            current.reasons += [f"draw {d}: {chunk.failures[first + d]}" for d in draw[here & ~good].tolist()]
             solved = here & good
             if solved.any():
                 pair = ModePair(self.frequency_hz, gains[solved, 0], gains[solved, 1])
@@ -198,7 +196,9 @@ class Boards:
         column = int(self._columns[0]) if len(self._columns) else 0
         self.plotted.append(current)
         if len(self.plotted) > PLOTTED_CASES:
-            self.plotted.remove(max(self.plotted, key=lambda one: float(one.table["cmrr_db_p1"].iloc[column])))
+            self.plotted.remove(
+                max(self.plotted, key=lambda one: float(one.table["cmrr_db_p1"].iloc[column]))
+            )
 
     def joined(self, cases: pd.DataFrame) -> pd.DataFrame:
         """Add the boards' figures to the table of cases; a case with failed draws has failed.
@@ -217,7 +217,8 @@ class Boards:
         reasons, failed = rows.pop("first_reason"), rows.pop("failed_draws")
         merged = cases.merge(rows, on="case", how="left", validate="one_to_one")
         state = merged.pop("state")
-        for index in np.flatnonzero(failed.to_numpy() > 0):
-            if state.iloc[index] == "done":
-                state.iloc[index] = f"failed: {failed.iloc[index]} of {self.draws} draws, {reasons.iloc[index]}"
-        return merged.assign(state=state)
+        states = [
+            f"failed: {count} of {self.draws} draws, {reason}" if count and was == "done" else was
+            for was, count, reason in zip(state, failed, reasons, strict=True)
+        ]
+        return merged.assign(state=states)

@@ -118,9 +118,12 @@ class _Case:
         parts = boards(self.drawn.parts, self.drawn.causes, errors)
         values = {name: float(np.ravel(value)[0]) for name, value in parts.items()}
         if without:
-            # On a board with tolerances the balance that takes the imperfection away is the board's own errors' to spoil.
+            # What takes the imperfection away carries the error that the board has in that part.
             nominal = self.defects[without]
-            values |= {name: _carried(value, values.get(name), self.drawn.parts.get(name)) for name, value in nominal.items()}
+            values |= {
+                name: _carried(value, values.get(name), self.drawn.parts.get(name))
+                for name, value in nominal.items()
+            }
         return values
 
     def solve(self, rows: Sequence[Mapping[str, Value]], analyses: Analyses) -> ModePair:
@@ -174,7 +177,8 @@ def budget_case(
     rho = case.solve(rows, analyses).error_ratio
     centre, edges, without = rho[1], rho[2 : 2 + 2 * len(causes)], rho[2 + 2 * len(causes) :]
     tolerances = [
-        Contribution(cause.name, "tolerance", 0.5 * (edges[2 * i] - edges[2 * i + 1])) for i, cause in enumerate(causes)
+        Contribution(cause.name, "tolerance", 0.5 * (edges[2 * i] - edges[2 * i + 1]))
+        for i, cause in enumerate(causes)
     ]
     nominals = [Contribution(name, "nominal", centre - without[i]) for i, name in enumerate(defects)]
     columns = spot_indices(analyses.frequency_hz, spots_hz)

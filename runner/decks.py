@@ -6,8 +6,8 @@ from collections.abc import Iterable
 
 from modepair.circuits import standalone
 from modepair.runner.analyses import Analyses
-from modepair.runner.plans import BatchPlan
 from modepair.runner.folder import RunFolder
+from modepair.runner.plans import BatchPlan
 from modepair.sweeps import Sweep
 
 __all__ = ["case_deck", "structure_decks", "write_decks"]

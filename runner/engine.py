@@ -30,7 +30,11 @@ COMMAND_LENGTH = 1000
 COMMANDS_BEFORE_RELEASE = 400
 """ngspice keeps each command it is given, about a kilobyte a run, until told to let go."""
 
-HARMLESS = ("Note: can't find init file.", "Using SPARSE 1.3 as Direct Linear Solver", "Note: No compatibility mode")
+HARMLESS = (
+    "Note: can't find init file.",
+    "Using SPARSE 1.3 as Direct Linear Solver",
+    "Note: No compatibility mode",
+)
 """Starts of the lines that some versions print on their error stream at a good start or load."""
 
 FREQUENCY_MATCH = 1e-9
@@ -120,7 +124,9 @@ class Engine:
         complaints = self._complaints()
         loaded = any(line.startswith("Circuit:") for line in self._shared.stdout.splitlines())
         if complaints or not loaded:
-            raise SimulationError("the netlist was refused: " + ("; ".join(complaints) or "no circuit loaded"))
+            raise SimulationError(
+                "the netlist was refused: " + ("; ".join(complaints) or "no circuit loaded")
+            )
 
     def alter(self, commands: Sequence[str]) -> None:
         """Set element values of the loaded circuit.
@@ -179,9 +185,10 @@ class Engine:
         got, *columns = [self._vector(f"{name}.{vector}") for vector in ("frequency", *vectors)]
         self._command("destroy")
         self._holds_result = False
-        if got.shape != frequency_hz.shape or not (
-            np.abs(got.real - frequency_hz) <= FREQUENCY_MATCH * frequency_hz
-        ).all():
+        if (
+            got.shape != frequency_hz.shape
+            or not (np.abs(got.real - frequency_hz) <= FREQUENCY_MATCH * frequency_hz).all()
+        ):
             raise SimulationError(
                 f"the analysis came back with {got.size} frequencies that are not the "
                 f"{frequency_hz.size} asked for"
@@ -223,9 +230,10 @@ class Engine:
 
     def _said(self) -> str:
         """The error text of the last command, or its output where it printed the error there."""
-        return "; ".join(self._complaints() or [
-            line.strip() for line in self._shared.stdout.splitlines() if "error" in line.lower()
-        ])
+        return "; ".join(
+            self._complaints()
+            or [line.strip() for line in self._shared.stdout.splitlines() if "error" in line.lower()]
+        )
 
 
 @cache
@@ -249,4 +257,3 @@ def engine() -> Engine:
     if isinstance(started, EngineMissingError):
         raise started
     return started
-

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from modepair.sweeps.faults import ModepairError
 
-__all__ = ["EngineDeadError", "EngineMissingError", "OutputError", "SimulationError"]
+__all__ = ["EngineDeadError", "EngineMissingError", "OutputError", "ReadingError", "SimulationError"]
 
 
 class SimulationError(ModepairError, RuntimeError):
@@ -42,3 +42,7 @@ class EngineMissingError(ModepairError, RuntimeError):
 
 class OutputError(ModepairError, OSError):
     """A run folder could not be written."""
+
+
+class ReadingError(ModepairError, ValueError):
+    """A folder is not a run folder, or not a whole one."""

@@ -76,7 +76,9 @@ def asked(sweep: Sweep) -> dict[str, str]:
         f"{render(plan.start, 'Hz')} to {render(plan.stop, 'Hz')}, {plan.points_per_decade:g} points per decade"
     )
     if spec.tolerance:
-        texts["draws"] = f"{spec.tolerance.draws:.0f}, seed {spec.tolerance.seed:.0f}, {spec.tolerance.sampling}"
+        texts["draws"] = (
+            f"{spec.tolerance.draws:.0f}, seed {spec.tolerance.seed:.0f}, {spec.tolerance.sampling}"
+        )
         for index, entry in enumerate(spec.tolerance.parts):
             texts[f"tolerance {index}"] = _tolerance_text(entry)
     return texts | {f"axis {axis.path}": ", ".join(axis.labels) for axis in sweep.axes}

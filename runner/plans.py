@@ -28,7 +28,9 @@ VECTORS = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
 class Plan(Protocol):
     """A batch not yet worked out."""
 
-    position: npt.NDArray[np.int64]
+    @property
+    def position(self) -> npt.NDArray[np.int64]:
+        """Its results' places, ascending."""
 
     def batch(self) -> Batch:
         """Work out the element values."""
@@ -118,7 +120,10 @@ def drawn_case(sweep: Sweep, case: int) -> DrawnCase:
     row = int(np.searchsorted(block.case, case))
 
     def at_row(values: Mapping[str, float | npt.NDArray[np.float64]]) -> dict[str, float]:
-        return {name: float(value[row]) if isinstance(value, np.ndarray) else value for name, value in values.items()}
+        return {
+            name: float(value[row]) if isinstance(value, np.ndarray) else value
+            for name, value in values.items()
+        }
 
     parts = at_row(block.parts)
     tolerance = sweep.spec.tolerance

@@ -165,7 +165,10 @@ class BatchSolver:
                 yield self._alone(batch, analyses)
                 self._executor = self._factory(self._jobs)
                 waiting = deque(
-                    (other, kept if _is_solved(kept) else _submit(self._executor, solve_batch, other, analyses))
+                    (
+                        other,
+                        kept if _is_solved(kept) else _submit(self._executor, solve_batch, other, analyses),
+                    )
                     for other, kept in waiting
                 )
 
@@ -181,8 +184,7 @@ class BatchSolver:
             gains = np.full((1, 2, analyses.frequency_hz.size), np.nan, np.complex128)
             return Solved(batch.position, gains, {int(batch.position[0]): reason})
         halves = [
-            self._alone(half, analyses)
-            for half in (batch.part(0, count // 2), batch.part(count // 2, count))
+            self._alone(half, analyses) for half in (batch.part(0, count // 2), batch.part(count // 2, count))
         ]
         return Solved(
             batch.position,

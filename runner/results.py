@@ -62,7 +62,7 @@ class _Keeper:
     def take(
         self, case: npt.NDArray[np.int64], gains: npt.NDArray[np.complex128], lowest_db: pd.Series[float]
     ) -> None:
-        for index in np.flatnonzero((case - 1) % self.every == 0):
+        for index in np.flatnonzero((case - 1) % self.every == 0).tolist():
             self.gains[int(case[index])] = gains[index].copy()
         for name, sign in (("lowest", 1.0), ("highest", -1.0)):
             index = int((sign * lowest_db.to_numpy()).argmin())
@@ -71,12 +71,12 @@ class _Keeper:
                 self.extremes[name] = (rank, int(case[index]), gains[index].copy())
 
     def kept(self) -> tuple[npt.NDArray[np.int64], npt.NDArray[np.complex128]] | None:
-        for _, case, gains in self.extremes.values():
-            self.gains.setdefault(case, gains)
+        for _, number, gains in self.extremes.values():
+            self.gains.setdefault(number, gains)
         if not self.gains:
             return None
-        case = np.array(sorted(self.gains))
-        return case, np.stack([self.gains[number] for number in case.tolist()])
+        numbers = sorted(self.gains)
+        return np.array(numbers), np.stack([self.gains[number] for number in numbers])
 
 
 def collect(
@@ -140,10 +140,24 @@ def collect(
             nominal = draw == 0
             written = good & (nominal | keep_all)
             if written.any():
-                writer.add(case[written], draw[written] + only_draw, _pair(frequency_hz, chunk.gains[written]))
+                writer.add(
+                    case[written], draw[written] + only_draw, _pair(frequency_hz, chunk.gains[written])
+                )
             if nominal.any():
-                reasons = {int(case[i]): chunk.failures[int(chunk.position[i])] for i in np.flatnonzero(nominal & ~good)}
-                tables.append(_nominal_rows(case[nominal], chunk.gains[nominal], reasons, frequency_hz, spec.frequency.spots, keeper))
+                reasons = {
+                    int(case[i]): chunk.failures[int(chunk.position[i])]
+                    for i in np.flatnonzero(nominal & ~good)
+                }
+                tables.append(
+                    _nominal_rows(
+                        case[nominal],
+                        chunk.gains[nominal],
+                        reasons,
+                        frequency_hz,
+                        spec.frequency.spots,
+                        keeper,
+                    )
+                )
             if boards is not None:
                 boards.add(case[~nominal], draw[~nominal], chunk.gains[~nominal], good[~nominal], chunk)
         cases = pd.concat(tables, ignore_index=True)
@@ -177,5 +191,7 @@ def _nominal_rows(
         found = figures(_pair(frequency_hz, gains[good]), spots_hz)
         keeper.take(case[good], gains[good], found["cmrr_db_lowest"])
         table = table.join(found.set_axis(np.flatnonzero(good)))
-    table["state"] = [f"failed: {reasons[number]}" if number in reasons else "done" for number in case.tolist()]
+    table["state"] = [
+        f"failed: {reasons[number]}" if number in reasons else "done" for number in case.tolist()
+    ]
     return table

@@ -1,10 +1,10 @@
 from .axes import Axis as Axis
 from .cases import Block as Block
-from .cases import expand as expand
 from .cases import Sweep as Sweep
-from .draws import boards as boards
+from .cases import expand as expand
 from .draws import Streams as Streams
 from .draws import Variate as Variate
+from .draws import boards as boards
 from .draws import variates as variates
 from .faults import Fault as Fault
 from .faults import ModepairError as ModepairError
@@ -12,8 +12,8 @@ from .faults import RefusedError as RefusedError
 from .faults import SpecError as SpecError
 from .parts import OPAMP_PARAMETERS as OPAMP_PARAMETERS
 from .parts import PARTS as PARTS
-from .parts import resolve_parts as resolve_parts
 from .parts import TOPOLOGIES as TOPOLOGIES
+from .parts import resolve_parts as resolve_parts
 from .quantities import render as render
 from .reader import load_spec as load_spec
 from .reader import read_candidates as read_candidates
@@ -21,7 +21,7 @@ from .schema import Frequency as Frequency
 from .schema import Opamp as Opamp
 from .schema import Source as Source
 from .schema import Stage as Stage
-from .spec import json_schema as json_schema
 from .spec import Spec as Spec
+from .spec import json_schema as json_schema
 from .tolerances import Tolerance as Tolerance
 from .tolerances import ToleranceEntry as ToleranceEntry

@@ -10,12 +10,13 @@ from functools import cache
 from types import UnionType
 from typing import Any
 
+from pydantic import BaseModel
+
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.parts import OPAMP_PARAMETERS
 from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKeyError
 from modepair.sweeps.tolerances import ToleranceEntry
 from modepair.sweeps.words import suggestion
-from pydantic import BaseModel
 
 MOST_CASES = 200_000
 """Cases that the product of the axes may have."""
@@ -78,7 +79,9 @@ def _collect(annotation: Any, metadata: Iterable[Any], path: str, found: dict[st
 @cache
 def _fixed_settings() -> dict[str, Leaf]:
     entry = _leaves(ToleranceEntry, "tolerance.parts[]")
-    varied = {path: entry[path] for path in entry if path.rpartition(".")[2] in ("absolute", "matching", "least")}
+    varied = {
+        path: entry[path] for path in entry if path.rpartition(".")[2] in ("absolute", "matching", "least")
+    }
     return {**_leaves(Stage, "stage"), **_leaves(Source, "source"), **varied}
 
 

@@ -7,11 +7,12 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
+
 from modepair.sweeps.axes import Axis
 from modepair.sweeps.faults import Fault, RefusedError, SpecError
 from modepair.sweeps.parts import TOPOLOGIES, Value, gain_refusals, parts_for_gain, resolve_parts
 from modepair.sweeps.spec import Spec
-from numpy.typing import NDArray
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -206,7 +207,11 @@ def _resolved(
     for rows, absent in ((~without, ()), (without, ("RG",))):
         chosen = {name: _taken(value, rows) for name, value in parts.items() if name not in absent}
         yield Block(
-            topology, opamps, case[rows], chosen, {path: _taken(value, rows) for path, value in tolerances.items()}
+            topology,
+            opamps,
+            case[rows],
+            chosen,
+            {path: _taken(value, rows) for path, value in tolerances.items()},
         )
 
 

@@ -14,6 +14,7 @@ from pathlib import Path
 from typing import Any, NoReturn
 
 import yaml
+
 from modepair.sweeps.faults import Fault, SpecError, shown
 
 LARGEST_FILE = 1_000_000

@@ -58,7 +58,9 @@ class Variate:
     entry: int
 
 
-def variates(tolerance: Tolerance, values: Mapping[str, float], present: Sequence[str]) -> tuple[Variate, ...]:
+def variates(
+    tolerance: Tolerance, values: Mapping[str, float], present: Sequence[str]
+) -> tuple[Variate, ...]:
     """List what varies in one case.
 
     Parameters
@@ -85,14 +87,18 @@ def variates(tolerance: Tolerance, values: Mapping[str, float], present: Sequenc
             continue
         if matching is not None and absolute is not None and members:
             key = f"set of {entry.of[0]}"
-            found.append(Variate(f"{' '.join(members)} together", key, members, absolute, entry.law, False, index))
+            found.append(
+                Variate(f"{' '.join(members)} together", key, members, absolute, entry.law, False, index)
+            )
         own = absolute if matching is None else matching
         if own is not None:
             found += [Variate(name, name, (name,), own, entry.law, False, index) for name in members]
     return tuple(found)
 
 
-def boards(parts: Mapping[str, float], causes: Sequence[Variate], errors: Mapping[str, Floats]) -> dict[str, Value]:
+def boards(
+    parts: Mapping[str, float], causes: Sequence[Variate], errors: Mapping[str, Floats]
+) -> dict[str, Value]:
     """Work out the part values of boards.
 
     Parameters

@@ -114,6 +114,11 @@ class Measured(Section):
     case: Annotated[dict[str, str], Reads(ReadsCase())] = Field(default_factory=dict)
 
     @property
+    def title(self) -> str:
+        """What the measurement is called."""
+        return self.name or Path(self.file).name
+
+    @property
     def columns(self) -> tuple[str, ...]:
         """Names of the columns that are read."""
         gains = [gain for gain in (self.differential_gain, self.common_gain) if gain]
@@ -165,6 +170,7 @@ def measured_faults(document: Document, axes: Sequence[Axis], known: Mapping[str
         In no particular order.
     """
     node = document.node(("measured",))
+    titles: dict[str, int] = {}
     for index, item in enumerate((node.items or []) if node else []):
         if item.entries is None:
             continue
@@ -179,6 +185,12 @@ def measured_faults(document: Document, axes: Sequence[Axis], known: Mapping[str
             entry = item.entries.get(key)
             if entry is not None and entry.entries is not None and "column" not in entry.entries:
                 yield document.fault((*here, key), "column is missing; give the column's name", at_key=True)
+        written = {key: entry.text or "" for key, entry in item.entries.items()}
+        title = written.get("name", "").strip() or Path(written.get("file", "")).name
+        if title and title in titles:
+            message = f"{shown(title)} is the name of measured[{titles[title]}] too; give another name"
+            yield document.fault(here, message, at_key=True)
+        titles.setdefault(title, index)
         yield from _quantity_faults(document, here, set(item.entries))
         for path in (document.node((*here, "case")) or item).entries or {} if "case" in item.entries else ():
             yield from _case_faults(document, (*here, "case", path), path, axes, known)
@@ -327,8 +339,7 @@ def _measurement(
         raise SpecError(sorted(faults, key=lambda fault: (fault.line, fault.column)))
     by_path = {axis.path: axis for axis in axes}
     settings = {path: known[path].parse(text) for path, text in entry.case.items() if path in by_path}
-    name = entry.name or Path(entry.file).name
-    return Measurement(name, frequency_hz[order], cmrr_db[order], residual_db[order], settings)
+    return Measurement(entry.title, frequency_hz[order], cmrr_db[order], residual_db[order], settings)
 
 
 def _beyond(bench: BenchFile, column: str, level_db: NDArray[np.float64]) -> list[Fault]:

@@ -6,6 +6,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
+
 from modepair.sweeps.faults import RefusedError
 from modepair.sweeps.quantities import (
     ANGLE,
@@ -18,7 +20,6 @@ from modepair.sweeps.quantities import (
     Kind,
     render,
 )
-from numpy.typing import NDArray
 
 Value = float | NDArray[np.float64]
 """One SI value, or one per case: shape (n,)."""

@@ -13,8 +13,9 @@ from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import Any
 
-from modepair.sweeps.faults import RefusedError, form_of, shown
 from quantiphy import Quantity
+
+from modepair.sweeps.faults import RefusedError, form_of, shown
 
 _PREFIXES = "afpnu\u00b5\u03bcmkKMGTP"  # micro sign and Greek mu
 _OHM = ("\u03a9", "\u2126", "ohms", "ohm", "Ohm")  # Greek omega and ohm sign

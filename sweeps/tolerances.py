@@ -113,7 +113,9 @@ class Tolerance(Section):
     parts: tuple[ToleranceEntry, ...] = Field(min_length=1)
 
 
-def tolerance_faults(document: Document, topologies: Sequence[str], axes: Mapping[str, Any]) -> Iterator[Fault]:
+def tolerance_faults(
+    document: Document, topologies: Sequence[str], axes: Mapping[str, Any]
+) -> Iterator[Fault]:
     """Yield what the entries of a tolerance section do not agree on.
 
     Parameters
@@ -131,7 +133,9 @@ def tolerance_faults(document: Document, topologies: Sequence[str], axes: Mappin
     for index, item in enumerate(items):
         place = ("tolerance", "parts", index)
         keys = set(item.entries or {})
-        varied = {key for key in ("absolute", "matching", "least") if f"tolerance.parts[{index}].{key}" in axes}
+        varied = {
+            key for key in ("absolute", "matching", "least") if f"tolerance.parts[{index}].{key}" in axes
+        }
         try:
             entry = ToleranceEntry.model_validate(item.raw)
         except ValidationError:
@@ -142,7 +146,9 @@ def tolerance_faults(document: Document, topologies: Sequence[str], axes: Mappin
         for position, name in enumerate(names):
             at = (*place, "of", position)
             if topologies and not any(_has(topology, name) for topology in topologies):
-                yield document.fault(at, f"the {' and '.join(topologies)} stage has no {name}; {_known(topologies, name)}")
+                yield document.fault(
+                    at, f"the {' and '.join(topologies)} stage has no {name}; {_known(topologies, name)}"
+                )
             if name in seen:
                 yield document.fault(at, f"{name} has a tolerance already, at {seen[name]}; give it once")
             seen.setdefault(name, _where(document, at))
@@ -156,7 +162,9 @@ def tolerance_faults(document: Document, topologies: Sequence[str], axes: Mappin
             index = int(path.removeprefix("tolerance.parts[").partition("]")[0])
             if index >= len(items):
                 entries = f"its entries are 0 to {len(items) - 1}" if items else "it has no entries"
-                yield document.fault(("vary", path), f"the tolerance section has no parts[{index}]; {entries}", at_key=True)
+                yield document.fault(
+                    ("vary", path), f"the tolerance section has no parts[{index}]; {entries}", at_key=True
+                )
 
 
 def _where(document: Document, location: tuple[str | int, ...]) -> str:
@@ -184,12 +192,20 @@ def _cmrr_faults(
     cmrr = [name for name in names if name.endswith(".cmrr")]
     if cmrr and len(cmrr) < len(names):
         other = next(name for name in names if name not in cmrr)
-        yield document.fault(place, f"{cmrr[0]} and {other} cannot share an entry; give CMRR an entry of its own, with least")
+        yield document.fault(
+            place, f"{cmrr[0]} and {other} cannot share an entry; give CMRR an entry of its own, with least"
+        )
     elif cmrr and given & {"absolute", "matching"}:
         key = "absolute" if "absolute" in given else "matching"
-        yield document.fault((*place, key), f"{cmrr[0]} takes least, such as 100 dB, in place of {key}", at_key=True)
+        yield document.fault(
+            (*place, key), f"{cmrr[0]} takes least, such as 100 dB, in place of {key}", at_key=True
+        )
     elif names and not cmrr and "least" in given:
-        yield document.fault((*place, "least"), f"{names[0]} takes absolute, such as 0.1 %; least is for op-amps' cmrr", at_key=True)
+        yield document.fault(
+            (*place, "least"),
+            f"{names[0]} takes absolute, such as 0.1 %; least is for op-amps' cmrr",
+            at_key=True,
+        )
 
 
 def _matching_faults(
@@ -199,17 +215,27 @@ def _matching_faults(
         return
     at = (*place, "matching")
     if len(entry.of) == 1:
-        yield document.fault(at, f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts", at_key=True)
+        yield document.fault(
+            at,
+            f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts",
+            at_key=True,
+        )
     units = {OPAMP_PARAMETERS[n.partition(".")[2]].unit if "." in n else PARTS[n].kind.unit for n in entry.of}
     if len(units) > 1:
-        yield document.fault(place, "parts of different kinds cannot form a matched set; give each kind an entry of its own")
+        yield document.fault(
+            place, "parts of different kinds cannot form a matched set; give each kind an entry of its own"
+        )
     if entry.absolute is not None and entry.matching is not None and entry.matching > entry.absolute:
         text = document.node(at)
         written = shown(text.text or "") if text else "matching"
-        yield document.fault(at, f"{written} is wider than absolute; parts of a set match at least as well as absolute says")
+        yield document.fault(
+            at, f"{written} is wider than absolute; parts of a set match at least as well as absolute says"
+        )
 
 
-def unvaried_faults(document: Document, tolerance: Tolerance, valued: set[str], results: int) -> Iterator[Fault]:
+def unvaried_faults(
+    document: Document, tolerance: Tolerance, valued: set[str], results: int
+) -> Iterator[Fault]:
     """Yield the parts of a tolerance section that have no value in any case, and a product that is too large.
 
     Parameters
@@ -227,7 +253,13 @@ def unvaried_faults(document: Document, tolerance: Tolerance, valued: set[str], 
         for position, name in enumerate(entry.of):
             if name not in valued and not name.endswith(".cmrr"):
                 at = ("tolerance", "parts", index, "of", position)
-                yield document.fault(at, f"{name} has no value in any case, so it cannot vary; give it one, or take it out here")
+                yield document.fault(
+                    at,
+                    f"{name} has no value in any case, so it cannot vary; give it one, or take it out here",
+                )
     if results > MOST_RESULTS:
-        message = f"the cases make {results:,} draws together; at most {MOST_RESULTS:,} are taken, so draw less or shorten an axis"
+        message = (
+            f"the cases make {results:,} draws together; at most {MOST_RESULTS:,} are taken, so draw less or "
+            "shorten an axis"
+        )
         yield document.fault(("tolerance", "draws"), message)

@@ -37,7 +37,7 @@ def solve_drives(
 ) -> Complex:
     """Output for any two generator amplitudes."""
     (structure,) = structures(topology, dict(parts), 1)
-    drives: dict[str, tuple[float, float]] = {copy: (plus, minus) for copy in COPIES}
+    drives: dict[str, tuple[float, float]] = dict.fromkeys(COPIES, (plus, minus))
     return _solve(netlist(structure.elements(np.array([0])), drives=drives), frequency_hz)[0]
 
 

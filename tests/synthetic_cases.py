@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
+
 from modepair.reports import ModePair, figures
 
 SPOTS_HZ = (50.0, 60.0, 1e3, 1e4)

@@ -5,12 +5,12 @@ Random stages of all four topologies with every non-ideality at once.
 
 import numpy as np
 import pytest
+
 from modepair.circuits import COPIES, OUTPUT, structures
 from modepair.reports import ModePair
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.engine import engine
 from modepair.sweeps import Frequency
-
 from tests.dense import solve_dense
 from tests.random_stages import TOPOLOGIES, random_parts
 from tests.solving import solve

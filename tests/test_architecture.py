@@ -15,7 +15,12 @@ MAY_IMPORT = {
     "runner": {"sweeps", "circuits", "reports"},
     "reports": {"sweeps"},
 }
-MODULES = [path for room in MAY_IMPORT for path in sorted((ROOT / room).rglob("*.py*")) if path.suffix in {".py", ".pyi"}]
+MODULES = [
+    path
+    for room in MAY_IMPORT
+    for path in sorted((ROOT / room).rglob("*.py*"))
+    if path.suffix in {".py", ".pyi"}
+]
 
 
 def imported(path: Path) -> Iterator[str]:

@@ -5,9 +5,9 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+
 from modepair.circuits import candidates
 from modepair.sweeps import OPAMP_PARAMETERS, Opamp
-
 from tests.dense import solve_dense
 
 FILE = Path(__file__).parent.parent / "circuits" / "candidates.yaml"

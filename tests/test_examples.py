@@ -6,6 +6,7 @@ from pathlib import Path
 import pandas as pd
 import pytest
 import yaml
+
 from modepair.circuits import candidates
 from modepair.reports import cautions
 from modepair.runner import run

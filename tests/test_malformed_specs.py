@@ -12,6 +12,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 import pytest
+
 from modepair.sweeps import Spec, SpecError, load_spec
 from modepair.sweeps.words import listed
 

@@ -2,8 +2,8 @@
 
 import pandas as pd
 import pytest
-from modepair.reports.axis_labels import axis_columns, case_texts, short_names, varying
 
+from modepair.reports.axis_labels import axis_columns, case_texts, short_names, varying
 from tests.synthetic_cases import Axis
 
 CASES = pd.DataFrame(

@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 from matplotlib.lines import Line2D
+
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.panels import in_our_look, make_panels
 

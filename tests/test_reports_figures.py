@@ -4,6 +4,7 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+
 from modepair.reports.figures import HALF_POWER_DB, figures, spot_column, spot_indices, spot_text
 from modepair.reports.pairs import ModePair
 

@@ -3,8 +3,9 @@
 import subprocess
 import sys
 
-import modepair.reports
 import pytest
+
+import modepair.reports
 
 
 @pytest.mark.parametrize("name", modepair.reports.__all__)

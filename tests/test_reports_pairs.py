@@ -5,6 +5,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from hypothesis.extra import numpy as hnp
+
 from modepair.reports.pairs import FLOOR_VOLTS, ModePair
 
 F = np.array([1.0, 10.0, 100.0])

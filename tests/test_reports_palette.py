@@ -4,6 +4,7 @@ import itertools
 
 import numpy as np
 import pytest
+
 from modepair.reports.palette import DASHES, HUES, RAMP, SHADED_HUES, curve_styles, mix
 
 # Full protanopia and deuteranopia in linear RGB: Machado, Oliveira and Fernandes, 2009 (from memory).

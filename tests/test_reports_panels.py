@@ -2,6 +2,7 @@
 
 import numpy as np
 import pytest
+
 from modepair.reports.panels import frequency_axis, in_our_look, level_axis, make_panels
 
 

@@ -4,8 +4,9 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from modepair.reports.placement import spread
 from scipy.optimize import minimize
+
+from modepair.reports.placement import spread
 
 labels = st.lists(st.tuples(st.floats(0, 10), st.floats(0.05, 0.4)), min_size=1, max_size=20)
 

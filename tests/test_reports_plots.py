@@ -9,10 +9,10 @@ import pytest
 from matplotlib.figure import Figure
 from matplotlib.text import Text
 from matplotlib.transforms import Bbox
+
 from modepair.reports.axis_labels import axis_columns
 from modepair.reports.pairs import ModePair
 from modepair.reports.plots import MOST_CURVES, plot_cmrr, plot_gains, write_plot
-
 from tests.synthetic_cases import Made, one_pole_cases
 
 SIZES = [(1, 1), (2, 1), (4, 2), (4, 6), (3, 10), (4, 15)]

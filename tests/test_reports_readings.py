@@ -3,6 +3,7 @@
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from modepair.reports.readings import decibel_text, frequency_text, gain_text
 
 

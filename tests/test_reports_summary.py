@@ -6,8 +6,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 from markdown_it import MarkdownIt
-from modepair.reports.summary import CAUTIONS, Summary, cautions, escape_markdown, summary_text
 
+from modepair.reports.summary import CAUTIONS, Summary, cautions, escape_markdown, summary_text
 from tests.synthetic_cases import BAND_HZ, SPOTS_HZ, fail, one_pole_cases
 
 MADE = one_pole_cases(2, 2, perfect=(3,))

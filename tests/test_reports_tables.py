@@ -6,6 +6,8 @@ import re
 import numpy as np
 import pandas as pd
 import pytest
+from rich.console import Console
+
 from modepair.reports.tables import (
     MOST_ROWS,
     PIPED_WIDTH,
@@ -14,8 +16,6 @@ from modepair.reports.tables import (
     figure_columns,
     print_cases,
 )
-from rich.console import Console
-
 from tests.synthetic_cases import BAND_HZ, SPOTS_HZ, Made, fail, one_pole_cases
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import multiprocessing
-from collections.abc import Iterator
 from concurrent.futures import ProcessPoolExecutor
 from pathlib import Path
 
@@ -70,11 +69,9 @@ def test_a_broken_circuit_after_a_good_one_fails_and_the_next_is_right(simulator
 def test_a_failed_load_leaves_no_older_circuit_to_simulate(simulator: Engine) -> None:
     solve(simulator, GOOD)
     with pytest.raises(SimulationError, match="refused|unknown|nothere|loaded"):
-        simulator.load(GOOD + "X1 in out nothere\n")
-        simulator.analyse(SWEEP, GRID, ["out"])
+        solve(simulator, GOOD + "X1 in out nothere\n")
     with pytest.raises(SimulationError, match="no vector|circuit|refused"):
-        simulator.load("")
-        simulator.analyse(SWEEP, GRID, ["out"])
+        solve(simulator, "")
 
 
 def test_a_result_at_other_frequencies_is_refused(simulator: Engine) -> None:
@@ -133,11 +130,6 @@ def test_no_library_is_said_plainly(monkeypatch: pytest.MonkeyPatch) -> None:
         locate_library()
 
 
-@pytest.fixture
-def library_variable(monkeypatch: pytest.MonkeyPatch) -> Iterator[None]:
+def test_a_named_library_is_taken(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setenv("NGSPICE_LIBRARY_PATH", str(Path("somewhere") / "libngspice.so"))
-    yield
-
-
-def test_a_named_library_is_taken(library_variable: None) -> None:
     assert locate_library() == str(Path("somewhere") / "libngspice.so")

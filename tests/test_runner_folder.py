@@ -27,9 +27,13 @@ def test_it_appears_when_published(tmp_path: Path) -> None:
 
 
 def test_nothing_is_left_of_one_that_fails(tmp_path: Path) -> None:
-    with pytest.raises(RuntimeError, match="half-way"), run_folder(tmp_path / "one") as folder:
-        folder.write_text("summary.md", "text")
-        raise RuntimeError("half-way")
+    def fail() -> None:
+        with run_folder(tmp_path / "one") as folder:
+            folder.write_text("summary.md", "text")
+            raise RuntimeError("half-way")
+
+    with pytest.raises(RuntimeError, match="half-way"):
+        fail()
     assert names(tmp_path) == []
 
 

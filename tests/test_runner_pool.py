@@ -70,7 +70,12 @@ def batches(size: int = 4) -> list[Batch]:
     deck = structure.deck()
     vectors = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
     return [
-        Batch(structure.rows[start : start + size], deck, structure.values(structure.rows[start : start + size]), vectors)
+        Batch(
+            structure.rows[start : start + size],
+            deck,
+            structure.values(structure.rows[start : start + size]),
+            vectors,
+        )
         for start in range(0, 24, size)
     ]
 
@@ -80,7 +85,9 @@ def gathered(solved: list[Solved]) -> tuple[np.ndarray, dict[int, str]]:
     return np.concatenate([part.gains for part in solved]), reasons
 
 
-def test_results_come_in_order_whatever_the_number_of_workers(factory: ExecutorFactory, analyses: Analyses) -> None:
+def test_results_come_in_order_whatever_the_number_of_workers(
+    factory: ExecutorFactory, analyses: Analyses
+) -> None:
     found = []
     for jobs in (1, 2):
         with BatchSolver(factory, jobs) as solver:

@@ -80,9 +80,12 @@ def test_curves_are_sorted_complete_and_hold_the_spots_exactly(result: Run) -> N
     assert curves.equals(curves.sort_values(["case", "draw", "frequency_hz"]))
     assert (curves["draw"] == 0).all()
     frequencies = curves[curves["case"] == 7]["frequency_hz"].to_numpy()
-    assert len(frequencies) == 31 + 3 and {50.0, 60.0, 440.0, 1000.0} <= set(frequencies)
+    assert len(frequencies) == 31 + 3
+    assert {50.0, 60.0, 440.0, 1000.0} <= set(frequencies)
     assert len(curves) == 12 * 34
-    rho = np.abs((curves.common_re + 1j * curves.common_im) / (curves.differential_re + 1j * curves.differential_im))
+    rho = np.abs(
+        (curves.common_re + 1j * curves.common_im) / (curves.differential_re + 1j * curves.differential_im)
+    )
     np.testing.assert_allclose(curves["cmrr_db"], -20 * np.log10(rho), rtol=1e-12)
 
 
@@ -95,12 +98,23 @@ def test_a_case_agrees_with_the_dense_solver(result: Run) -> None:
     """Case 9: the poor op-amps, 10 ohm in the plus leg, gain 11; to 1e-5 dB, the round-off of the two solves."""
     parts = {"RF1": 1e4, "RF2": 1e4, "R1": 1e4, "R2": 10010.0, "R3": 1e4, "R4": 1e4, "RREF": 0.5}
     parts["RG"] = 2e4 / (11 / 1.001 - 1)
-    parts |= {"RSP": 350.0, "RSN": 350.0, "RI": 10.0, "CCP": 3e-9, "CCN": 3e-9, "CCB": 1e-9, "RBP": 1e7, "RBN": 1e7}
+    parts |= {
+        "RSP": 350.0,
+        "RSN": 350.0,
+        "RI": 10.0,
+        "CCP": 3e-9,
+        "CCN": 3e-9,
+        "CCB": 1e-9,
+        "RBP": 1e7,
+        "RBN": 1e7,
+    }
     for name in ("A1", "A2", "A3"):
         parts |= {f"{name}.open_loop_gain": 1e5, f"{name}.gain_bandwidth": 1e6, f"{name}.cmrr": 1e4}
     parts["A2.gain_bandwidth"] = 7.6e6
     curve = result.curves[result.curves["case"] == 9]
-    expected = ModePair(curve["frequency_hz"].to_numpy(), *solve_dense("three-opamp", parts, curve["frequency_hz"].to_numpy()))
+    expected = ModePair(
+        curve["frequency_hz"].to_numpy(), *solve_dense("three-opamp", parts, curve["frequency_hz"].to_numpy())
+    )
     np.testing.assert_allclose(curve["cmrr_db"], expected.cmrr_db, atol=1e-5)
 
 
@@ -126,12 +140,16 @@ def test_a_deck_runs_stand_alone_to_the_same_curve(result: Run) -> None:
     deck = result.folder / "decks" / "three-opamp-2.cir"
     comment = deck.read_text(encoding="utf-8").splitlines()[1]
     assert comment == "* case 3: stage.opamp good, source.imbalance 10, stage.gain 11"
-    printed = subprocess.run(["ngspice", "-b", deck], capture_output=True, text=True, check=True, timeout=60).stdout
+    printed = subprocess.run(
+        ["ngspice", "-b", deck], capture_output=True, text=True, check=True, timeout=60
+    ).stdout
     values: dict[float, float] = {}
     for row in re.findall(r"^\d+\t([-+.e\d]+)\t([-+.e\d]+)\t?$", printed, re.MULTILINE):
         values[float(row[0])] = float(row[1])
     # A sweep of one frequency is printed without a table, behind the command that the deck echoes.
-    for frequency, rest in re.findall(r"^ac lin 1 (\S+) \S+$(.*?)(?=^ac|\Z)", printed, re.MULTILINE | re.DOTALL):
+    for frequency, rest in re.findall(
+        r"^ac lin 1 (\S+) \S+$(.*?)(?=^ac|\Z)", printed, re.MULTILINE | re.DOTALL
+    ):
         values[float(frequency)] = float(re.search(r"^cmrr_db = (\S+)$", rest, re.MULTILINE)[1])
     curve = result.curves[result.curves["case"] == 3].set_index("frequency_hz")["cmrr_db"]
     assert len(values) == len(curve) + 1  # 50 and 60 Hz are solved with one more half-way between them
@@ -176,9 +194,13 @@ def test_a_failed_case_is_a_row_with_its_reason_and_the_others_go_on(tmp_path: P
 
 
 def test_killed_in_the_middle_leaves_no_half_folder_and_the_next_run_works(tmp_path: Path) -> None:
-    axes = "".join(f"  stage.parts.R{n}: [{', '.join(f'10.00{k}k' for k in range(1, 7))}]\n" for n in range(1, 5))
+    axes = "".join(
+        f"  stage.parts.R{n}: [{', '.join(f'10.00{k}k' for k in range(1, 7))}]\n" for n in range(1, 5)
+    )
     text = SPEC.replace(SPEC[SPEC.index("vary:") : SPEC.index("opamps:")], f"vary:\n{axes}")
-    text = text.replace("R1: 10k, R2: 10.01k, R3: 10k, R4: 10k, ", "").replace("  gain: 101\n", "  opamp: good\n")
+    text = text.replace("R1: 10k, R2: 10.01k, R3: 10k, R4: 10k, ", "").replace(
+        "  gain: 101\n", "  opamp: good\n"
+    )
     text = text.replace("points_per_decade: 5", "points_per_decade: 40")
     (tmp_path / "long.yaml").write_text(text, encoding="utf-8")
     target = tmp_path / "runs" / "long"
@@ -194,8 +216,12 @@ def test_killed_in_the_middle_leaves_no_half_folder_and_the_next_run_works(tmp_p
     victim.send_signal(signal.SIGKILL)
     victim.wait()
     assert not target.exists()
-    (tmp_path / "long.yaml").write_text(text.replace(axes, axes.splitlines()[0] + "\n").replace(
-        "parts: {", "parts: {R2: 10k, R3: 10k, R4: 10k, "), encoding="utf-8")
+    (tmp_path / "long.yaml").write_text(
+        text.replace(axes, axes.splitlines()[0] + "\n").replace(
+            "parts: {", "parts: {R2: 10k, R3: 10k, R4: 10k, "
+        ),
+        encoding="utf-8",
+    )
     subprocess.run([*command, tmp_path / "long.yaml", target], check=True, timeout=120)
     assert sorted(os.listdir(target.parent)) == ["long"]
     assert len(pd.read_csv(target / "cases.csv")) == 6

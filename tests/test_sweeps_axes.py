@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import pytest
+from pydantic import BaseModel
+
 from modepair.sweeps.axes import Axis, _leaves, read_axis, setting_at, settings
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS
 from modepair.sweeps.quantities import RESISTANCE
 from modepair.sweeps.schema import FrequencyValue
-from pydantic import BaseModel
 
 KNOWN = settings(["quiet-bipolar"])
 

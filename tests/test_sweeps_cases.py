@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+
 from modepair.sweeps import Sweep, expand, load_spec
 from modepair.sweeps.parts import TOPOLOGIES
 

@@ -6,6 +6,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 import pytest
+
 from modepair.sweeps import Spec, SpecError, load_spec
 
 OPAMPS = """\

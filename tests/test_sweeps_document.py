@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from modepair.sweeps import Fault, SpecError
 from modepair.sweeps.document import (
     LARGEST_FILE,

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import pytest
+
 from modepair.sweeps import Fault, ModepairError, SpecError
 from modepair.sweeps.faults import SHOWN_FAULTS, RefusedError, SeveralRefusedError, form_of, shown
 

@@ -8,6 +8,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from modepair.sweeps import OPAMP_PARAMETERS, PARTS, TOPOLOGIES, RefusedError, resolve_parts
 from modepair.sweeps.parts import INSTANCES, SHORTHANDS, STAGE_PART_KINDS, Value, least_gain, parts_for_gain
 

@@ -8,6 +8,7 @@ import re
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
+
 from modepair.sweeps import quantities as q
 from modepair.sweeps.faults import RefusedError
 from modepair.sweeps.quantities import Kind, render

@@ -7,6 +7,7 @@ from pathlib import Path
 import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+
 from modepair.sweeps import Opamp, SpecError, expand, load_spec, read_candidates
 
 SPEC = """\

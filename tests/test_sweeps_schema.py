@@ -8,8 +8,9 @@ import numpy as np
 import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
-from modepair.sweeps import OPAMP_PARAMETERS, Frequency, Opamp, Source, Stage
 from pydantic import ValidationError
+
+from modepair.sweeps import OPAMP_PARAMETERS, Frequency, Opamp, Source, Stage
 
 
 def frequency(start: str, stop: str, points: str = "20", spots: tuple[str, ...] = ()) -> Frequency:

@@ -10,8 +10,9 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from modepair.sweeps import OPAMP_PARAMETERS, PARTS, Opamp, Spec, json_schema, load_spec
 from pydantic import ValidationError
+
+from modepair.sweeps import OPAMP_PARAMETERS, PARTS, Opamp, Spec, json_schema, load_spec
 
 TEXT = """\
 title: Silo weighing, bridge front end

@@ -32,7 +32,9 @@ def netlist_command(
 
     sweep = expand(load_spec(spec, candidates()))
     if case is not None and case > sweep.count:
-        raise typer.BadParameter(f"{case} is not a case; the spec has 1 to {sweep.count}", param_hint="--case")
+        raise typer.BadParameter(
+            f"{case} is not a case; the spec has 1 to {sweep.count}", param_hint="--case"
+        )
     plans, analyses = plan_batches(sweep), plan_analyses(sweep.spec.frequency)
     if output is None:
         sys.stdout.write(case_deck(sweep, plans, analyses, case or 1))

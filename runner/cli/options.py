@@ -17,6 +17,8 @@ SpecFile = Annotated[Path, typer.Argument(metavar="SPEC", help="Sweep spec, a YA
 Folder = Annotated[Path | None, typer.Option("-o", "--output", metavar="DIR", help="Output folder.")]
 Jobs = Annotated[
     int | None,
-    typer.Option("--jobs", min=1, max=1024, metavar="N", help="Worker processes; all processors if not given."),
+    typer.Option(
+        "--jobs", min=1, max=1024, metavar="N", help="Worker processes; all processors if not given."
+    ),
 ]
 AsJson = Annotated[bool, typer.Option("--json", help="Print JSON for a script instead of a table.")]

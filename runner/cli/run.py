@@ -48,7 +48,9 @@ def _print_run(result: Run) -> None:
     if spec.title:
         console.print(f"{spec.title}\n", markup=False)
     band = (spec.frequency.start, spec.frequency.stop)
-    print_cases(console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv"))
+    print_cases(
+        console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv")
+    )
     console.print(f"Run folder: {_shown_path(result.folder)}", markup=False, soft_wrap=True)
 
 

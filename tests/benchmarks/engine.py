@@ -21,9 +21,9 @@ from modepair.circuits import COPIES, OUTPUT
 from modepair.circuits.netlist import DRIVES, circuit
 from modepair.runner import run
 from modepair.runner.analyses import plan_analyses
-from modepair.runner.plans import BatchPlan, plan_batches
 from modepair.runner.decks import case_deck
 from modepair.runner.engine import engine
+from modepair.runner.plans import BatchPlan, plan_batches
 from modepair.sweeps import Sweep, expand, load_spec
 
 SPEC = """\
@@ -75,6 +75,31 @@ def write_spec(folder: Path, cases: int, spots: str = "1k, 10k") -> Path:
     return path
 
 
+def write_drawn_spec(folder: Path, draws: int) -> Path:
+    """Write a spec of one case whose resistors, cable and op-amp parameters are all drawn: 25 values."""
+    text = write_spec(folder, 1).read_text(encoding="utf-8")
+    text = text[: text.index("vary:")] + text[text.index("opamps:") :]
+    text = text.replace("  between_capacitance", "  cable_capacitance: 3n\n  between_capacitance")
+    entries = [
+        "{of: [R1, R2, R3, R4], absolute: 0.1 %, matching: 0.01 %, distribution: normal}",
+        "{of: [RF1, RF2, RG, RL, RSP, RSN, RI, CCP, CCN, CCB], absolute: 1 %}",
+        *(
+            f"{{of: [{', '.join(f'A{n}.{parameter}' for n in (1, 2, 3))}], {bound}}}"
+            for parameter, bound in (
+                ("cmrr", "least: 100 dB"),
+                ("gain_bandwidth", "absolute: 30 %"),
+                ("open_loop_gain", "absolute: 50 %"),
+                ("input_capacitance_common", "absolute: 20 %"),
+            )
+        ),
+    ]
+    text += f"tolerance:\n  draws: {draws}\n  seed: 7\n  parts:\n"
+    text += "".join(f"    - {entry}\n" for entry in entries)
+    path = folder / f"draws-{draws}.yaml"
+    path.write_text(text, encoding="utf-8")
+    return path
+
+
 def fastest(action: Callable[[], object], repeats: int, rounds: int = 5) -> float:
     """Seconds for one call: the fastest of several rounds, which other work on the machine disturbs least."""
     action()
@@ -122,7 +147,9 @@ def stand_alone(sweep: Sweep, plans: list[BatchPlan]) -> float:
     with tempfile.TemporaryDirectory() as folder:
         path = Path(folder) / "case.cir"
         path.write_text(deck, encoding="utf-8")
-        return fastest(lambda: subprocess.run(["ngspice", "-b", path], capture_output=True, check=True), 10, 3)
+        return fastest(
+            lambda: subprocess.run(["ngspice", "-b", path], capture_output=True, check=True), 10, 3
+        )
 
 
 def modepair(spec: Path, folder: Path, jobs: int, rounds: int = 2) -> float:
@@ -132,6 +159,18 @@ def modepair(spec: Path, folder: Path, jobs: int, rounds: int = 2) -> float:
         run(spec, folder / "run", jobs=jobs)
         times.append(time.perf_counter() - start)
     return min(times)
+
+
+def start_to_finish(spec: Path, folder: Path) -> float:
+    """Seconds of the whole command, interpreter and all."""
+    command = [sys.executable, "-c", "from modepair.runner.cli.app import main; main()"]
+    return fastest(
+        lambda: subprocess.run(
+            [*command, "run", spec, "-o", folder / "run"], capture_output=True, check=True
+        ),
+        1,
+        3,
+    )
 
 
 def peak_memory_mb(spec: Path, folder: Path) -> tuple[float, float]:
@@ -147,27 +186,70 @@ def peak_memory_mb(spec: Path, folder: Path) -> tuple[float, float]:
     return own, worker
 
 
+def print_rows(rows: dict[str, float], bare: float) -> None:
+    print(f"{'way':62} {'ms each':>8} {'x bare':>7}")
+    for label, seconds in rows.items():
+        print(f"{label:62} {seconds * 1e3:8.3f} {seconds / bare:7.2f}")
+
+
+def measure_cases(folder: Path) -> None:
+    large, few = write_spec(folder, 4000), write_spec(folder, 10)
+    sweep = expand(load_spec(large))
+    plans = plan_batches(sweep)
+    bare = bare_ac(sweep, plans)
+    one, two = (modepair(large, folder, jobs) / sweep.count for jobs in (1, 2))
+    objects, alone = pyspice_objects(plans), stand_alone(sweep, plans)
+    print_rows(
+        {
+            "bare ac of a loaded deck": bare,
+            f"modepair, spec to files, {sweep.count} cases, one job": one,
+            f"modepair, spec to files, {sweep.count} cases, two jobs": two,
+            "PySpice objects, simulator().ac() twice": objects,
+            "ngspice -b, one process a case": alone,
+        },
+        bare,
+    )
+    print(f"two jobs against one: {one / two:.2f} times")
+    print(f"PySpice objects against modepair with one job: {objects / one:.1f} times")
+    print(
+        f"a sweep of {expand(load_spec(few)).count} cases, command to files: {start_to_finish(few, folder):.2f} s"
+    )
+
+
+def measure_draws(folder: Path) -> None:
+    draws = write_drawn_spec(folder, 10_000)
+    sweep = expand(load_spec(draws))
+    bare = bare_ac(sweep, plan_batches(sweep))
+    one, two = (modepair(draws, folder, jobs, 1) / 10_000 for jobs in (1, 2))
+    print_rows(
+        {
+            "bare ac of a loaded deck": bare,
+            "modepair, 10,000 draws of 25 values, one job": one,
+            "modepair, 10,000 draws of 25 values, two jobs": two,
+        },
+        bare,
+    )
+    print(f"two jobs against one: {one / two:.2f} times")
+
+
+def measure_memory(folder: Path) -> None:
+    for label, spec in (
+        ("1,000 cases", write_spec(folder, 1000)),
+        ("20,000 cases", write_spec(folder, 20_000)),
+        ("10,000 draws", write_drawn_spec(folder, 10_000)),
+        ("100,000 draws", write_drawn_spec(folder, 100_000)),
+    ):
+        own, worker = peak_memory_mb(spec, folder)
+        print(f"peak memory, {label}: {own:.0f} MB, its worker {worker:.0f} MB", flush=True)
+
+
 def main() -> None:
-    """Measure and print."""
+    """Measure what the arguments name, or everything: cases, draws, memory."""
+    parts = {"cases": measure_cases, "draws": measure_draws, "memory": measure_memory}
+    print(f"processors: {os.cpu_count()}")
     with tempfile.TemporaryDirectory() as name:
-        folder = Path(name)
-        small, large, huge = (write_spec(folder, count) for count in (1000, 4000, 20000))
-        sweep = expand(load_spec(large))
-        plans = plan_batches(sweep)
-        bare = bare_ac(sweep, plans)
-        rows = [("bare ac of a loaded deck", bare)]
-        for jobs in (1, 2):
-            rows.append((f"modepair, spec to files, {sweep.count} cases, {jobs} job(s)", modepair(large, folder, jobs) / sweep.count))
-        rows.append(("PySpice objects, simulator().ac() twice", pyspice_objects(plans)))
-        rows.append(("ngspice -b, one process a case", stand_alone(sweep, plans)))
-        print(f"{'way':60} {'ms/case':>8} {'x bare':>7}")
-        for label, seconds in rows:
-            print(f"{label:60} {seconds * 1e3:8.3f} {seconds / bare:7.2f}")
-        print(f"two jobs against one: {rows[1][1] / rows[2][1]:.2f} times; PySpice objects against modepair: {rows[3][1] / rows[1][1]:.1f} times")
-        memory = [peak_memory_mb(spec, folder) for spec in (small, huge)]
-        for spec, (own, worker) in zip((small, huge), memory, strict=True):
-            print(f"peak memory, {spec.stem.split('-')[1]} cases: {own:.0f} MB, its worker {worker:.0f} MB")
-        print(f"processors: {os.cpu_count()}")
+        for part in sys.argv[1:] or parts:
+            parts[part](Path(name))
 
 
 if __name__ == "__main__":
