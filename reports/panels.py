@@ -285,4 +285,5 @@ def draw_mask(panel: Axes, mask: Sequence[tuple[float, float]]) -> None:
         linewidth=0,
         zorder=0.5,
     )
-    panel.plot(frequency_hz, level_db, color=INK, linewidth=2.2, zorder=1.8, gid="mask")
+    marker = "_" if len(mask) == 1 else ""
+    panel.plot(frequency_hz, level_db, marker=marker, color=INK, linewidth=2.2, zorder=1.8, gid="mask")

@@ -92,6 +92,8 @@ class Summary:
         Caption to file name, relative to the page.
     where : str
         Where all cases can be read.
+    opening, further : mapping of str to str
+        Sections before what was asked, and after the results: heading to Markdown, which is not escaped again.
     """
 
     title: str
@@ -104,6 +106,8 @@ class Summary:
     caution_flags: Sequence[str] = ("model", "nominal")
     plots: Mapping[str, str] = field(default_factory=dict)
     where: str = "cases.csv"
+    opening: Mapping[str, str] = field(default_factory=dict)
+    further: Mapping[str, str] = field(default_factory=dict)
 
 
 _MARKS = re.compile(r"([\\`*_\[\]<>|~&$])")
@@ -191,6 +195,8 @@ def summary_text(summary: Summary) -> str:
         ],
         more_failed=max(0, len(failed) - ROWS_OF_MANY),
         where=escape_markdown(summary.where),
+        opening=summary.opening,
+        further=summary.further,
         cautions=[escape_markdown(text) for text in cautions(summary.caution_flags)],
         provenance=[
             (escape_markdown(name), escape_markdown(text)) for name, text in summary.provenance.items()

@@ -8,7 +8,6 @@ from typing import Any
 
 import numpy as np
 import pandas as pd
-from quantiphy import Quantity
 from rich.console import Console
 from rich.text import Text
 
@@ -17,6 +16,7 @@ from modepair.reports.judgement import FAIL, PASS, UNDECIDED
 from modepair.reports.pairs import FloatArray
 from modepair.reports.readings import frequency_text, gain_text
 from modepair.reports.tables import MOST_ROWS, ROWS_OF_MANY, Column
+from modepair.sweeps import render
 
 __all__ = [
     "curve_text", "failing", "margin_text", "overall", "print_verdicts", "value_text", "verdict_columns",
@@ -80,7 +80,7 @@ def value_text(value: float, unit: str) -> str:
         return gain_text(value)
     if unit == "codes":
         return f"{value:.3g} codes"
-    return str(Quantity(value, unit).render(prec=3))
+    return render(value, unit, 4)
 
 
 def _worst(verdicts: pd.DataFrame) -> pd.DataFrame:

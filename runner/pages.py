@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import math
+from functools import partial
 from pathlib import Path
 
 from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
+from modepair.reports.judged_sections import interference_section, verdict_section
 from modepair.runner.folder import RunFolder
+from modepair.runner.judging import Judged
 from modepair.runner.results import Results
 from modepair.sweeps import Sweep, ToleranceEntry, render
 from modepair.sweeps.axes import settings
@@ -84,7 +87,9 @@ def asked(sweep: Sweep) -> dict[str, str]:
     return texts | {f"axis {axis.path}": ", ".join(axis.labels) for axis in sweep.axes}
 
 
-def write_pages(folder: RunFolder, sweep: Sweep, results: Results, provenance: dict[str, str]) -> None:
+def write_pages(
+    folder: RunFolder, sweep: Sweep, results: Results, provenance: dict[str, str], judged: Judged
+) -> None:
     """Write plots and summary of a run.
 
     Parameters
@@ -97,6 +102,8 @@ def write_pages(folder: RunFolder, sweep: Sweep, results: Results, provenance: d
         What it came to.
     provenance : dict of str to str
         What makes the run repeatable.
+    judged : Judged
+        Its verdicts.
     """
     spec = sweep.spec
     plots = {}
@@ -105,8 +112,9 @@ def write_pages(folder: RunFolder, sweep: Sweep, results: Results, provenance: d
         labels = axis_columns(rows, sweep.axes)
         case = results.kept_case.tolist()
         title = spec.title
+        mask = spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else ()
         for caption, name, draw in (
-            ("CMRR over frequency", "cmrr", plot_cmrr),
+            ("CMRR over frequency", "cmrr", partial(plot_cmrr, mask=mask)),
             ("Differential and common-mode gain over frequency", "gains", plot_gains),
         ):
             figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
@@ -121,5 +129,19 @@ def write_pages(folder: RunFolder, sweep: Sweep, results: Results, provenance: d
         provenance=provenance,
         caution_flags=("model", "nominal", *spec.cautions),
         plots=plots,
+        opening=_verdict(sweep, results, judged),
+        further=_interference(sweep, results),
     )
     folder.write_text("summary.md", summary_text(summary))
+
+
+def _verdict(sweep: Sweep, results: Results, judged: Judged) -> dict[str, str]:
+    if not len(judged.verdicts):
+        return {}
+    return {"Verdict": verdict_section(judged.verdicts, results.cases, sweep.axes, judged.changes)}
+
+
+def _interference(sweep: Sweep, results: Results) -> dict[str, str]:
+    interference = sweep.spec.interference
+    text = interference_section(results.cases, sweep.axes, interference) if interference else ""
+    return {"Interference": text} if text else {}

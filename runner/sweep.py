@@ -4,8 +4,8 @@ from __future__ import annotations
 
 import os
 import time
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from functools import cached_property
 from heapq import merge
@@ -22,6 +22,7 @@ from modepair.sweeps import Spec, Streams, expand, load_spec
 if TYPE_CHECKING:
     import pandas as pd
 
+    from modepair.reports.baselines import Baseline
     from modepair.runner.results import Progress
 
 __all__ = ["Run", "run"]
@@ -39,11 +40,17 @@ class Run:
         What was asked.
     cases : DataFrame
         A row per case: `case`, a column per axis, the figures, and `state`.
+    verdicts : DataFrame
+        A row per case and judged quantity, as in verdicts.csv; no rows where nothing is judged.
+    changes : sequence of str
+        What else differs from what the baseline came from.
     """
 
     folder: Path
     spec: Spec
     cases: pd.DataFrame
+    verdicts: pd.DataFrame
+    changes: Sequence[str] = ()
 
     @cached_property
     def curves(self) -> pd.DataFrame:
@@ -66,6 +73,7 @@ def run(
     progress: Progress | None = None,
     executors: ExecutorFactory | None = None,
     draw: int | None = None,
+    baseline: Baseline | None = None,
 ) -> Run:
     """Run a sweep and write its run folder.
 
@@ -84,6 +92,9 @@ def run(
     draw : int, optional
         Run that one of the spec's draws alone, in place of nominal parts and all draws; the run folder is then
         `runs/<name>-draw-<draw>` where `output` is absent.
+
+    baseline : Baseline, optional
+        Curves accepted earlier, to compare with.
 
     Returns
     -------
@@ -123,6 +134,7 @@ def run(
         solver.warm()
         # What follows takes a second to import, in which the workers start.
         from modepair.runner.decks import write_decks
+        from modepair.runner.judging import judge_run
         from modepair.runner.pages import write_pages
         from modepair.runner.plans import Plan, plan_batches, plan_draws
         from modepair.runner.record import provenance, run_record
@@ -136,10 +148,21 @@ def run(
         results = collect(
             solved, sweep, analyses.frequency_hz, folder, progress, draws=draws, only_draw=draw or 0
         )
+        judged = judge_run(
+            sweep,
+            results.cases,
+            folder.path("curves.parquet"),
+            baseline=baseline,
+            engine=results.engine,
+            draw=draw or 0,
+        )
+        results = replace(results, cases=judged.cases)
         results.cases.to_csv(folder.path("cases.csv"), index=False)
+        if len(judged.verdicts):
+            judged.verdicts.to_csv(folder.path("verdicts.csv"), index=False)
         if draw is not None:
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
-        write_pages(folder, sweep, results, provenance(spec, results.engine, started))
+        write_pages(folder, sweep, results, provenance(spec, results.engine, started), judged)
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
-    return Run(folder.target, spec, results.cases)
+    return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes)
