@@ -15,6 +15,7 @@ from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
 from modepair.reports.axis_labels import case_texts, varying
+from modepair.reports.differences import Measured
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.pairs import FLOOR_VOLTS, BoolArray, FloatArray, ModePair
 from modepair.reports.palette import HUES, CurveStyle, curve_styles, mix
@@ -33,6 +34,7 @@ MOST_CURVES = 40
 
 _ALL, _MOST, _MEDIAN = mix(HUES[0], "#ffffff", 0.82), mix(HUES[0], "#ffffff", 0.55), HUES[0]
 _EXTREMES = (CurveStyle(HUES[1]), CurveStyle(HUES[3], (5.0, 2.0)))
+_MARKERS, _POINTS = "oDs^v", (0.8, 1.6)
 _LEVEL_STEPS_DB = (1, 2, 5, 10, 20, 40)
 _PHASE_STEPS_DEG = (15, 45, 90, 180)
 
@@ -48,6 +50,7 @@ def plot_cmrr(
     rank_db: Sequence[float] | None = None,
     mask: Sequence[tuple[float, float]] = (),
     baseline: ModePair | None = None,
+    measured: Sequence[Measured] = (),
 ) -> Figure:
     """Draw CMRR over frequency, all cases in one panel.
 
@@ -71,6 +74,8 @@ def plot_cmrr(
         over log f.
     baseline : ModePair, optional
         Earlier curves to draw behind, of the shape (m, F') or (F',).
+    measured : sequence of Measured
+        Measurements to lay over the curves, as points; those outside the solved band are left out.
 
     Returns
     -------
@@ -96,6 +101,12 @@ def plot_cmrr(
         )
     if mask:
         ends.append(EndLabel(mask[-1][1], "least CMRR asked for", INK, width=2.2))
+    points = [_within(one, pair.frequency_hz) for one in measured]
+    ends += [
+        EndLabel(float(level[-1]), f"measured: {name}", INK, _POINTS, width=3.0)
+        for name, _, level in points
+        if level.size
+    ]
     touching = pair.above_floor.any(axis=1)
     floor_db = pair.floor_db[touching].min(axis=0) if touching.any() else None
     figure, ((panel,),) = make_panels(1, 1, label_room(ends), max(4.0, label_height(ends)), 6.6, title)
@@ -107,6 +118,7 @@ def plot_cmrr(
         shown.append(np.atleast_2d(baseline.cmrr_db))
     if mask:
         shown.append(np.array([[db for _, db in mask]]))
+    shown += [level for _, _, level in points if level.size]
     level_axis(panel, shown, "CMRR (dB)", steps=_LEVEL_STEPS_DB)
     frequency_axis(panel, pair.frequency_hz)
     if floor_db is not None:
@@ -123,8 +135,30 @@ def plot_cmrr(
         for row in rows:
             panel.plot(baseline.frequency_hz, row, color="#cdd0d4", linewidth=4, zorder=1.5, gid="baseline")
     _draw(panel, pair.frequency_hz, level_db, styles, pair.above_floor, extremes)
+    for index, (_, at_hz, level) in enumerate(points):
+        panel.plot(
+            at_hz,
+            level,
+            linestyle="none",
+            marker=_MARKERS[index % len(_MARKERS)],
+            markersize=5,
+            markerfacecolor="white",
+            markeredgecolor=INK,
+            markeredgewidth=1.1,
+            zorder=4,
+            gid=f"measured-{index + 1}",
+        )
     write_labels(panel, ends)
     return figure
+
+
+def _within(measured: Measured, frequency_hz: FloatArray) -> tuple[str, FloatArray, FloatArray]:
+    """Name, frequencies and levels of a measurement, as far as it lies in the solved band."""
+    near = 1 + 1e-9
+    inside = (measured.frequency_hz >= frequency_hz[0] / near) & (
+        measured.frequency_hz <= frequency_hz[-1] * near
+    )
+    return measured.name, measured.frequency_hz[inside], measured.cmrr_db[inside]
 
 
 @in_our_look

@@ -88,7 +88,12 @@ def asked(sweep: Sweep) -> dict[str, str]:
 
 
 def write_pages(
-    folder: RunFolder, sweep: Sweep, results: Results, provenance: dict[str, str], judged: Judged
+    folder: RunFolder,
+    sweep: Sweep,
+    results: Results,
+    provenance: dict[str, str],
+    judged: Judged,
+    measured: str = "",
 ) -> None:
     """Write plots and summary of a run.
 
@@ -104,6 +109,8 @@ def write_pages(
         What makes the run repeatable.
     judged : Judged
         Its verdicts.
+    measured : str
+        The section on measurements, in Markdown; empty where there is none.
     """
     spec = sweep.spec
     plots = {}
@@ -114,7 +121,7 @@ def write_pages(
         title = spec.title
         mask = spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else ()
         for caption, name, draw in (
-            ("CMRR over frequency", "cmrr", partial(plot_cmrr, mask=mask)),
+            ("CMRR over frequency", "cmrr", partial(plot_cmrr, mask=mask, measured=spec.measurements)),
             ("Differential and common-mode gain over frequency", "gains", plot_gains),
         ):
             figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
@@ -130,7 +137,7 @@ def write_pages(
         caution_flags=("model", "nominal", *spec.cautions),
         plots=plots,
         opening=_verdict(sweep, results, judged),
-        further=_interference(sweep, results),
+        further=_interference(sweep, results) | ({"Measured": measured} if measured else {}),
     )
     folder.write_text("summary.md", summary_text(summary))
 

@@ -135,6 +135,7 @@ def run(
         # What follows takes a second to import, in which the workers start.
         from modepair.runner.decks import write_decks
         from modepair.runner.judging import judge_run
+        from modepair.runner.measuring import measured_section, write_measured
         from modepair.runner.pages import write_pages
         from modepair.runner.plans import Plan, plan_batches, plan_draws
         from modepair.runner.record import provenance, run_record
@@ -163,6 +164,8 @@ def run(
         if draw is not None:
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
-        write_pages(folder, sweep, results, provenance(spec, results.engine, started), judged)
+        measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
+        made_of = provenance(spec, results.engine, started)
+        write_pages(folder, sweep, results, made_of, judged, measured_section(measured, spec, results.cases))
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
     return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes)

@@ -39,9 +39,10 @@ def main() -> None:
     except SpecError as error:
         _fail(str(error), USAGE)
     except ModepairError as error:
-        from modepair.runner.errors import OutputError
+        from modepair.runner.errors import OutputError, ReadingError
 
-        _fail(f"modepair: {error}", USAGE if isinstance(error, OutputError) else SIMULATION_FAILED)
+        usage = isinstance(error, OutputError | ReadingError)
+        _fail(f"modepair: {error}", USAGE if usage else SIMULATION_FAILED)
     except KeyboardInterrupt:
         _fail("modepair: interrupted; nothing was written", INTERRUPTED)
     except BrokenPipeError:
