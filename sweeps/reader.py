@@ -272,6 +272,9 @@ def model_faults(document: Document, model: type[BaseModel], error: ValidationEr
         elif item["type"] == "missing":
             if name in _MISSING:
                 yield document.fault(location[:-1], _MISSING[name], at_key=True)
+        elif item["type"] == "too_short":
+            # pydantic counts only items that it could read; a list that is empty has a fault of its section's own.
+            continue
         elif item["type"] == "extra_forbidden":
             known = _fields_at(model, location[:-1])
             near = suggestion(name, known) or f"; known keys: {listed(known)}"

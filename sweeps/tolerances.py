@@ -8,7 +8,7 @@ from typing import Annotated, Any
 
 from pydantic import Field, ValidationError
 
-from modepair.sweeps.document import Document
+from modepair.sweeps.document import Document, Location, join_path
 from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
 from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, STAGE_PART_KINDS, TOPOLOGIES
 from modepair.sweeps.quantities import COUNT, DECIBELS, FRACTION
@@ -23,6 +23,9 @@ MOST_DRAWS = 1_000_000
 MOST_RESULTS = 20_000_000
 """Draws of all cases together."""
 
+WIDEST_NORMAL = 1 / 3
+"""Widest tolerance with a normal distribution: no value at all is then nine sigma away, beyond any draw."""
+
 DISTRIBUTIONS = ("rectangular", "normal", "triangular", "two-point")
 SAMPLINGS = ("random", "latin-hypercube", "sobol")
 
@@ -30,6 +33,9 @@ _SHARE = replace(FRACTION, noun="a tolerance", least=1e-9, most=0.999999, zero=F
 _LEAST = replace(DECIBELS, noun="a least CMRR in dB", example="100 dB")
 _SEED = replace(COUNT, noun="a seed", least=0, most=2**53, zero=True, example="7")
 _DRAWS = replace(COUNT, noun="a number of draws", most=MOST_DRAWS, example="2000")
+
+
+_ENTRIES = "at least one entry, such as {of: [R1, R2], absolute: 0.1 %}"
 
 
 @dataclass(frozen=True)
@@ -58,6 +64,9 @@ class _ToleranceName:
         return {"type": "string", "enum": list(dict.fromkeys(known))}
 
 
+_NAME = _ToleranceName()
+
+
 class ToleranceEntry(Section):
     """One entry: parts that vary alike.
 
@@ -77,7 +86,7 @@ class ToleranceEntry(Section):
         else rectangular, since a bound is all that is known (JCGM 101:2008, 6.4.2).
     """
 
-    of: tuple[Annotated[str, Reads(_ToleranceName())], ...]
+    of: tuple[Annotated[str, Reads(_NAME)], ...]
     absolute: Annotated[float, Reads(_SHARE)] | None = None
     matching: Annotated[float, Reads(_SHARE)] | None = None
     least: Annotated[float, Reads(_LEAST)] | None = None
@@ -127,8 +136,15 @@ def tolerance_faults(
     axes
         Paths of the axes, as keys.
     """
+    section = document.node(("tolerance",))
+    if section is not None and section.entries is not None:
+        for key, takes in (("draws", _DRAWS.limits), ("parts", _ENTRIES)):
+            if key not in section.entries:
+                yield document.fault(("tolerance",), f"{key} is missing; it takes {takes}", at_key=True)
     node = document.node(("tolerance", "parts"))
     items = (node.items or []) if node else []
+    if node is not None and node.items == []:
+        yield document.fault(("tolerance", "parts"), f"the list is empty; parts takes {_ENTRIES}")
     seen: dict[str, str] = {}
     for index, item in enumerate(items):
         place = ("tolerance", "parts", index)
@@ -140,6 +156,8 @@ def tolerance_faults(
             entry = ToleranceEntry.model_validate(item.raw)
         except ValidationError:
             entry = None
+        if item.entries and "of" not in item.entries:
+            yield document.fault(place, f"of is missing; it takes {_NAME.takes}")
         names = entry.of if entry else ()
         if entry and not names:
             yield document.fault((*place, "of"), "the list is empty; of takes at least one part")
@@ -153,10 +171,15 @@ def tolerance_faults(
                 yield document.fault(at, f"{name} has a tolerance already, at {seen[name]}; give it once")
             seen.setdefault(name, _where(document, at))
         given = keys | varied
-        if entry and not given & {"absolute", "least"}:
-            yield document.fault(place, "absolute is missing; it takes a tolerance, such as 0.1 %")
+        of_cmrr = bool(names) and all(name.endswith(".cmrr") for name in names)
+        if entry and not given & ({"absolute", "matching", "least"} if of_cmrr else {"absolute", "least"}):
+            key, kind = ("least", _LEAST) if of_cmrr else ("absolute", _SHARE)
+            yield document.fault(place, f"{key} is missing; it takes {kind.takes}")
         yield from _cmrr_faults(document, place, names, given)
-        yield from _matching_faults(document, place, entry, given)
+        if entry and not of_cmrr:
+            values = {key: _values(document, axes, (*place, key)) for key in ("absolute", "matching")}
+            yield from _matching_faults(document, place, entry, values)
+            yield from _normal_faults(document, entry, values)
     for path in axes:
         if path.startswith("tolerance.parts["):
             index = int(path.removeprefix("tolerance.parts[").partition("]")[0])
@@ -208,29 +231,57 @@ def _cmrr_faults(
         )
 
 
+Written = list[tuple[Location, str, float]]
+"""Where a value stands, its text, and the value."""
+
+
+def _values(document: Document, axes: Mapping[str, Any], place: Location) -> Written:
+    """Return the values that an entry's key takes: of its axis where there is one; those that can be read."""
+    path = join_path(place)
+    places: list[Location] = [place]
+    if path in axes:
+        places = [("vary", path, index) for index in range(len(axes[path].items or []))]
+    found: Written = []
+    for at in places:
+        node = document.node(at)
+        text = (node.text or "").strip() if node else ""
+        try:
+            found.append((at, text, _SHARE.parse(text)))
+        except RefusedError:
+            continue
+    return found
+
+
 def _matching_faults(
-    document: Document, place: tuple[str | int, ...], entry: ToleranceEntry | None, given: set[str]
+    document: Document, place: Location, entry: ToleranceEntry, values: Mapping[str, Written]
 ) -> Iterator[Fault]:
-    if entry is None or "matching" not in given:
+    if not values["matching"]:
         return
-    at = (*place, "matching")
+    first = values["matching"][0][0]
     if len(entry.of) == 1:
-        yield document.fault(
-            at,
-            f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts",
-            at_key=True,
-        )
+        key = first if first[0] == "tolerance" else first[:2]
+        message = f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts"
+        yield document.fault(key, message, at_key=True)
     units = {OPAMP_PARAMETERS[n.partition(".")[2]].unit if "." in n else PARTS[n].kind.unit for n in entry.of}
     if len(units) > 1:
-        yield document.fault(
-            place, "parts of different kinds cannot form a matched set; give each kind an entry of its own"
-        )
-    if entry.absolute is not None and entry.matching is not None and entry.matching > entry.absolute:
-        text = document.node(at)
-        written = shown(text.text or "") if text else "matching"
-        yield document.fault(
-            at, f"{written} is wider than absolute; parts of a set match at least as well as absolute says"
-        )
+        message = "parts of different kinds cannot form a matched set; give each kind an entry of its own"
+        yield document.fault(place, message)
+    narrowest = min((value for _, _, value in values["absolute"]), default=1.0)
+    for at, text, value in values["matching"]:
+        if value > narrowest:
+            allowed = "parts of a set match at least as well as absolute says"
+            yield document.fault(at, f"{shown(text)} is wider than absolute; {allowed}")
+
+
+def _normal_faults(
+    document: Document, entry: ToleranceEntry, values: Mapping[str, Written]
+) -> Iterator[Fault]:
+    if entry.law != "normal":
+        return
+    for at, text, value in (one for written in values.values() for one in written):
+        if value > WIDEST_NORMAL:
+            message = "is too wide for a normal distribution, whose tails would reach zero"
+            yield document.fault(at, f"{shown(text)} {message}; give at most 33 %, or another distribution")
 
 
 def unvaried_faults(
