@@ -84,8 +84,9 @@ def value_text(value: float, unit: str) -> str:
 
 
 def _worst(verdicts: pd.DataFrame) -> pd.DataFrame:
-    """Sort verdicts: certain failures without a margin first, then by margin, passes last."""
-    margin = verdicts["margin_db"].fillna(verdicts["margin_percent"]).fillna(-np.inf)
+    """Sort verdicts: failed simulations, then failures by margin, missing cases, undecided ones, passes."""
+    without = pd.Series(np.where(verdicts["case"] > 0, -np.inf, 0.0), verdicts.index)
+    margin = verdicts["margin_db"].fillna(verdicts["margin_percent"]).fillna(without)
     rank = verdicts["verdict"].map({FAIL: 0, UNDECIDED: 1, PASS: 2}).fillna(3)
     return verdicts.assign(_rank=rank, _margin=margin).sort_values(["_rank", "_margin"], kind="stable")
 

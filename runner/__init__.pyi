@@ -1,3 +1,5 @@
+from .checking import Check as Check
+from .checking import check as check
 from .errors import EngineMissingError as EngineMissingError
 from .errors import OutputError as OutputError
 from .errors import SimulationError as SimulationError

@@ -102,3 +102,49 @@ class AcceptError(ModepairError, RuntimeError):
 
     def __str__(self) -> str:
         return f"{self.path}: not accepted, since {self.failed} of the cases failed in simulation: {self.first}"
+
+
+class NothingToJudgeError(ModepairError, ValueError):
+    """A spec that has neither limits nor a baseline.
+
+    Parameters
+    ----------
+    spec : str
+        Its file.
+    baseline : str
+        Name of the baseline that was looked for.
+    """
+
+    def __init__(self, spec: str, baseline: str) -> None:
+        super().__init__(spec, baseline)
+        self.spec = spec
+        self.baseline = baseline
+
+    def __str__(self) -> str:
+        return (
+            f"{self.spec}: there is nothing to judge: the spec has no limits, and there is no {self.baseline} "
+            "beside it; give limits, or accept the curves as they are with --accept"
+        )
+
+
+class AcceptError(ModepairError, RuntimeError):
+    """A baseline that was not written, since cases failed.
+
+    Parameters
+    ----------
+    path : Path
+        The baseline's file.
+    failed : int
+        Number of failed cases.
+    first : str
+        The first of them, with its reason.
+    """
+
+    def __init__(self, path: Path, failed: int, first: str) -> None:
+        super().__init__(path, failed, first)
+        self.path = path
+        self.failed = failed
+        self.first = first
+
+    def __str__(self) -> str:
+        return f"{self.path}: not accepted, since {self.failed} cases failed in simulation: {self.first}"

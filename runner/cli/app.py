@@ -9,6 +9,7 @@ import sys
 
 import typer
 
+from modepair.runner.cli.check import check_command
 from modepair.runner.cli.netlist import netlist_command
 from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
 from modepair.runner.cli.run import run_command
@@ -26,6 +27,7 @@ app = typer.Typer(
     rich_markup_mode=None,
 )
 app.command("run")(run_command)
+app.command("check")(check_command)
 app.command("netlist")(netlist_command)
 app.command("schema")(schema_command)
 
@@ -39,9 +41,9 @@ def main() -> None:
     except SpecError as error:
         _fail(str(error), USAGE)
     except ModepairError as error:
-        from modepair.runner.errors import OutputError, ReadingError
+        from modepair.runner.errors import OutputError
 
-        usage = isinstance(error, OutputError | ReadingError)
+        usage = isinstance(error, OutputError | ValueError)
         _fail(f"modepair: {error}", USAGE if usage else SIMULATION_FAILED)
     except KeyboardInterrupt:
         _fail("modepair: interrupted; nothing was written", INTERRUPTED)

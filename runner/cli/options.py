@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-__all__ = ["FAILING", "SIMULATION_FAILED", "USAGE", "AsJson", "Folder", "Jobs", "SpecFile"]
+__all__ = ["FAILING", "SIMULATION_FAILED", "USAGE", "AsJson", "Folder", "Jobs", "SpecFile", "shown_path"]
 
 FAILING = 1
 USAGE = 2
@@ -22,3 +22,9 @@ Jobs = Annotated[
     ),
 ]
 AsJson = Annotated[bool, typer.Option("--json", help="Print JSON for a script instead of a table.")]
+
+
+def shown_path(path: Path) -> Path:
+    """Write a path as the user would from here."""
+    here = Path.cwd()
+    return path.relative_to(here) if path.is_relative_to(here) else path

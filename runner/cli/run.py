@@ -4,12 +4,11 @@ from __future__ import annotations
 
 import json
 import sys
-from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, SpecFile
+from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, SpecFile, shown_path
 from modepair.runner.cli.progress import progress_bar
 
 if TYPE_CHECKING:
@@ -51,13 +50,12 @@ def _print_run(result: Run) -> None:
     print_cases(
         console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv")
     )
-    console.print(f"Run folder: {_shown_path(result.folder)}", markup=False, soft_wrap=True)
+    if len(result.verdicts):
+        from modepair.reports.verdicts import case_names, overall
 
-
-def _shown_path(path: Path) -> Path:
-    """Path as the user would write it from here."""
-    here = Path.cwd()
-    return path.relative_to(here) if path.is_relative_to(here) else path
+        verdict = overall(result.verdicts, case_names(result.cases, spec.axes)[1])
+        console.print(f"Verdict: {verdict}\n", markup=False, soft_wrap=True)
+    console.print(f"Run folder: {shown_path(result.folder)}", markup=False, soft_wrap=True)
 
 
 def _as_json(result: Run) -> str:
