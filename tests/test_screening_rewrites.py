@@ -114,6 +114,7 @@ def test_laplace_that_cannot_be_built_is_refused_by_name(tmp_path: Path) -> None
         "1/(s-s)": "it divides by zero",
         "s > 1 ? 1 : 2": "something else than + - * /",
         "V(a)/(1+s)": "something else than + - * /",
+        "1/(1+1us)": "1us in LAPLACE could be a time or a product with s",
         "1/(1+s*q)": "parameter q is not defined",
     }.items():
         text = refused(tmp_path, f"e1 out 0 LAPLACE {{V(a)}} = {{{transfer}}}")
@@ -307,3 +308,22 @@ def test_a_prefix_lets_several_files_into_one_deck(tmp_path: Path) -> None:
     assert model.subcircuits == {"c1_a": ("p", "n"), "c1_b": ("p", "n")}
     with pytest.raises(ValueError, match="prefix must be small letters"):
         screen(path, tmp_path, prefix="C 1")
+
+
+def test_names_that_ngspice_takes_for_words_are_spelt_otherwise(tmp_path: Path) -> None:
+    text = screened(tmp_path, "e1 poly 0 a b 2\nr1 poly value 1k\nc1 value off 1n\nr2 off out {1k}").text
+    assert "e1 poly_ 0 a b 2.0\nr1 poly_ value_ 1000.0\nc1 value_ off_ 1e-09\nr2 off_ out 1000.0" in text
+
+
+def test_a_file_is_named_as_the_user_names_it(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    (tmp_path / "real").mkdir()
+    (tmp_path / "real" / "model.lib").write_text(".bogus\n")
+    (tmp_path / "spec").symlink_to("real")
+    monkeypatch.chdir(tmp_path)
+    for path, root in (
+        ("spec/model.lib", "."),
+        ("real/model.lib", "."),
+        (tmp_path / "spec" / "model.lib", tmp_path),
+    ):
+        with pytest.raises(SpecError, match=r"^(spec|real)/model\.lib:1:1: \.bogus"):
+            screen(Path(path), Path(root))

@@ -37,16 +37,18 @@ class Files:
 
     def __init__(self, root: Path, findings: Findings) -> None:
         self.root = Path(os.path.realpath(root))
+        self._written_root = Path(os.path.abspath(root))
         self.findings = findings
         self.paths: list[Path] = []
         self._total = 0
 
     def name(self, path: Path) -> str:
         """Return a file's name as the user would give it: relative to the root."""
-        try:
-            return path.relative_to(self.root).as_posix()
-        except ValueError:
-            return path.name
+        written = Path(os.path.abspath(path))
+        for inner, root in ((written, self._written_root), (Path(os.path.realpath(path)), self.root)):
+            if inner.is_relative_to(root):
+                return inner.relative_to(root).as_posix()
+        return path.name
 
     def cards(self, path: Path, depth: int = 1) -> Iterator[Card]:
         """Yield the cards of a file, with those of the files it includes in their place.

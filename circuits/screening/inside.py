@@ -31,7 +31,26 @@ __all__ = ["Element", "Inside", "ModelUse", "plain_names"]
 
 GROUND = "0"
 _SPELLINGS = {"+": "_p", "-": "_n", ".": "_", "/": "_"}
-_AWKWARD = frozenset(("all", "allv", "alli", "ally", "frequency", "time", "gnd"))
+_AWKWARD = frozenset(
+    (
+        "all",
+        "allv",
+        "alli",
+        "ally",
+        "frequency",
+        "time",
+        "gnd",
+        "value",
+        "poly",
+        "table",
+        "ac",
+        "off",
+        "temper",
+        "on",
+    )
+)
+"""Names that ngspice reads as something else, on some card or in a list of vectors."""
+
 _INNER = re.compile(r".*_int[0-9]+")
 
 

@@ -15,6 +15,7 @@ The source is then the sum of gains times such voltages: sources in series (E) o
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 
@@ -39,6 +40,7 @@ __all__ = ["Laplace", "Transfer", "transfer_of"]
 CONDUCTANCE = 1e-3
 """Siemens of the networks: far above ngspice's GMIN of 1e-12, which then shifts nothing by more than 1e-9."""
 
+_GLUED = re.compile(r"\b[0-9.]+(?:e[+-]?[0-9]+)?(?:meg|[tgkmunpf])s\b")
 _ORDER = 2
 _HIGHEST = 8
 Polynomial = tuple[float, ...]
@@ -193,6 +195,10 @@ class Laplace:
 
     def _checked(self, inside: Inside) -> Transfer:
         """Return the transfer function, once it is known to be one that can be built."""
+        if glued := _GLUED.search(self.transfer.text):
+            raise self.transfer.refused(
+                f"{glued[0]} in LAPLACE could be a time or a product with s; write *s"
+            )
         node = inside.folder.fold(self.transfer, inside.frame, laplace=True)
         try:
             transfer = transfer_of(node)

@@ -18,9 +18,16 @@ _SCALES = {
     "": 0, "t": 12, "g": 9, "meg": 6, "k": 3, "m": -3, "u": -6, "n": -9, "p": -12, "f": -15,
 }  # fmt: skip
 _MIL = 25.4e-6
+_SCALED_UNITS = "a|s|w"
 _UNITS = "ohms|ohm|volts|volt|vdc|v|amps|amp|adc|farads|farad|f|henrys|henry|h|hz|secs|sec|watts|watt"
 _PATTERN = re.compile(
-    r"([+-]?)([0-9]+\.?[0-9]*|\.[0-9]+)(?:e([+-]?[0-9]+))?(mil|meg|[tgkmunpf])?(" + _UNITS + r")?"
+    r"([+-]?)([0-9]+\.?[0-9]*|\.[0-9]+)(?:e([+-]?[0-9]+))?(?:(mil|meg|[tgkmunpf])("
+    + _SCALED_UNITS
+    + "|"
+    + _UNITS
+    + ")?|("
+    + _UNITS
+    + "))?"
 )
 NUMBER_START = re.compile(r"[+-]?\.?[0-9]")
 """What a text that means to be a number begins with."""
@@ -55,7 +62,7 @@ def parse_number(text: str) -> float:
     match = _PATTERN.fullmatch(text)
     if match is None:
         raise NumberError(_complaint(text))
-    sign, digits, exponent, scale, unit = match.groups()
+    sign, digits, exponent, scale, unit, _ = match.groups()
     if scale == "f" and unit == "f":
         raise NumberError(f"{text} has two units; write {sign}{digits}f for femto")
     if scale == "mil":

@@ -55,11 +55,14 @@ class Expression:
         The card it stands on.
     offset : int
         Its first character on that card.
+    text : str
+        The piece itself.
     """
 
     node: Node
     card: Card
     offset: int
+    text: str = ""
 
     def refused(self, message: str) -> CardError:
         """Return a fault at the expression's place."""
@@ -98,7 +101,7 @@ def parse_expression(card: Card, begin: int, end: int, findings: Findings) -> Ex
         raise CardError(
             card.place(begin), "brackets are too deep; split the expression into parameters or elements"
         )
-    return Expression(node, card, begin)
+    return Expression(node, card, begin, card.text[begin:end])
 
 
 class _Parser:

@@ -1,0 +1,1 @@
+"""Fuzzing scripts: long random runs, apart from the tests."""
