@@ -43,7 +43,8 @@ def test_numbers_are_read_as_spice_means_them(text: str, value: float) -> None:
     [
         ("4k7", "scale factor inside"), ("1r5", "scale factor inside"), ("1meg5", "scale factor inside"),
         ("0x10", "hexadecimal"), ("10%", "per cent"), ("1d3", "exponent letter d"), ("1_000", "underscore"),
-        ("1a", "atto, ampere or nothing"), ("2s", "is not a number"), ("1kk", "is not a number"), ("1e400", "too large"), ("1e-400", "too small"),
+        ("1a", "atto, ampere or nothing"), ("2s", "is not a number"), ("1kk", "is not a number"),
+        ("1e400", "too large"), ("1e-400", "too small"),
         ("1e", "is not a number"), ("1ff", "two units"), ("1" * 61, "too long"), ("5kelvin", "is not a number"),
     ],
 )  # fmt: skip
