@@ -9,11 +9,11 @@ from typing import Literal
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["GROUND", "Element", "Kind", "Parts", "Values", "between"]
+__all__ = ["GROUND", "Card", "Element", "Instance", "Kind", "Parts", "Values", "between"]
 
 Values = npt.NDArray[np.float64]
 Parts = Mapping[str, Values]
-Kind = Literal["R", "C", "G", "E"]
+Kind = Literal["R", "C", "L", "G", "E", "V", "I"]
 
 GROUND = "0"
 
@@ -26,20 +26,48 @@ class Element:
     ----------
     name : str
         Name in the netlist; its first letter is the kind.
-    kind : {"R", "C", "G", "E"}
-        Resistor, capacitor, voltage-controlled current source (current out of the second node, into the
-        first, through the circuit: `nodes` are ordered so that a positive value drives the first node up)
-        or voltage-controlled voltage source.
+    kind : {"R", "C", "L", "G", "E", "V", "I"}
+        Resistor, capacitor, inductor, voltage-controlled current source (current out of the second node, into
+        the first, through the circuit: `nodes` are ordered so that a positive value drives the first node up),
+        voltage-controlled voltage source, or independent source of a voltage or of a current out of its
+        second node, into its first.
     nodes : tuple of str
-        Two nodes for R and C; output pair, then controlling pair for G and E.
+        Two nodes; for G and E the output pair, then the controlling pair.
     values : ndarray, shape (n,)
-        Ohm, farad, siemens or volt per volt.
+        Ohm, farad, henry, siemens, volt per volt; of an independent source its AC amplitude in volt or
+        ampere.
+    dc : float
+        DC value of an independent source, in volt.
     """
 
     name: str
     kind: Kind
     nodes: tuple[str, ...]
     values: Values
+    dc: float = 0.0
+
+
+@dataclass(frozen=True)
+class Instance:
+    """A subcircuit in its place; nothing of it is altered.
+
+    Attributes
+    ----------
+    name : str
+        Name of the instance, without the letter X.
+    nodes : tuple of str
+        Its nodes, in the order of the subcircuit's ports.
+    subcircuit : str
+        Name of the subcircuit.
+    """
+
+    name: str
+    nodes: tuple[str, ...]
+    subcircuit: str
+
+
+Card = Element | Instance
+"""What a netlist has a line for."""
 
 
 def between(parts: Parts, name: str, node_a: str, node_b: str) -> list[Element]:

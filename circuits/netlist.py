@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 
+import numpy as np
 from PySpice.Spice.Netlist import Circuit
 
-from modepair.circuits.elements import GROUND, Element
+from modepair.circuits.elements import GROUND, Card, Element, Instance
 from modepair.circuits.sources import GENERATORS
 from modepair.circuits.stages import OUTPUT
 
-__all__ = ["COPIES", "DRIVES", "circuit", "netlist", "standalone"]
+__all__ = ["COPIES", "DRIVES", "circuit", "netlist", "pair_of_drives", "standalone"]
 
 COPIES = ("c", "d")
 """Suffixes of the two copies: common-mode drive, differential drive."""
@@ -23,36 +24,58 @@ OPTIONS = ".option noopac pivrel=0.5"
 far above ngspice's own 0.001: of random stages, the largest error at the output against a dense solve fell from
 1e-9 to 3e-11 V per volt of drive, at no cost in time."""
 
+NONLINEAR_OPTIONS = ".option pivrel=0.5"
+"""A circuit with imported models is linearised about its operating point, so it must have one."""
 
-def _add(built: Circuit, element: Element, row: int, copy: str) -> None:
-    name = f"{element.name[1:]}_{copy}"
-    nodes = [node if node == GROUND else f"{node}_{copy}" for node in element.nodes]
-    value = float(element.values[row])
-    if element.kind == "R":
+
+def _add(built: Circuit, card: Card, row: int, copy: str, shared: Collection[str]) -> None:
+    nodes = [node if node in shared else f"{node}_{copy}" for node in card.nodes]
+    if isinstance(card, Instance):
+        built.X(f"{card.name}_{copy}", card.subcircuit, *nodes)
+        return
+    name = f"{card.name[1:]}_{copy}"
+    value = float(card.values[row])
+    if card.kind == "R":
         built.R(name, *nodes, value)
-    elif element.kind == "C":
+    elif card.kind == "C":
         built.C(name, *nodes, value)
-    elif element.kind == "G":
-        # SPICE counts the current of a G element from its first to its second node, through the source.
+    elif card.kind == "L":
+        built.L(name, *nodes, value)
+    elif card.kind == "V":
+        built.V(name, *nodes, f"DC {card.dc:.17g} AC {value!r}")
+    elif card.kind in "GI":
+        # SPICE counts the current of a source from its first to its second node, through the source.
         into, out_of, *controlling = nodes
-        built.VCCS(name, out_of, into, *controlling, transconductance=value)
+        if card.kind == "G":
+            built.VCCS(name, out_of, into, *controlling, transconductance=value)
+        else:
+            built.I(name, out_of, into, f"DC {card.dc:.17g} AC {value!r}")
     else:
         built.VCVS(name, *nodes, voltage_gain=value)
 
 
 def circuit(
-    elements: Sequence[Element], row: int = 0, drives: Mapping[str, tuple[float, float]] = DRIVES
+    elements: Mapping[str, Sequence[Card]],
+    row: int = 0,
+    *,
+    saved: Sequence[str],
+    models: str = "",
+    supplies: Mapping[str, float] = {},
 ) -> Circuit:
-    """Build the PySpice circuit of one case, a copy for each drive.
+    """Build the PySpice circuit of one case, in several copies.
 
     Parameters
     ----------
-    elements : sequence of Element
-        The circuit between the generators and its output.
+    elements : mapping of str to sequence of Element or Instance
+        By the suffix of the copy: what is in it.
     row : int
         Which of the elements' values to take.
-    drives : mapping of str to (float, float)
-        Amplitudes in volts of the plus and the minus generator, by the suffix of the copy.
+    saved : sequence of str
+        What is kept of a solve, such as "v(out_c)".
+    models : str
+        Definitions of the subcircuits that instances name; a circuit with any is nonlinear.
+    supplies : mapping of str to float
+        Nodes that all copies share, and their DC voltages.
 
     Returns
     -------
@@ -60,25 +83,68 @@ def circuit(
         Without analyses.
     """
     built = Circuit("modepair")
-    built.raw_spice = OPTIONS + "\n.save " + " ".join(f"v({OUTPUT}_{copy})" for copy in drives) + "\n"
-    for copy, amplitudes in drives.items():
-        for generator, amplitude in zip(GENERATORS, amplitudes, strict=True):
-            node = f"{generator}_{copy}"
-            built.V(node, node, GROUND, f"DC 0 AC {float(amplitude)!r}")
-        for element in elements:
-            _add(built, element, row, copy)
+    options = NONLINEAR_OPTIONS if models else OPTIONS
+    built.raw_spice = f"{options}\n.save {' '.join(saved)}\n{models}"
+    shared = {GROUND, *supplies}
+    for node, volts in supplies.items():
+        built.V(node, node, GROUND, f"DC {volts!r}")
+    for copy, cards in elements.items():
+        for card in cards:
+            _add(built, card, row, copy, shared)
     return built
 
 
+def pair_of_drives(
+    cards: Sequence[Card], drives: Mapping[str, tuple[float, float]] = DRIVES
+) -> dict[str, list[Card]]:
+    """Put a circuit behind two generators, in a copy for each drive.
+
+    Parameters
+    ----------
+    cards : sequence of Element or Instance
+        The circuit between the generators and its output.
+    drives : mapping of str to (float, float)
+        Amplitudes in volts of the plus and the minus generator, by the suffix of the copy.
+
+    Returns
+    -------
+    dict of str to list of Element or Instance
+        As `circuit` takes them.
+    """
+    return {
+        copy: [
+            *(
+                Element(f"V{generator}", "V", (generator, GROUND), np.full(1, amplitude))
+                for generator, amplitude in zip(GENERATORS, amplitudes, strict=True)
+            ),
+            *cards,
+        ]
+        for copy, amplitudes in drives.items()
+    }
+
+
 def netlist(
-    elements: Sequence[Element], row: int = 0, drives: Mapping[str, tuple[float, float]] = DRIVES
+    cards: Sequence[Card],
+    *,
+    models: str = "",
+    supplies: Mapping[str, float] = {},
+    watched: Sequence[str] = (),
+    drives: Mapping[str, tuple[float, float]] = DRIVES,
 ) -> str:
     """Write the netlist of one case, a copy for each drive.
 
     Parameters
     ----------
-    elements, row, drives
-        As for `circuit`.
+    cards : sequence of Element or Instance
+        The circuit between the generators and its output, its elements with one value each.
+    models : str
+        Definitions of the subcircuits that instances name.
+    supplies : mapping of str to float
+        Nodes that both copies share, and their DC voltages.
+    watched : sequence of str
+        Nodes whose voltages at the operating point are wanted of the first copy.
+    drives : mapping of str to (float, float)
+        As for `pair_of_drives`.
 
     Returns
     -------
@@ -86,7 +152,10 @@ def netlist(
         SPICE text without analyses and without `.end`. Every number is written so that it reads back to
         the same double.
     """
-    return str(circuit(elements, row, drives))
+    saved = [f"v({OUTPUT}_{copy})" for copy in drives]
+    saved += [f"v({node}_{next(iter(drives))})" for node in watched if node != OUTPUT]
+    copies = pair_of_drives(cards, drives)
+    return str(circuit(copies, saved=saved, models=models, supplies=supplies))
 
 
 def standalone(text: str, analyses: Sequence[str], comment: str) -> str:

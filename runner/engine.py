@@ -37,6 +37,23 @@ HARMLESS = (
 )
 """Starts of the lines that some versions print on their error stream at a good start or load."""
 
+CONVERGENCE_TALK = (
+    "Note:",
+    "Trying gmin",
+    "Further gmin increment",
+    "One successful",
+    "Supplies reduced to",
+    "Warning: singular matrix",
+    "Warning: Further gmin increment",
+    "Warning: Dynamic gmin stepping failed",
+    "Warning: True gmin stepping failed",
+    "Warning: Gmin stepping failed",
+    "Warning: gmin stepping failed",
+    "Warning: Source stepping failed",
+    "Warning: source stepping failed",
+)
+"""Starts of the lines that tell how an operating point is being found. That none was found is told by others."""
+
 FREQUENCY_MATCH = 1e-9
 """Relative distance within which a solved frequency is the one asked for; ngspice's grid is exact to 1e-14."""
 
@@ -93,19 +110,22 @@ class Engine:
             raise EngineMissingError(LIBRARY_VARIABLE, str(error)) from error
         self._shared.NUMBER_OF_EXEC_CALLS_TO_RELEASE_MEMORY = COMMANDS_BEFORE_RELEASE
         self._holds_result = False
+        self._harmless: tuple[str, ...] = HARMLESS
 
     @property
     def version(self) -> str:
         """Version of the ngspice library."""
         return str(self._shared.ngspice_version)
 
-    def load(self, netlist: str) -> None:
+    def load(self, netlist: str, *, nonlinear: bool = False) -> None:
         """Load a circuit, in place of any other.
 
         Parameters
         ----------
         netlist : str
             SPICE text without analyses and without `.end`.
+        nonlinear : bool
+            Whether it needs an operating point, whose search ngspice may talk about.
 
         Raises
         ------
@@ -117,10 +137,11 @@ class Engine:
         self._quietly("destroy all")
         self._quietly("remcirc")
         self._holds_result = False
+        self._harmless = HARMLESS + CONVERGENCE_TALK if nonlinear else HARMLESS
         try:
             self._shared.load_circuit(f"{netlist}\n.end\n")
         except NameError as error:
-            raise EngineDeadError(self._said() or str(error)) from error
+            raise EngineDeadError(_explained(self._said() or str(error))) from error
         complaints = self._complaints()
         loaded = any(line.startswith("Circuit:") for line in self._shared.stdout.splitlines())
         if complaints or not loaded:
@@ -200,6 +221,44 @@ class Engine:
             raise SimulationError("the analysis gave values that are not finite numbers")
         return result
 
+    def operating_point(self, vectors: Sequence[str]) -> npt.NDArray[np.float64]:
+        """Find the operating point of the loaded circuit.
+
+        Parameters
+        ----------
+        vectors : sequence of str, length v
+            Node names to read.
+
+        Returns
+        -------
+        ndarray, shape (v,)
+            DC node voltages, in volts.
+
+        Raises
+        ------
+        SimulationError
+            If there is none, or ngspice says anything beyond how it searches.
+        """
+        if self._holds_result:
+            self._quietly("destroy all")
+        self._holds_result = True
+        self._command("op")
+        name = self._shared.last_plot
+        if not name.startswith("op"):
+            raise SimulationError("the search for an operating point left no result")
+        found = []
+        for vector in vectors:
+            info = self._shared._ngspice_shared.ngGet_Vec_Info(f"{name}.{vector}".encode("ascii"))
+            if info == self._ffi.NULL or info.v_realdata == self._ffi.NULL or info.v_length != 1:
+                raise SimulationError(f"the operating point left no voltage {vector}")
+            found.append(float(info.v_realdata[0]))
+        self._command("destroy")
+        self._holds_result = False
+        result = np.array(found)
+        if not np.isfinite(result).all():
+            raise SimulationError("the operating point has voltages that are not finite numbers")
+        return result
+
     def _vector(self, name: str) -> npt.NDArray[np.complex128]:
         """Copy a complex vector out of the simulator; PySpice's own way costs ten times as much."""
         info = self._shared._ngspice_shared.ngGet_Vec_Info(name.encode("ascii"))
@@ -212,7 +271,9 @@ class Engine:
         try:
             self._shared.exec_command(command)
         except NameError as error:
-            raise SimulationError(self._said() or str(error)) from error
+            # PySpice takes every line on the error stream for a failure, ngspice's own verdict is the other one.
+            if self._complaints() or not self._shared.stderr or "returned" in str(error):
+                raise SimulationError(self._said() or str(error)) from error
         complaints = self._complaints()
         if complaints:
             raise SimulationError("; ".join(complaints))
@@ -226,7 +287,7 @@ class Engine:
 
     def _complaints(self) -> list[str]:
         lines = (line.strip() for line in self._shared.stderr.splitlines())
-        return [line for line in lines if line and not line.startswith(HARMLESS)]
+        return [line for line in lines if line and not line.startswith(self._harmless)]
 
     def _said(self) -> str:
         """The error text of the last command, or its output where it printed the error there."""
@@ -234,6 +295,16 @@ class Engine:
             self._complaints()
             or [line.strip() for line in self._shared.stdout.splitlines() if "error" in line.lower()]
         )
+
+
+def _explained(message: str) -> str:
+    """Name the remedy where ngspice's own message names none."""
+    if "mif-error" in message.lower():
+        message += (
+            "; POLY and TABLE need ngspice's code models, which some systems pack apart from its library. "
+            "Install them with: apt-get install ngspice (Debian, Ubuntu)"
+        )
+    return message
 
 
 @cache
