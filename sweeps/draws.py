@@ -86,7 +86,8 @@ def variates(
             found += [Variate(name, name, (name,), 1.0 / least, entry.law, True, index) for name in members]
             continue
         if matching is not None and absolute is not None and members:
-            key = f"set of {entry.of[0]}"
+            # Keyed by the member that the vocabulary names first, so that their order in the file changes nothing.
+            key = f"set of {min(entry.of, key=NAMES.index)}"
             found.append(
                 Variate(f"{' '.join(members)} together", key, members, absolute, entry.law, False, index)
             )
