@@ -6,6 +6,7 @@ unscreened, do write the canary.
 
 from __future__ import annotations
 
+import contextlib
 import csv
 import os
 import shutil
@@ -58,9 +59,9 @@ def test_corpus_is_complete() -> None:
 def test_hostile_file_is_refused_and_touches_nothing(name: str, folder: Path) -> None:
     shutil.copy(MODELS / name, folder / name)
     before = {path: path.stat().st_atime_ns for path in folder.parent.rglob("*")}
-    begun = time.perf_counter()
+    begun = time.process_time()
     error = refusal(folder / name, folder)
-    assert time.perf_counter() - begun < 5
+    assert time.process_time() - begun < 5
     line, reason = EXPECTED[name]
     text = str(error)
     assert any(
@@ -117,14 +118,14 @@ def test_symbolic_links_inside_the_folder_are_followed(folder: Path) -> None:
 def test_pipes_devices_and_folders_are_refused_at_once(folder: Path) -> None:
     os.mkfifo(folder / "pipe.lib")
     (folder / "sub").mkdir()
-    begun = time.perf_counter()
+    begun = time.process_time()
     text = str(refusal(write(folder, GOOD + ".include pipe.lib\n.include sub\n"), folder))
     assert "model.lib:6:1: .include: pipe.lib is no plain file" in text
     assert "model.lib:7:1: .include: sub is no plain file" in text
     assert "no plain file" in str(refusal(folder / "pipe.lib", folder))
     assert "no plain file" in str(refusal(Path("/dev/zero"), Path("/dev")))
     assert "cannot be read" in str(refusal(folder / "nothing.lib", folder))
-    assert time.perf_counter() - begun < 2
+    assert time.process_time() - begun < 2
 
 
 def test_sizes_and_depths_are_bounded(folder: Path) -> None:
@@ -175,3 +176,47 @@ def test_nothing_of_a_comment_or_a_name_of_a_file_is_left(folder: Path) -> None:
     assert isinstance(model, ScreenedModel)
     assert "marker" not in model.text
     assert model.text == ".model dx d(is=1e-15)\n.subckt a p n\nd1 p n dx\n.ends a\n"
+
+
+SLOW = {
+    "spaces": " " * 900_000,
+    "stars": "*" * 900_000,
+    "dots": "." * 50_000,
+    "blank comment": "*" + " " * 900_000 + "x",
+    "brackets": "r2 p n " + "(" * 25_000 + ")" * 25_000,
+    "open brackets": "r2 p n " + "(" * 50_000,
+    "open probes": "e2 o 0 value={" + "v(" * 20_000 + "}",
+    "long probe": "e2 o 0 value={v(" + "p" * 50_000 + "}",
+    "long sum": "r2 p n {" + "+".join(["1"] * 25_000) + "}",
+    "long product": "e2 o 0 value={" + "*".join(["v(p)"] * 9_000) + "}",
+    "long list": "e2 o 0 poly(1) p n " + "1 " * 25_000,
+    "many equals": ".param " + "a= " * 15_000,
+    "many parameters": ".param " + " ".join(f"a{i}={{a{i + 1}}}" for i in range(5_000)) + " a5000=1",
+    "alike names": "\n".join(
+        f"r{i} {format(i, '014b').replace('0', '.').replace('1', '/')} n 1" for i in range(12_000)
+    ),
+    "many sets": "\n".join(f"d{i} p n dx" for i in range(5_000))
+    + "\n.ends\n.model dx d\n.subckt top p n o\n"
+    + "\n".join(f"x{i} p n o amp k={i + 1}" for i in range(1_500)),
+}
+
+
+@pytest.mark.parametrize("name", list(SLOW))
+def test_no_text_takes_long(name: str, folder: Path) -> None:
+    """Each is short work, or refused; 10 s is far above what any takes and far below what a square law
+    would."""
+    parameters = " params: k=1" if name == "many sets" else ""
+    path = write(folder, f".subckt amp p n o{parameters}\nr1 p n 1k\nr3 o 0 1k\n{SLOW[name]}\n.ends\n")
+    begun = time.process_time()
+    with contextlib.suppress(SpecError):
+        screen(path, folder)
+    assert time.process_time() - begun < 10
+
+
+def test_names_of_files_cannot_carry_lines_into_messages(folder: Path) -> None:
+    path = folder / "a\n.control\x1b.lib"
+    path.write_text(GOOD + ".bogus\n" + GOOD)
+    text = str(refusal(path, folder))
+    assert len(text.splitlines()) == 2
+    assert r"a\n.control\x1b.lib:6:1: .bogus" in text
+    assert "NUL" in str(refusal(folder / "a\0.lib", folder))

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from modepair.circuits.screening.folding import Folder
 from modepair.circuits.screening.frames import Frame
-from modepair.circuits.screening.inside import FindModel, Inside, ModelUse, plain_names
+from modepair.circuits.screening.inside import FindModel, Inside, ModelUse, Spellings, plain_names
 from modepair.circuits.screening.models import Model
 from modepair.circuits.screening.numbers import show_number
 from modepair.circuits.screening.passives import PASSIVE_MODELS
@@ -61,8 +61,8 @@ class Elaboration:
         self._built: dict[tuple[int, int, tuple[tuple[str, float], ...]], _Built | None] = {}
         self._made: dict[tuple[int, int], ModelUse] = {}
         self._frames: list[Frame] = []
-        self._names = set(top.subcircuits)
-        self._model_names: set[str] = set()
+        self._names = Spellings(top.subcircuits)
+        self._model_names = Spellings()
         self._active: list[Subcircuit] = []
 
     def run(self) -> None:
@@ -128,6 +128,7 @@ class Elaboration:
     def _written(self, subcircuit: Subcircuit, frame: Frame, given: bool) -> _Built | None:
         lines: list[str] = []
         count, outer, clean = 0, set[str](), not subcircuit.faulty
+        self.folder.charge(subcircuit.card.place(), len(subcircuit.elements))
         try:
             for name in subcircuit.parameters:
                 self.folder.parameter(name, frame)
@@ -179,7 +180,7 @@ class Elaboration:
         if not clean:
             return None
         own = subcircuit.parent is self.top and not given
-        name = self.prefix + (subcircuit.name if own else _free(subcircuit.name, self._names))
+        name = self.prefix + (subcircuit.name if own else self._names.free(subcircuit.name))
         ports = " ".join(inside.node(port, subcircuit.card.place()) for port in subcircuit.ports)
         self.subcircuits.append("\n".join((f".subckt {name} {ports}", *lines, f".ends {name}")))
         return _Built(name, count, frozenset(outer | frame.outer))
@@ -246,19 +247,11 @@ class Elaboration:
             )
             name = model.name
             if model.kind not in _NOT_WRITTEN:
-                name = self.prefix + _free(plain_names([model.name], "m")[model.name], self._model_names)
+                name = self.prefix + self._model_names.free(plain_names([model.name], "m")[model.name])
                 pairs = " ".join(f"{key}={show_number(value)}" for key, value in values.items())
                 self.models.append(f".model {name} {model.kind}({pairs})")
             self._made[key] = ModelUse(model.kind, name, values)
         return self._made[key]
-
-
-def _free(name: str, taken: set[str]) -> str:
-    spelling, count = name, 2
-    while spelling in taken:
-        spelling, count = f"{name}_{count}", count + 1
-    taken.add(spelling)
-    return spelling
 
 
 def _instantiated(scope: Scope) -> set[str]:

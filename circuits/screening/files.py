@@ -44,6 +44,8 @@ class Files:
 
     def name(self, path: Path) -> str:
         """Return a file's name as the user would give it: relative to the root."""
+        if "\0" in str(path):
+            return shown(str(path))
         written = Path(os.path.abspath(path))
         for inner, root in ((written, self._written_root), (Path(os.path.realpath(path)), self.root)):
             if inner.is_relative_to(root):
@@ -158,6 +160,8 @@ class Files:
     def _read(self, path: Path, place: Place) -> tuple[Path, bytes]:
         """Return the real path and the bytes of a plain file inside the root."""
         name = self.name(path)
+        if "\0" in str(path):
+            raise CardError(place, "a file name holds a NUL character; rename the file")
         real = Path(os.path.realpath(path))
         self._check_inside(real, place, name)
         limit = self.findings.limits.file_bytes

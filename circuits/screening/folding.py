@@ -36,7 +36,7 @@ from modepair.circuits.screening.functions import (
     interpolated,
 )
 from modepair.circuits.screening.parsing import Expression
-from modepair.circuits.screening.places import CardError, Findings, KnownError
+from modepair.circuits.screening.places import CardError, Findings, KnownError, Place, TooMuchWorkError
 from modepair.sweeps.faults import shown
 
 __all__ = ["Folder"]
@@ -137,21 +137,33 @@ class Folder:
             seen = seen.parent
         return None
 
+    def charge(self, place: Place, steps: int = 1) -> None:
+        """Count steps of work.
+
+        Raises
+        ------
+        TooMuchWorkError
+            When the work of the whole file is too much.
+        """
+        self._work += steps
+        if self._work > self.limits.work:
+            raise TooMuchWorkError(place)
+
     def enter(self, expression: Expression) -> None:
         """Count a step of work, and how deep it lies inside others, until `leave`.
 
         Raises
         ------
         CardError
-            When either is too much; Python's own recursion limit is never reached.
+            When it is too deep; Python's own recursion limit is never reached.
+        TooMuchWorkError
+            When the work of the whole file is too much.
         """
-        self._work += 1
         if self._level >= 3 * self.limits.expression_depth:
             raise expression.refused("parameters and functions depend on each other too deep; write them out")
+        self._work += 1
         if self._work > self.limits.work:
-            raise expression.refused(
-                "the functions and parameters of this file take too much work to put in; write them out"
-            )
+            raise TooMuchWorkError(expression.card.place(expression.offset))
         self._level += 1
 
     def leave(self) -> None:

@@ -27,7 +27,7 @@ from modepair.circuits.screening.parsing import Expression
 from modepair.circuits.screening.places import CardError, Findings, Place
 from modepair.circuits.screening.source import Card
 
-__all__ = ["Element", "Inside", "ModelUse", "plain_names"]
+__all__ = ["Element", "Inside", "ModelUse", "Spellings", "plain_names"]
 
 GROUND = "0"
 _SPELLINGS = {"+": "_p", "-": "_n", ".": "_", "/": "_"}
@@ -109,7 +109,7 @@ class ModelUse:
     values: dict[str, float]
 
 
-def plain_names(names: Iterable[str], first: str = "", taken: Iterable[str] = ()) -> dict[str, str]:
+def plain_names(names: Iterable[str], first: str = "") -> dict[str, str]:
     """Spell names with letters, digits and _ only, no two alike.
 
     Parameters
@@ -118,8 +118,6 @@ def plain_names(names: Iterable[str], first: str = "", taken: Iterable[str] = ()
         Names of nodes or elements as written, each once.
     first : str
         Put before a name that would begin with a digit; empty leaves it.
-    taken : iterable of str
-        Spellings that are not free.
 
     Returns
     -------
@@ -128,18 +126,31 @@ def plain_names(names: Iterable[str], first: str = "", taken: Iterable[str] = ()
     """
     ordered = list(dict.fromkeys(names))
     plain = {name: _plain(name, first) for name in ordered}
-    used = set(taken) | {name for name in ordered if plain[name] == name}
-    spelt: dict[str, str] = {}
-    for name in ordered:
-        if plain[name] == name:
-            spelt[name] = name
-            continue
-        spelling, count = plain[name], 2
-        while spelling in used:
-            spelling, count = f"{plain[name]}_{count}", count + 1
-        used.add(spelling)
-        spelt[name] = spelling
-    return spelt
+    spellings = Spellings(name for name in ordered if plain[name] == name)
+    return {name: name if plain[name] == name else spellings.free(plain[name]) for name in ordered}
+
+
+class Spellings:
+    """Names that are taken, and free ones for others.
+
+    Parameters
+    ----------
+    taken : iterable of str
+        Names that are not free.
+    """
+
+    def __init__(self, taken: Iterable[str] = ()) -> None:
+        self._taken = set(taken)
+        self._next: dict[str, int] = {}
+
+    def free(self, hint: str) -> str:
+        """Take `hint`, or the first of ``hint_2``, ``hint_3``, ... that is free."""
+        name, count = hint, self._next.get(hint, 2)
+        while name in self._taken:
+            name, count = f"{hint}_{count}", count + 1
+        self._next[hint] = count
+        self._taken.add(name)
+        return name
 
 
 def _plain(name: str, first: str) -> str:
@@ -191,8 +202,8 @@ class Inside:
         for name, spelling in (*self._nodes.items(), *self._names.items()):
             if name != spelling:
                 self.findings.note(subcircuit.card.place(), f"{name} is spelt {spelling}")
-        self._used_nodes = set(self._nodes.values())
-        self._used_names = set(self._names.values())
+        self._used_nodes = Spellings(self._nodes.values())
+        self._used_names = Spellings(self._names.values())
 
     def node(self, name: str, place: Place) -> str:
         """Return a node's name in canonical text."""
@@ -223,11 +234,11 @@ class Inside:
 
     def fresh_node(self, hint: str) -> str:
         """Return a node name that nothing has yet."""
-        return _fresh(hint, self._used_nodes)
+        return self._used_nodes.free(hint)
 
     def fresh_name(self, hint: str) -> str:
         """Return an element name that nothing has yet."""
-        return _fresh(hint, self._used_names)
+        return self._used_names.free(hint)
 
     def model(self, name: str, place: Place, kinds: tuple[str, ...], what: str) -> ModelUse:
         """Return a model by its name as written."""
@@ -285,11 +296,3 @@ class Inside:
                     raise expression.refused("this is no expression")
 
         return spelt(node)
-
-
-def _fresh(hint: str, used: set[str]) -> str:
-    name, count = hint, 2
-    while name in used:
-        name, count = f"{hint}_{count}", count + 1
-    used.add(name)
-    return name

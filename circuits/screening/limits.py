@@ -53,7 +53,7 @@ class Limits:
     subcircuit_depth: int = 24
     expression_depth: int = 32
     expression_size: int = 20_000
-    work: int = 500_000
+    work: int = 200_000
     instances: int = 2_000
     elements: int = 20_000
     faults: int = 200

@@ -5,9 +5,9 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from modepair.circuits.screening.limits import Limits
-from modepair.sweeps.faults import Fault, ModepairError, SpecError
+from modepair.sweeps.faults import Fault, ModepairError, SpecError, shown
 
-__all__ = ["CardError", "Findings", "KnownError", "Place", "TooManyFaultsError"]
+__all__ = ["CardError", "Findings", "KnownError", "Place", "TooManyFaultsError", "TooMuchWorkError"]
 
 
 @dataclass(frozen=True, slots=True, order=True)
@@ -27,7 +27,8 @@ class Place:
     column: int = 0
 
     def __str__(self) -> str:
-        return f"{self.file}:{self.line}" if self.line else self.file
+        file = self.file if self.file.isprintable() else shown(self.file)
+        return f"{file}:{self.line}" if self.line else file
 
 
 class CardError(ModepairError, ValueError):
@@ -52,6 +53,25 @@ class CardError(ModepairError, ValueError):
 
 class KnownError(ModepairError, ValueError):
     """A follow-on of a fault that is already on the list; it is not reported again."""
+
+
+class TooMuchWorkError(ModepairError, ValueError):
+    """The work that a file asks for is over its limit; reading stops.
+
+    Parameters
+    ----------
+    place : Place
+        Where it ran out.
+    """
+
+    def __init__(self, place: Place) -> None:
+        super().__init__(place)
+        self.place = place
+
+    def __str__(self) -> str:
+        return (
+            "subcircuits, functions and parameters take too much work to put in; write them out, or use fewer"
+        )
 
 
 class TooManyFaultsError(ModepairError, ValueError):

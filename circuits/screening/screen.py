@@ -14,7 +14,13 @@ from modepair.circuits.screening.definitions import read_definitions
 from modepair.circuits.screening.elaboration import Elaboration
 from modepair.circuits.screening.files import Files
 from modepair.circuits.screening.limits import Limits
-from modepair.circuits.screening.places import CardError, Findings, Place, TooManyFaultsError
+from modepair.circuits.screening.places import (
+    CardError,
+    Findings,
+    Place,
+    TooManyFaultsError,
+    TooMuchWorkError,
+)
 from modepair.circuits.screening.source import Card
 
 __all__ = ["ScreenedModel", "screen"]
@@ -95,6 +101,9 @@ def screen(path: Path, root: Path, *, limits: Limits = _LIMITS, prefix: str = ""
         elaboration.run()
     except TooManyFaultsError:
         pass
+    except TooMuchWorkError as stopped:
+        with contextlib.suppress(TooManyFaultsError):
+            findings.refuse(CardError(stopped.place, str(stopped)))
     except CardError as refused:
         place = refused.place if refused.place.file else Place(name)
         with contextlib.suppress(TooManyFaultsError):

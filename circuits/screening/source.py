@@ -28,9 +28,10 @@ _STRANGE = re.compile("[^\t\x20-\x7e]")
 _TAKEN = re.compile(r"[`\\@#]")
 _TAIL = re.compile(r";|//|(?:(?<=[ \t,])|^)\$")
 _ENCRYPTED = re.compile(
-    r"\$cdnenc|\$encrypted|\$begin_encrypt|^\s*[.*]*\s*\.?(?:un)?prot(?:ect)?\s*$|^\s*\*?\s*\$?encrypt(?:ed)?_?(?:lib|begin|start)"
+    r"\$cdnenc|\$encrypted|\$begin_encrypt"
+    r"|^[.*]* ?\.?(?:un)?prot(?:ect)?$|^\*? ?\$?encrypt(?:ed)?_?(?:lib|begin|start)"
 )
-_COMMANDS = re.compile(r"\s*\*\s*(?:#|ng_script)")
+_COMMANDS = re.compile(r"\*\s*(?:#|ng_script)")
 
 
 @dataclass(frozen=True)
@@ -181,12 +182,12 @@ def _without_comment(raw: str, place: Place) -> str:
             f"{name} is in this line; a hidden line end can carry a command; write plain lines",
         )
     lower = raw.lower()
-    if _ENCRYPTED.search(lower):
+    if _ENCRYPTED.search(lower.strip()):
         raise CardError(
             place,
             "this file has an encrypted block, which cannot be checked; ask its maker for a readable model",
         )
-    if _COMMANDS.match(lower):
+    if _COMMANDS.match(lower.strip()):
         raise CardError(
             place, f"ngspice runs this comment as a command ({shown(raw.strip())}); remove the line"
         )
