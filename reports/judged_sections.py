@@ -9,8 +9,8 @@ import pandas as pd
 
 from modepair.reports.axis_labels import AxisValues
 from modepair.reports.interference import line_column
+from modepair.reports.markdown import escape_markdown, markdown_table
 from modepair.reports.readings import frequency_text
-from modepair.reports.summary import escape_markdown
 from modepair.reports.tables import ROWS_OF_MANY, Column
 from modepair.reports.verdicts import case_names, overall, shown_verdicts, verdict_columns
 from modepair.sweeps import render
@@ -24,14 +24,6 @@ FROM_MEMORY = (
 )
 
 _MOST_LINES = 4
-
-
-def _table(columns: Sequence[Column]) -> str:
-    rows = [[escape_markdown(column.header) for column in columns]]
-    rows.append([":---" if column.justify == "left" else "---:" for column in columns])
-    cells = zip(*(column.cells for column in columns), strict=True)
-    rows += [[escape_markdown(cell) for cell in row] for row in cells]
-    return "\n".join(f"| {' | '.join(row)} |" for row in rows)
 
 
 def verdict_section(
@@ -58,7 +50,7 @@ def verdict_section(
     labels, names = case_names(cases, axes)
     shown, note = shown_verdicts(verdicts)
     columns = [column for column in verdict_columns(shown, labels) if any(column.cells)]
-    parts = [f"**{escape_markdown(overall(verdicts, names))}**", _table(columns)]
+    parts = [f"**{escape_markdown(overall(verdicts, names))}**", markdown_table(columns)]
     if note:
         parts.append(escape_markdown(note))
     if changes:
@@ -140,7 +132,7 @@ def interference_section(cases: pd.DataFrame, axes: Iterable[AxisValues], interf
         converter = interference.converter
         step = render(converter.code_volts, "V", 4)
         parts.append(escape_markdown(f"One code of the {converter.bits:.0f}-bit converter is {step}."))
-    parts.append(_table(columns))
+    parts.append(markdown_table(columns))
     if len(shown) < len(done):
         parts.append(
             f"Shown: the {len(shown)} cases with the greatest error of {len(done)}; all are in cases.csv."

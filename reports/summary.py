@@ -12,6 +12,7 @@ import pandas as pd
 from jinja2 import Environment, PackageLoader, StrictUndefined, Template
 
 from modepair.reports.axis_labels import AxisValues, axis_columns, case_texts, short_names, varying
+from modepair.reports.markdown import escape_markdown
 from modepair.reports.readings import decibel_text, frequency_text
 from modepair.reports.tables import MOST_ROWS, ROWS_OF_MANY, figure_columns
 
@@ -108,29 +109,6 @@ class Summary:
     where: str = "cases.csv"
     opening: Mapping[str, str] = field(default_factory=dict)
     further: Mapping[str, str] = field(default_factory=dict)
-
-
-_MARKS = re.compile(r"([\\`*_\[\]<>|~&$])")
-
-
-def escape_markdown(text: object) -> str:
-    """Escape a text so that Markdown shows it as it is, on one line, inside a table too.
-
-    Parameters
-    ----------
-    text : object
-        Anything with a text.
-
-    Returns
-    -------
-    str
-        The text with white space runs as one blank and a backslash before each character that Markdown or
-        HTML could take as a mark; where it starts the text, before that of a heading or a list too.
-    """
-    line = " ".join(str(text).split())
-    line = _MARKS.sub(r"\\\1", line)
-    line = re.sub(r"^(\d+)([.)])(?=\s|$)", r"\1\\\2", line)
-    return re.sub(r"^([-+](?!\d)|[=#])", r"\\\1", line)
 
 
 def summary_text(summary: Summary) -> str:

@@ -107,7 +107,21 @@ def _figure(frequency_hz: float) -> str:
     return frequency_text(frequency_hz, pad=True)
 
 
-def _lead_columns(cases: pd.DataFrame, axes: dict[str, list[str]]) -> list[Column]:
+def lead_columns(cases: pd.DataFrame, axes: dict[str, list[str]]) -> list[Column]:
+    """Write what tells cases apart, case number and axis values, as columns of text.
+
+    Parameters
+    ----------
+    cases : DataFrame
+        Rows with `case`.
+    axes : dict of str to list of str
+        Path of each axis to show, and its text in each row.
+
+    Returns
+    -------
+    list of Column
+        The leading columns of a table.
+    """
     names = short_names(list(axes))
     numbers = [str(case) for case in cases["case"]]
     return [
@@ -182,6 +196,29 @@ def console_for(file: TextIO) -> Console:
     return Console(file=file, highlight=False, width=PIPED_WIDTH, force_terminal=False, color_system=None)
 
 
+def print_columns(
+    console: Console, lead: Sequence[Column], rest: Sequence[Column], failed: Sequence[bool] = ()
+) -> None:
+    """Print columns as a table; one wider than the console is split into several, never cut.
+
+    Parameters
+    ----------
+    console : rich.console.Console
+        Where to print.
+    lead : sequence of Column
+        Columns that stand in each of the tables.
+    rest : sequence of Column
+        Columns that are shared out; at least one.
+    failed : sequence of bool, optional
+        Rows to mark as failed.
+    """
+    marked = list(failed) or [False] * len(rest[0].cells)
+    for index, group in enumerate(_groups(lead, rest, console.width)):
+        if index:
+            console.print()
+        console.print(_table(lead, group, marked))
+
+
 def print_cases(
     console: Console,
     cases: pd.DataFrame,
@@ -215,7 +252,7 @@ def print_cases(
     shown = cases if not many else done.nsmallest(ROWS_OF_MANY, "cmrr_db_lowest") if len(done) else done
     vary, fixed = varying(axis_columns(cases, axis_list))
     labels = axis_columns(shown, axis_list)
-    lead = _lead_columns(shown, {path: labels[path] for path in vary})
+    lead = lead_columns(shown, {path: labels[path] for path in vary})
     if len(done):
         shown_done = (shown["state"] == "done").tolist()
         figures = figure_columns(shown[shown["state"] == "done"], spots_hz, band_hz)
@@ -223,10 +260,7 @@ def print_cases(
             _with_failures(column, shown_done, "–" if index else "failed")
             for index, column in enumerate(figures)
         ]
-        for index, group in enumerate(_groups(lead, rest, console.width)):
-            if index:
-                console.print()
-            console.print(_table(lead, group, [not ok for ok in shown_done]))
+        print_columns(console, lead, rest, [not ok for ok in shown_done])
     console.print()
     for line in _notes(cases, vary, fixed, len(shown) if many else None, where):
         console.print(textwrap.fill(line, console.width, subsequent_indent="    "), markup=False)

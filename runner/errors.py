@@ -13,6 +13,7 @@ __all__ = [
     "NothingToJudgeError",
     "OutputError",
     "ReadingError",
+    "RequestError",
     "SimulationError",
 ]
 
@@ -48,6 +49,10 @@ class EngineMissingError(ModepairError, RuntimeError):
             "libraries. Install it with: apt-get install libngspice0 (Debian, Ubuntu), dnf install "
             f"libngspice (Fedora), brew install libngspice (macOS); or name its file in {self.variable}"
         )
+
+
+class RequestError(ModepairError, ValueError):
+    """The spec has nothing of what a command asks for: no such case or draw, no spots, no tolerances."""
 
 
 class OutputError(ModepairError, OSError):

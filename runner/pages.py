@@ -6,8 +6,13 @@ import math
 from functools import partial
 from pathlib import Path
 
+import pandas as pd
+
 from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
+from modepair.reports.board_tables import boards_section, worst_case_section
 from modepair.reports.judged_sections import interference_section, verdict_section
+from modepair.reports.yields import Yield, draws_needed
+from modepair.runner.budget_pages import case_labels
 from modepair.runner.folder import RunFolder
 from modepair.runner.judging import Judged
 from modepair.runner.results import Results
@@ -16,7 +21,7 @@ from modepair.sweeps.axes import settings
 from modepair.sweeps.cases import base_settings
 from modepair.sweeps.quantities import Kind
 
-__all__ = ["asked", "write_pages"]
+__all__ = ["asked", "board_claim", "write_pages"]
 
 SECTIONS = {"stage.parts.": "parts", "stage.": "stage", "source.parts.": "source", "source.": "source"}
 
@@ -94,6 +99,7 @@ def write_pages(
     provenance: dict[str, str],
     judged: Judged,
     measured: str = "",
+    worst: pd.DataFrame | None = None,
 ) -> None:
     """Write plots and summary of a run.
 
@@ -111,6 +117,8 @@ def write_pages(
         Its verdicts.
     measured : str
         The section on measurements, in Markdown; empty where there is none.
+    worst : DataFrame, optional
+        The worst case of each case.
     """
     spec = sweep.spec
     plots = {}
@@ -137,7 +145,9 @@ def write_pages(
         caution_flags=("model", "nominal", *spec.cautions),
         plots=plots,
         opening=_verdict(sweep, results, judged),
-        further=_interference(sweep, results) | ({"Measured": measured} if measured else {}),
+        further=_boards(sweep, results, worst)
+        | _interference(sweep, results)
+        | ({"Measured": measured} if measured else {}),
     )
     folder.write_text("summary.md", summary_text(summary))
 
@@ -146,6 +156,26 @@ def _verdict(sweep: Sweep, results: Results, judged: Judged) -> dict[str, str]:
     if not len(judged.verdicts):
         return {}
     return {"Verdict": verdict_section(judged.verdicts, results.cases, sweep.axes, judged.changes)}
+
+
+def board_claim(cases: pd.DataFrame) -> str:
+    """Say what so many draws can claim."""
+    most = f"{draws_needed(0.999):,} draws, all passing, are needed to claim a yield of 99.9 % with 95 % confidence"
+    if "yield" not in cases:
+        return f"No yield: the spec has no limits.cmrr to pass. {most}."
+    drawn = int(cases["draws"].max())
+    best = Yield(drawn, drawn).interval[0]
+    return f"{drawn:,} draws that all pass show a yield above {100 * best:.3g} %; {most}."
+
+
+def _boards(sweep: Sweep, results: Results, worst: pd.DataFrame | None) -> dict[str, str]:
+    if results.boards is None or not (results.cases["draws"] > 0).any():
+        return {}
+    cases, axes = results.cases, sweep.axes
+    found = {"Boards": boards_section(cases, axes, sweep.spec.frequency.spots, board_claim(cases))}
+    if worst is not None:
+        found["Worst case"] = worst_case_section(worst, case_labels(sweep, worst["case"].unique().tolist()))
+    return found
 
 
 def _interference(sweep: Sweep, results: Results) -> dict[str, str]:

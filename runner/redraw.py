@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 
+from modepair.runner.errors import RequestError
 from modepair.runner.plans import drawn_case
 from modepair.sweeps import Block, Streams, Sweep, boards
 
@@ -30,14 +31,14 @@ def board_sweep(sweep: Sweep, draw: int) -> Sweep:
 
     Raises
     ------
-    ValueError
+    RequestError
         If the spec has no tolerances or no such draw.
     """
     tolerance = sweep.spec.tolerance
     if tolerance is None:
-        raise ValueError("the spec has no tolerance section, so it has no draws")
+        raise RequestError("the spec has no tolerance section, so it has no draws")
     if not 1 <= draw <= tolerance.draws:
-        raise ValueError(f"draw must be 1 to {tolerance.draws:.0f}, not {draw}")
+        raise RequestError(f"draw must be 1 to {tolerance.draws:.0f}, not {draw}")
     streams = Streams(tolerance)
     blocks = []
     for block in sweep.blocks:

@@ -109,7 +109,7 @@ def run(
         If there is no ngspice library.
     OutputError
         If the run folder cannot be written.
-    ValueError
+    RequestError
         If the spec has no such draw.
     """
     started = datetime.now(UTC)
@@ -133,6 +133,7 @@ def run(
     ):
         solver.warm()
         # What follows takes a second to import, in which the workers start.
+        from modepair.runner.budget_pages import work_out_worst_case
         from modepair.runner.decks import write_decks
         from modepair.runner.judging import judge_run
         from modepair.runner.measuring import measured_section, write_measured
@@ -161,11 +162,14 @@ def run(
         results.cases.to_csv(folder.path("cases.csv"), index=False)
         if len(judged.verdicts):
             judged.verdicts.to_csv(folder.path("verdicts.csv"), index=False)
+        worst = work_out_worst_case(folder, sweep, solver, analyses, results) if draws else None
         if draw is not None:
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
         measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
         made_of = provenance(spec, results.engine, started)
-        write_pages(folder, sweep, results, made_of, judged, measured_section(measured, spec, results.cases))
+        write_pages(
+            folder, sweep, results, made_of, judged, measured_section(measured, spec, results.cases), worst
+        )
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
     return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes)

@@ -7,7 +7,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 from markdown_it import MarkdownIt
 
-from modepair.reports.summary import CAUTIONS, Summary, cautions, escape_markdown, summary_text
+from modepair.reports.markdown import escape_markdown
+from modepair.reports.summary import CAUTIONS, Summary, cautions, summary_text
 from tests.synthetic_cases import BAND_HZ, SPOTS_HZ, fail, one_pole_cases
 
 MADE = one_pole_cases(2, 2, perfect=(3,))

@@ -9,8 +9,10 @@ import sys
 
 import typer
 
+from modepair.runner.cli.budget import budget_command
 from modepair.runner.cli.check import check_command
 from modepair.runner.cli.netlist import netlist_command
+from modepair.runner.cli.opamp import opamp_command
 from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
 from modepair.runner.cli.run import run_command
 from modepair.runner.cli.schema import schema_command
@@ -28,7 +30,9 @@ app = typer.Typer(
 )
 app.command("run")(run_command)
 app.command("check")(check_command)
+app.command("budget")(budget_command)
 app.command("netlist")(netlist_command)
+app.command("opamp")(opamp_command)
 app.command("schema")(schema_command)
 
 

@@ -50,6 +50,13 @@ def _print_run(result: Run) -> None:
     print_cases(
         console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv")
     )
+    if "draws" in result.cases:
+        from modepair.reports.board_tables import print_boards
+        from modepair.runner.pages import board_claim
+
+        claim = board_claim(result.cases)
+        print_boards(console, result.cases, spec.axes, spec.frequency.spots, claim)
+        console.print()
     if len(result.verdicts):
         from modepair.reports.verdicts import case_names, overall
 
