@@ -56,12 +56,15 @@ class Solved:
         Reason for each position that failed.
     engine : str
         Version of ngspice; empty where none ran.
+    lost : int
+        Cases that cost the process they ran in.
     """
 
     position: npt.NDArray[np.int64]
     gains: npt.NDArray[np.complex128]
     failures: dict[int, str] = field(default_factory=dict)
     engine: str = ""
+    lost: int = 0
 
 
 def _unusable(batch: Batch) -> dict[int, str]:

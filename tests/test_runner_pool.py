@@ -48,7 +48,7 @@ class Dying(Executor):
         self.inner = inner
 
     def submit(self, task: Callable[..., Any], /, *args: Any, **kwargs: Any) -> Future[Any]:
-        return self.inner.submit(dying if task is solve_batch else task, *args, **kwargs)
+        return self.inner.submit(task, *(dying if arg is solve_batch else arg for arg in args), **kwargs)
 
     def shutdown(self, wait: bool = True, *, cancel_futures: bool = False) -> None:
         self.inner.shutdown(wait, cancel_futures=cancel_futures)

@@ -1,0 +1,158 @@
+"""Workers: local processes, each in an empty directory of its own, that end with the process that started them.
+
+They are started by spawn. The directory is empty since ngspice runs a start-up file that it finds in its directory.
+"""
+
+from __future__ import annotations
+
+import multiprocessing
+import os
+import shutil
+import signal
+import sys
+import tempfile
+import threading
+from collections.abc import Callable, Iterator
+from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
+from multiprocessing import resource_tracker
+from multiprocessing.connection import wait
+from multiprocessing.context import SpawnContext, SpawnProcess
+from pathlib import Path
+from typing import Any, ParamSpec, TypeVar
+
+from modepair.runner.allowances import confine
+
+__all__ = ["ExecutorFactory", "submit", "worker_pool"]
+
+ExecutorFactory = Callable[[int], Executor]
+
+P = ParamSpec("P")
+R = TypeVar("R")
+
+STOPPING = {signal.SIGINT, signal.SIGTERM, signal.SIGHUP}
+"""Signals that must not strike while a worker is being started."""
+
+
+class _Workers(SpawnContext):
+    """Starts processes and remembers them."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.started: list[SpawnProcess] = []
+
+    def Process(self, *args: Any, **kwargs: Any) -> SpawnProcess:  # type: ignore[override]  # noqa: N802
+        """Make a process; a `ProcessPoolExecutor` calls this for each of its workers."""
+        process = SpawnProcess(*args, **kwargs)
+        self.started = [other for other in self.started if other.is_alive()]
+        self.started.append(process)
+        return process
+
+    def end(self) -> None:
+        """Kill what still runs."""
+        for process in self.started:
+            if process.is_alive():
+                process.kill()
+        for process in self.started:
+            process.join(5.0)
+
+
+def _leave_with_parent(home: str) -> None:
+    """End this worker when the process that started it is gone, however it went, and take its directory along."""
+    parent = multiprocessing.parent_process()
+    if parent is not None:
+        wait([parent.sentinel])
+        shutil.rmtree(home, ignore_errors=True)
+        os._exit(1)
+
+
+def _start_worker(home: str) -> None:
+    """Prepare a worker: its own empty directory, no reaction to Ctrl-C, limits."""
+    signal.signal(signal.SIGINT, signal.SIG_IGN)
+    signal.pthread_sigmask(signal.SIG_UNBLOCK, STOPPING - {signal.SIGINT})
+    threading.Thread(target=_leave_with_parent, args=(home,), daemon=True).start()
+    directory = Path(home) / f"worker-{os.getpid()}"
+    try:
+        directory.mkdir()
+        os.chdir(directory)
+        # An empty start-up file here keeps ngspice from running one of the user's.
+        (directory / ".spiceinit").write_text("* empty\n", encoding="ascii")
+    except OSError as error:
+        confine(error)
+    else:
+        confine()
+
+
+@contextmanager
+def _main_module_hidden() -> Iterator[None]:
+    """Keep spawn from importing the main script again in each worker, which needs nothing of it."""
+    main = sys.modules["__main__"]
+    kept = {name: getattr(main, name) for name in ("__file__", "__spec__") if hasattr(main, name)}
+    main.__spec__ = None
+    main.__dict__.pop("__file__", None)
+    try:
+        yield
+    finally:
+        for name, value in kept.items():
+            setattr(main, name, value)
+
+
+@contextmanager
+def _undisturbed() -> Iterator[None]:
+    """Hold back Ctrl-C and the like for a moment; a worker started meanwhile never sees Ctrl-C."""
+    held = signal.pthread_sigmask(signal.SIG_BLOCK, STOPPING)
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, held)
+
+
+@contextmanager
+def worker_pool() -> Iterator[ExecutorFactory]:
+    """Give a factory of process pools; processes and their directories go when the block ends.
+
+    Yields
+    ------
+    callable
+        Takes a number of processes and returns a `ProcessPoolExecutor`.
+    """
+    home = tempfile.mkdtemp(prefix="modepair-")
+    # It would let signals through in the middle of the start of the first worker.
+    resource_tracker.ensure_running()
+    context = _Workers()
+
+    def make(jobs: int) -> Executor:
+        return ProcessPoolExecutor(jobs, context, initializer=_start_worker, initargs=(home,))
+
+    try:
+        yield make
+    finally:
+        context.end()
+        shutil.rmtree(home, ignore_errors=True)
+
+
+def submit(executor: Executor, task: Callable[P, R], *args: P.args, **kwargs: P.kwargs) -> Future[R]:
+    """Hand a task to an executor; one whose workers are gone gives a future that says so.
+
+    Parameters
+    ----------
+    executor : Executor
+        The executor.
+    task : callable
+        A function of a module.
+    *args, **kwargs
+        What it takes.
+
+    Returns
+    -------
+    Future
+        For what the task returns.
+    """
+    try:
+        with _main_module_hidden(), _undisturbed():
+            return executor.submit(task, *args, **kwargs)
+    except BrokenProcessPool as error:
+        broken: Future[R] = Future()
+        broken.set_exception(error)
+        return broken
