@@ -49,6 +49,8 @@ _LOOK: dict[str, Any] = {
 
 # Inches.
 _LEFT, _BOTTOM, _TOP, _RIGHT = 0.62, 0.5, 0.62, 0.15
+HEADING_LINE = 0.18
+"""Height of a line of a heading, in inches."""
 
 
 def in_our_look(function: Callable[P, R]) -> Callable[P, R]:
@@ -74,7 +76,18 @@ def in_our_look(function: Callable[P, R]) -> Callable[P, R]:
 
 
 def make_panels(
-    rows: int, columns: int, room: float, height: float, width: float, title: str, lower_height: float = 0.0
+    rows: int,
+    columns: int,
+    room: float,
+    height: float,
+    width: float,
+    title: str,
+    lower_height: float = 0.0,
+    *,
+    left: float = _LEFT,
+    between: float = 0.72,
+    above: float = 0.0,
+    subtitle: str = "",
 ) -> tuple[Figure, list[list[Axes]]]:
     """Lay out panels in inches, with room for labels right of the last column.
 
@@ -90,6 +103,12 @@ def make_panels(
         Text above them.
     lower_height : float
         Height of the other rows, in inches.
+    left, between : float
+        Room left of the first column and between columns, in inches.
+    above : float
+        Room above every row beside that for the name of its axis, such as for headings, in inches.
+    subtitle : str
+        A smaller line of text below the title.
 
     Returns
     -------
@@ -98,21 +117,21 @@ def make_panels(
     panels : list of list of Axes
         Rows of panels.
     """
-    between_rows, between_columns = 0.62, 0.72
+    between_rows, top_room = 0.62 + above, _TOP + above + (0.22 if subtitle else 0.0)
     heights = [height, *[lower_height] * (rows - 1)]
-    total_width = _LEFT + columns * width + (columns - 1) * between_columns + room + _RIGHT
-    total_height = _BOTTOM + sum(heights) + (rows - 1) * between_rows + _TOP
+    total_width = left + columns * width + (columns - 1) * between + room + _RIGHT
+    total_height = _BOTTOM + sum(heights) + (rows - 1) * between_rows + top_room
     figure = Figure(figsize=(total_width, total_height))
     FigureCanvasAgg(figure)
     panels = []
-    top = total_height - _TOP
+    top = total_height - top_room
     for row_height in heights:
         top -= row_height
         panels.append(
             [
                 figure.add_axes(
                     (
-                        (_LEFT + column * (width + between_columns)) / total_width,
+                        (left + column * (width + between)) / total_width,
                         top / total_height,
                         width / total_width,
                         row_height / total_height,
@@ -131,6 +150,16 @@ def make_panels(
             fontweight="bold",
             va="top",
             parse_math=False,
+        )
+    if subtitle:
+        figure.text(
+            0.12 / total_width,
+            1 - (0.36 if title else 0.1) / total_height,
+            subtitle,
+            fontsize=9,
+            va="top",
+            parse_math=False,
+            gid="subtitle",
         )
     return figure, panels
 
@@ -215,9 +244,44 @@ def level_axis(panel: Axes, levels: Sequence[FloatArray], name: str, steps: Sequ
     )
 
 
-def _above(panel: Axes) -> Any:
+def write_heading(
+    panel: Axes, heading: str, notes: Sequence[str] = (), at: float = 0.32, shift: float = -0.42
+) -> None:
+    """Write a panel's heading above it, in bold, and lines of notes between the two.
+
+    Parameters
+    ----------
+    panel : Axes
+        A panel whose figure has room above it.
+    heading : str
+        One line or more.
+    notes : sequence of str
+        Lines below the heading, the first one nearest to it.
+    at : float
+        Where the lowest line stands, in inches above the panel.
+    shift : float
+        Where lines start, in inches right of the panel's left edge.
+    """
+    lines = [(line, "bold", 9.5) for line in heading.split("\n") if line]
+    lines += [(note, "normal", 8.5) for note in notes]
+    for place, (line, weight, size) in enumerate(reversed(lines)):
+        panel.text(
+            0.0,
+            1.0,
+            line,
+            transform=_above(panel, shift, at + place * HEADING_LINE),
+            ha="left",
+            va="bottom",
+            fontweight=weight,
+            fontsize=size,
+            parse_math=False,
+            gid="heading" if weight == "bold" else "heading-note",
+        )
+
+
+def _above(panel: Axes, right: float = -0.42, up: float = 0.07) -> Any:
     figure = panel.get_figure(root=True)
-    return panel.transAxes + ScaledTranslation(-0.42, 0.07, figure.dpi_scale_trans)  # type: ignore[union-attr]
+    return panel.transAxes + ScaledTranslation(right, up, figure.dpi_scale_trans)  # type: ignore[union-attr]
 
 
 def draw_floor(panel: Axes, frequency_hz: FloatArray, floor_db: FloatArray, text: str, up: bool) -> None:

@@ -62,3 +62,25 @@ def decibel_text(level_db: float, at_floor: bool = False) -> str:
         The number, without its unit.
     """
     return f"> {math.floor(level_db + 0.05):d}" if at_floor else f"{level_db:.1f}"
+
+
+def ratio_text(ratio: float, digits: int = 3) -> str:
+    """Write an error ratio with an SI prefix: 9.09e-5 becomes ``90.9 µV/V``.
+
+    Parameters
+    ----------
+    ratio : float
+        |rho| in V/V, at least zero.
+    digits : int
+        Significant digits.
+
+    Returns
+    -------
+    str
+        The number, a space and the unit; below 0.1 nV/V, where a solve can tell nothing, ``< 0.1 nV/V``.
+    """
+    if ratio < 1e-10:
+        return "< 0.1 nV/V"
+    return str(Quantity(ratio, "V/V").render(prec=digits - 1, form="si", strip_zeros=False)).replace(
+        "uV", "µV"
+    )

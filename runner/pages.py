@@ -12,6 +12,7 @@ from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summa
 from modepair.reports.board_tables import boards_section, worst_case_section
 from modepair.reports.judged_sections import interference_section, verdict_section
 from modepair.reports.yields import Yield, draws_needed
+from modepair.runner.board_pages import plot_board_pages
 from modepair.runner.budget_pages import case_labels
 from modepair.runner.folder import RunFolder
 from modepair.runner.judging import Judged
@@ -134,6 +135,7 @@ def write_pages(
         ):
             figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
             plots[caption] = write_plot(figure, folder.path(name))[0].name
+    plots |= plot_board_pages(folder, sweep, results)
     summary = Summary(
         title=spec.title or Path(spec.path).stem,
         asked=asked(sweep),
