@@ -17,6 +17,7 @@ __all__ = [
     "board_columns",
     "boards_section",
     "budget_columns",
+    "percent_text",
     "print_boards",
     "print_budget",
     "worst_case_columns",
@@ -66,16 +67,27 @@ def board_columns(cases: pd.DataFrame, spots_hz: Sequence[float]) -> list[Column
     )
     columns.append(Column("worst\nboard\n", ["–" if pd.isna(d) else f"{d:.0f}" for d in cases["worst_draw"]]))
     if "yield" in cases:
-        columns.append(Column("yield\n\n%", [_percent(value) for value in cases["yield"]]))
+        columns.append(Column("yield\n\n%", [percent_text(value) for value in cases["yield"]]))
         both = zip(cases["yield_low"], cases["yield_high"], strict=True)
         columns.append(
-            Column("95 %\nsure of\n%", [f"{_percent(low)} to {_percent(high)}" for low, high in both])
+            Column("95 %\nsure of\n%", [f"{percent_text(low)} to {percent_text(high)}" for low, high in both])
         )
     return columns
 
 
-def _percent(share: float) -> str:
-    """A share in per cent that never rounds up to 100 or down to 0."""
+def percent_text(share: float) -> str:
+    """Write a share in per cent, never rounded up to 100 or down to 0.
+
+    Parameters
+    ----------
+    share : float
+        From 0 to 1.
+
+    Returns
+    -------
+    str
+        Per cent with as many decimals as that needs, two at least.
+    """
     percent = 100 * share
     for digits in range(2, 6):
         text = f"{percent:.{digits}f}"

@@ -13,7 +13,16 @@ from modepair.circuits import COPIES, OUTPUT, Deck, Structure, structures
 from modepair.runner.batches import Batch
 from modepair.sweeps import Streams, Sweep, Variate, boards, variates
 
-__all__ = ["BATCH_CASES", "BatchPlan", "DrawnCase", "Plan", "drawn_case", "plan_batches", "plan_draws"]
+__all__ = [
+    "BATCH_CASES",
+    "BatchPlan",
+    "DrawnCase",
+    "Plan",
+    "case_draws",
+    "drawn_case",
+    "plan_batches",
+    "plan_draws",
+]
 
 BATCH_CASES = 64
 """Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
@@ -169,11 +178,33 @@ def plan_draws(sweep: Sweep, streams: Streams) -> Iterator[DrawPlan]:
     DrawPlan
         Case by case; draw d of case c has the place (c - 1)(draws + 1) + d, behind the nominal run's.
     """
-    draws = streams.draws
     decks: dict[object, Deck] = {}
     for case in range(1, sweep.count + 1):
-        drawn = drawn_case(sweep, case)
-        for start in range(0, draws, DRAWS_OF_BATCH):
-            count = min(DRAWS_OF_BATCH, draws - start)
-            first = (case - 1) * (draws + 1) + 1 + start
-            yield DrawPlan(np.arange(first, first + count), drawn, streams, start, decks)
+        first = (case - 1) * (streams.draws + 1) + 1
+        yield from case_draws(drawn_case(sweep, case), streams, first, decks)
+
+
+def case_draws(
+    drawn: DrawnCase, streams: Streams, first: int, decks: dict[object, Deck]
+) -> Iterator[DrawPlan]:
+    """Cut the draws of one case into batches.
+
+    Parameters
+    ----------
+    drawn : DrawnCase
+        The case.
+    streams : Streams
+        Its random numbers.
+    first : int
+        Place of draw 1 in the order of results.
+    decks : dict
+        Decks by structure, kept from one case to the next.
+
+    Yields
+    ------
+    DrawPlan
+        In the order of the draws.
+    """
+    for start in range(0, streams.draws, DRAWS_OF_BATCH):
+        count = min(DRAWS_OF_BATCH, streams.draws - start)
+        yield DrawPlan(first + np.arange(start, start + count), drawn, streams, start, decks)

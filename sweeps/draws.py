@@ -26,6 +26,9 @@ NAMES = tuple(dict.fromkeys([*PARTS, *STAGE_PART_KINDS]))
 
 TINY = 2.0**-54
 
+SET = "set of "
+"""What the key of a matched set's common factor begins with."""
+
 
 @dataclass(frozen=True)
 class Variate:
@@ -56,6 +59,11 @@ class Variate:
     law: str
     reciprocal: bool
     entry: int
+
+    @property
+    def common(self) -> bool:
+        """Whether it moves a matched set together."""
+        return self.key.startswith(SET)
 
 
 def variates(
@@ -193,7 +201,7 @@ def _latin(generator: np.random.Generator, draws: int) -> Floats:
 
 def _dimension(key: str) -> int:
     """Dimension of a key: its own for each name and for each set, whatever else varies."""
-    name = key.removeprefix("set of ")
+    name = key.removeprefix(SET)
     return NAMES.index(name) + (len(NAMES) if name != key else 0)
 
 

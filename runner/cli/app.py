@@ -16,6 +16,7 @@ from modepair.runner.cli.opamp import opamp_command
 from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
 from modepair.runner.cli.run import run_command
 from modepair.runner.cli.schema import schema_command
+from modepair.runner.cli.tighten import tighten_command
 
 __all__ = ["app", "main"]
 
@@ -31,6 +32,7 @@ app = typer.Typer(
 app.command("run")(run_command)
 app.command("check")(check_command)
 app.command("budget")(budget_command)
+app.command("tighten")(tighten_command)
 app.command("netlist")(netlist_command)
 app.command("opamp")(opamp_command)
 app.command("schema")(schema_command)
