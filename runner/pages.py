@@ -42,6 +42,8 @@ def _tolerance_text(entry: ToleranceEntry) -> str:
     ]
     if entry.least is not None:
         shares.append(f"least {20 * math.log10(entry.least):.6g} dB")
+    elif entry.reciprocal:
+        shares.append("least its op-amp's own")
     return f"{', '.join(entry.of)}: {', '.join(shares)}, {entry.law}"
 
 

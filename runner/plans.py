@@ -138,8 +138,7 @@ def drawn_case(sweep: Sweep, case: int) -> DrawnCase:
     tolerance = sweep.spec.tolerance
     if tolerance is None:
         return DrawnCase(case, block.topology, parts, ())
-    present = [name for name, value in parts.items() if value] + [f"{a}.cmrr" for a in block.opamps]
-    return DrawnCase(case, block.topology, parts, variates(tolerance, at_row(block.tolerances), present))
+    return DrawnCase(case, block.topology, parts, variates(tolerance, at_row(block.tolerances), parts))
 
 
 @dataclass(frozen=True)

@@ -146,7 +146,7 @@ def tighten(
         raise RequestError(
             f"set must be 0 to {len(tolerance.parts) - 1}, an entry of tolerance.parts, not {entry}"
         )
-    if tolerance.parts[entry].least is not None:
+    if tolerance.parts[entry].reciprocal:
         raise RequestError(
             f"tolerance.parts[{entry}] is op-amps' CMRR, which has no grades; choose another op-amp"
         )

@@ -67,7 +67,7 @@ class Variate:
 
 
 def variates(
-    tolerance: Tolerance, values: Mapping[str, float], present: Sequence[str]
+    tolerance: Tolerance, values: Mapping[str, float], parts: Mapping[str, float]
 ) -> tuple[Variate, ...]:
     """List what varies in one case.
 
@@ -77,8 +77,8 @@ def variates(
         The tolerance section.
     values
         Its values in this case by path, such as ``tolerance.parts[0].matching``.
-    present
-        Names of the parts that the case has, and its op-amps' CMRR.
+    parts
+        Nominal SI values of the case by part name. A part at zero does not vary.
 
     Returns
     -------
@@ -89,13 +89,16 @@ def variates(
     for index, entry in enumerate(tolerance.parts):
         path = f"tolerance.parts[{index}]"
         absolute, matching, least = (values.get(f"{path}.{key}") for key in ("absolute", "matching", "least"))
-        members = tuple(name for name in entry.of if name in present)
-        if least is not None:
-            found += [Variate(name, name, (name,), 1.0 / least, entry.law, True, index) for name in members]
+        if entry.reciprocal:
+            for name in entry.of:
+                edge = _cmrr_edge(name, least, parts)
+                if edge:
+                    found.append(Variate(name, name, (name,), edge, entry.law, True, index))
             continue
+        members = tuple(name for name in entry.of if parts.get(name))
         if matching is not None and absolute is not None and members:
             # Keyed by the member that the vocabulary names first, so that their order in the file changes nothing.
-            key = f"set of {min(entry.of, key=NAMES.index)}"
+            key = SET + min(entry.of, key=NAMES.index)
             found.append(
                 Variate(f"{' '.join(members)} together", key, members, absolute, entry.law, False, index)
             )
@@ -103,6 +106,14 @@ def variates(
         if own is not None:
             found += [Variate(name, name, (name,), own, entry.law, False, index) for name in members]
     return tuple(found)
+
+
+def _cmrr_edge(name: str, least: float | None, parts: Mapping[str, float]) -> float:
+    """Signed reciprocal of CMRR at the edge: of the least given, else of the op-amp's own; 0 where there is none."""
+    if f"{name.partition('.')[0]}.open_loop_gain" not in parts:
+        return 0.0
+    own = parts.get(name)
+    return 1.0 / least if least is not None else (1.0 / abs(own) if own else 0.0)
 
 
 def boards(

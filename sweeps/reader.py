@@ -135,7 +135,7 @@ def _read_spec(
     faults = gain_faults(bound)
     if spec.tolerance and not faults:
         sweep = expand(bound)
-        valued = {name for block in sweep.blocks for name in block.parts}
+        valued = {name for block in sweep.blocks for name in (*block.parts, *block.tolerances)}
         results = sweep.count * int(spec.tolerance.draws)
         faults = list(unvaried_faults(document, spec.tolerance, valued, results))
     faults.sort(key=lambda fault: (fault.line, fault.column))

@@ -79,10 +79,10 @@ class ToleranceEntry(Section):
     matching
         Bound of each part's relative error within the set.
     least
-        For op-amps' CMRR: the data sheet's minimum, a ratio. The signed reciprocal of CMRR varies about
-        zero, three sigma (or the bound) at 1/least.
+        For op-amps' CMRR: the data sheet's minimum, a ratio; None: each op-amp's own `cmrr`. The signed
+        reciprocal of CMRR varies about zero, three sigma (or the bound) at 1/least.
     distribution
-        rectangular, normal (the tolerance is 3 sigma), triangular or two-point. None: normal for `least`,
+        rectangular, normal (the tolerance is 3 sigma), triangular or two-point. None: normal for CMRR,
         else rectangular, since a bound is all that is known (JCGM 101:2008, 6.4.2).
     """
 
@@ -95,7 +95,12 @@ class ToleranceEntry(Section):
     @property
     def law(self) -> str:
         """The distribution that holds."""
-        return self.distribution or ("normal" if self.least is not None else "rectangular")
+        return self.distribution or ("normal" if self.reciprocal else "rectangular")
+
+    @property
+    def reciprocal(self) -> bool:
+        """Whether it is about op-amps' CMRR, whose signed reciprocal varies."""
+        return all(name.endswith(".cmrr") for name in self.of)
 
 
 class Tolerance(Section):
@@ -172,9 +177,8 @@ def tolerance_faults(
             seen.setdefault(name, _where(document, at))
         given = keys | varied
         of_cmrr = bool(names) and all(name.endswith(".cmrr") for name in names)
-        if entry and not given & ({"absolute", "matching", "least"} if of_cmrr else {"absolute", "least"}):
-            key, kind = ("least", _LEAST) if of_cmrr else ("absolute", _SHARE)
-            yield document.fault(place, f"{key} is missing; it takes {kind.takes}")
+        if entry and not of_cmrr and not given & {"absolute", "least"}:
+            yield document.fault(place, f"absolute is missing; it takes {_SHARE.takes}")
         yield from _cmrr_faults(document, place, names, given)
         if entry and not of_cmrr:
             values = {key: _values(document, axes, (*place, key)) for key in ("absolute", "matching")}
@@ -216,7 +220,7 @@ def _cmrr_faults(
     if cmrr and len(cmrr) < len(names):
         other = next(name for name in names if name not in cmrr)
         yield document.fault(
-            place, f"{cmrr[0]} and {other} cannot share an entry; give CMRR an entry of its own, with least"
+            place, f"{cmrr[0]} and {other} cannot share an entry; give CMRR an entry of its own"
         )
     elif cmrr and given & {"absolute", "matching"}:
         key = "absolute" if "absolute" in given else "matching"
@@ -296,13 +300,13 @@ def unvaried_faults(
     tolerance
         Its tolerance section.
     valued
-        Names of the parts that at least one case has.
+        Names of the parts that at least one case has, and paths of the tolerances that have a value.
     results
         Draws of all cases together.
     """
     for index, entry in enumerate(tolerance.parts):
         for position, name in enumerate(entry.of):
-            if name not in valued and not name.endswith(".cmrr"):
+            if name not in valued and not (entry.reciprocal and f"tolerance.parts[{index}].least" in valued):
                 at = ("tolerance", "parts", index, "of", position)
                 yield document.fault(
                     at,

@@ -41,7 +41,7 @@ def causes_of(section: Tolerance, present: Sequence[str] | None = None) -> tuple
         for key in ("absolute", "matching", "least")
         if (value := getattr(entry, key)) is not None
     }
-    return variates(section, values, NAMES if present is None else present)
+    return variates(section, values, dict.fromkeys(NAMES if present is None else present, 1.0))
 
 
 def errors_of(section: Tolerance) -> dict[str, Floats]:
@@ -322,7 +322,7 @@ def test_only_the_parts_of_a_case_vary() -> None:
 def test_an_axis_value_holds_in_place_of_the_sections() -> None:
     section = tolerance({"of": ["R1", "R2"], "absolute": 1e-2})
     causes = variates(
-        section, {"tolerance.parts[0].absolute": 2e-2, "tolerance.parts[0].matching": 1e-4}, NAMES
+        section, {"tolerance.parts[0].absolute": 2e-2, "tolerance.parts[0].matching": 1e-4}, dict.fromkeys(NAMES, 1.0)
     )
     assert [cause.bound for cause in causes] == [2e-2, 1e-4, 1e-4]
 
