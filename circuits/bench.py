@@ -16,15 +16,24 @@ n  1 V on the negative supply
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 import numpy as np
 
 from modepair.circuits.elements import GROUND, Card, Element, Kind
 from modepair.circuits.netlist import circuit
+from modepair.circuits.opamps import opamp_elements
 
-__all__ = ["BENCH_VECTORS", "LOOP_FARAD", "LOOP_HENRY", "SUPPLY_VECTORS", "Mounting", "bench_netlist"]
+__all__ = [
+    "BENCH_VECTORS",
+    "LOOP_FARAD",
+    "LOOP_HENRY",
+    "SUPPLY_VECTORS",
+    "Mounting",
+    "bench_netlist",
+    "macromodel_mounting",
+]
 
 LOOP_HENRY = LOOP_FARAD = 1e12
 """At 1 mHz six gigohm at the output, and a corner of the loop at 0.2 pHz."""
@@ -61,11 +70,34 @@ class Mounting:
     supplies: tuple[float, float] | None = None
 
 
+def macromodel_mounting(parameters: Mapping[str, float]) -> Mounting:
+    """Mount a macromodel.
+
+    Parameters
+    ----------
+    parameters : mapping of str to float
+        Its parameters in SI units; zero means that an impedance is not there.
+
+    Returns
+    -------
+    Mounting
+        Without supplies.
+    """
+    parts = {f"A1.{name}": np.full(1, value) for name, value in parameters.items() if value}
+
+    def cards(plus: str, minus: str, out: str, _positive: str, _negative: str) -> list[Card]:
+        return list(opamp_elements("A1", plus, minus, out, parts))
+
+    return Mounting(cards)
+
+
 def _source(name: str, kind: Kind, node_a: str, node_b: str, value: float, dc: float = 0.0) -> Element:
     return Element(f"{kind}{name}", kind, (node_a, node_b), np.full(1, value), dc)
 
 
-def _copy(mounting: Mounting, plus: float, minus: float, current: float, ripple: tuple[float, float]) -> list[Card]:
+def _copy(
+    mounting: Mounting, plus: float, minus: float, current: float, ripple: tuple[float, float]
+) -> list[Card]:
     middle = sum(mounting.supplies) / 2 if mounting.supplies else 0.0
     cards: list[Card] = [
         _source("gp", "V", "gp", GROUND, plus, middle),
@@ -103,10 +135,12 @@ def bench_netlist(mounting: Mounting) -> tuple[str, tuple[str, ...]]:
         suffix: _copy(mounting, plus, minus, 1.0 if suffix == "o" else 0.0, (0.0, 0.0))
         for suffix, (plus, minus) in DRIVES.items()
     }
-    vectors = BENCH_VECTORS
+    vectors: tuple[str, ...] = BENCH_VECTORS
     if mounting.supplies:
         copies |= {suffix: _copy(mounting, 0.0, 0.0, 0.0, ripple) for suffix, ripple in SUPPLY_DRIVES.items()}
         vectors += SUPPLY_VECTORS
-    saved = [f"i({name.removesuffix('#branch')})" if name.endswith("#branch") else f"v({name})" for name in vectors]
+    saved = [
+        f"i({name.removesuffix('#branch')})" if name.endswith("#branch") else f"v({name})" for name in vectors
+    ]
     saved += ["v(p_d)", "v(n_d)"] if mounting.models else []
     return str(circuit(copies, saved=saved, models=mounting.models)), vectors

@@ -10,7 +10,7 @@ import contextlib
 import os
 import resource
 import signal
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -19,7 +19,7 @@ from modepair.runner.batches import Batch, Solved
 from modepair.runner.engine import engine
 from modepair.runner.errors import EngineDeadError, OutputError
 
-__all__ = ["TIME_LIMIT_S", "Allowance", "allowance", "confine", "solve_within", "warm"]
+__all__ = ["TIME_LIMIT_S", "Allowance", "allowance", "confine", "limited", "solve_within", "warm"]
 
 TIME_LIMIT_S = 30.0
 """Seconds that one case may take, and that a batch may take on top of `SECONDS_A_POINT`."""
@@ -136,9 +136,28 @@ def solve_within(
     EngineDeadError
         If the simulator is beyond use; the process must be given up.
     """
+    with limited(allowed):
+        return _sound(solve(batch, analyses))
+
+
+@contextlib.contextmanager
+def limited(allowed: Allowance) -> Iterator[None]:
+    """Have the system end this process, a worker with its engine started, if a block takes more than it may.
+
+    Parameters
+    ----------
+    allowed : Allowance
+        What the block may take.
+
+    Yields
+    ------
+    None
+        Once, with the limits set.
+    """
     warm()
     if not _Confinement.active:
-        return _sound(solve(batch, analyses))
+        yield
+        return
     if not _Confinement.idle_bytes:
         _Confinement.idle_bytes = _address_space()
     if _Confinement.idle_bytes:
@@ -147,7 +166,7 @@ def solve_within(
     _limit(resource.RLIMIT_CPU, int(used.ru_utime + used.ru_stime + 1.5 * allowed.seconds) + 1)
     signal.setitimer(signal.ITIMER_REAL, allowed.seconds)
     try:
-        return _sound(solve(batch, analyses))
+        yield
     finally:
         signal.setitimer(signal.ITIMER_REAL, 0.0)
 
