@@ -12,7 +12,7 @@ from modepair.reports.interference import line_column
 from modepair.reports.markdown import escape_markdown, markdown_table
 from modepair.reports.readings import frequency_text
 from modepair.reports.tables import ROWS_OF_MANY, Column
-from modepair.reports.verdicts import case_names, overall, shown_verdicts, verdict_columns
+from modepair.reports.verdicts import case_names, codes_text, overall, shown_verdicts, verdict_columns
 from modepair.sweeps import render
 from modepair.sweeps.interference import Interference
 
@@ -108,7 +108,7 @@ def interference_section(cases: pd.DataFrame, axes: Iterable[AxisValues], interf
         ("swept_output_error_codes", "codes, profile"),
     ):
         if name in shown:
-            columns.append(Column(heading, [f"{value:.3g}" for value in shown[name]]))
+            columns.append(Column(heading, [codes_text(value) for value in shown[name]]))
     if "swept_output_error_at_hz" in shown:
         places = [frequency_text(hz) for hz in shown["swept_output_error_at_hz"]]
         columns.append(Column("output worst at", places))

@@ -79,8 +79,24 @@ def value_text(value: float, unit: str) -> str:
     if unit == "V/V":
         return gain_text(value)
     if unit == "codes":
-        return f"{value:.3g} codes"
+        return f"{codes_text(value)} codes"
     return render(value, unit, 4)
+
+
+def codes_text(codes: float) -> str:
+    """Write a number of converter codes: three digits, and no exponent where it is large.
+
+    Parameters
+    ----------
+    codes : float
+        Not negative.
+
+    Returns
+    -------
+    str
+        Such as ``0.866`` or ``45600``.
+    """
+    return f"{codes:.3g}" if codes < 1000 else f"{float(f'{codes:.3g}'):.0f}"
 
 
 def _worst(verdicts: pd.DataFrame) -> pd.DataFrame:
