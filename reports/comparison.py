@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 import pandas as pd
@@ -144,6 +144,8 @@ class Comparison:
         Conditions that each was simulated in.
     by_yield : bool
         Whether they are ranked by yield.
+    there_db : dict of str to float
+        Score of every ranked candidate in the condition that decides the winner, dB.
     """
 
     table: pd.DataFrame
@@ -151,6 +153,7 @@ class Comparison:
     accuracy_db: float
     conditions: int
     by_yield: bool = False
+    there_db: dict[str, float] = field(default_factory=dict)
 
     @property
     def ranked(self) -> pd.DataFrame:
@@ -206,7 +209,20 @@ def compare(cases: pd.DataFrame, target: Target, accuracy_db: float = READING_DB
     table.insert(0, "rank", _ranks(ranked, used_db, by_yield) + [np.nan] * (len(table) - len(ranked)))
     table = table.rename(columns={"score_db": target.column})
     conditions = int(cases.groupby("candidate")["condition"].nunique().max())
-    return Comparison(table, target, used_db, conditions, by_yield)
+    there = _there(cases, table) if len(ranked) else {}
+    return Comparison(table, target, used_db, conditions, by_yield, there)
+
+
+def _there(cases: pd.DataFrame, table: pd.DataFrame) -> dict[str, float]:
+    """Score of the ranked candidates in the winner's deciding condition, dB."""
+    ranked = table.loc[table["rank"].notna(), "candidate"]
+    there = cases[
+        (cases["condition"] == table["decided_by"].iloc[0])
+        & cases["candidate"].isin(ranked)
+        & (cases["state"] == "done")
+    ]
+    lowest = there.groupby("candidate")["score_db"].min()
+    return {str(name): float(level) for name, level in lowest.items()}
 
 
 def _worst(name: str, group: pd.DataFrame, by_yield: bool) -> dict[str, object]:

@@ -178,10 +178,11 @@ class Agreement:
         else:
             told = f"{self.name} against {case}: no frequency can be compared."
         if self.beyond:
-            some = "1 point exceeds" if self.beyond == 1 else f"{self.beyond} points exceed"
+            one = self.beyond == 1
+            some = "1 point exceeds" if one else f"{self.beyond} points exceed"
             told += (
-                f" {some} the instrument's residual CMRR: the bench cannot tell them from its own error, "
-                "and they are left out of these figures."
+                f" {some} the instrument's residual CMRR, which no reading can resolve, and "
+                f"{'is' if one else 'are'} left out of these figures."
             )
         return told
 

@@ -41,12 +41,15 @@ class Compared:
         A row per case of every run: `run`, `candidate`, `condition`, the figures, the scores.
     comparison : Comparison
         The candidates in their order.
+    by : tuple of str
+        Axes that were named as the candidates'; empty where they were not.
     """
 
     runs: tuple[Run, ...]
     names: tuple[str, ...]
     rated: pd.DataFrame
     comparison: Comparison
+    by: tuple[str, ...] = ()
 
 
 def compare_runs(runs: Sequence[Run], by: Sequence[str] = (), accuracy_db: float = READING_DB) -> Compared:
@@ -86,7 +89,7 @@ def compare_runs(runs: Sequence[Run], by: Sequence[str] = (), accuracy_db: float
     rated = pd.concat(tables, ignore_index=True)
     if not (rated["state"] == "done").any():
         raise ReadingError(f"{', '.join(names)}: every case failed, so there is nothing to compare")
-    return Compared(tuple(runs), names, rated, compare(rated, target, accuracy_db))
+    return Compared(tuple(runs), names, rated, compare(rated, target, accuracy_db), tuple(by))
 
 
 def run_names(runs: Sequence[Run]) -> tuple[str, ...]:
@@ -177,6 +180,8 @@ def _rated(run: Run, name: str, axes: Sequence[Axis], target: Target, several: b
         except ValueError as error:
             raise ReadingError(f"{name}: {error}; its curves do not cover what is compared") from error
         scored.append(found.assign(case=case))
+    if not scored and (cases["state"] == "done").any():
+        raise ReadingError(f"{name}: holds no nominal curves, but those of one board; run it without --draw")
     if scored:
         cases = cases.merge(pd.concat(scored, ignore_index=True), on="case", how="left")
     if "differential_gain" in cases:

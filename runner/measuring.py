@@ -8,7 +8,7 @@ import pandas as pd
 
 from modepair.reports.axis_labels import axis_columns, case_texts
 from modepair.reports.differences import agreements, all_differences, matching_cases
-from modepair.reports.summary import escape_markdown
+from modepair.reports.markdown import escape_markdown
 from modepair.runner.folder import RunFolder
 from modepair.runner.reading import curves_of
 from modepair.sweeps import Spec
