@@ -8,7 +8,6 @@ import pandas as pd
 
 from modepair.runner.analyses import Analyses
 from modepair.runner.budgeting import CaseBudget
-from modepair.runner.errors import SimulationError
 from modepair.runner.folder import RunFolder
 from modepair.runner.pool import BatchSolver
 from modepair.runner.results import Results
@@ -85,13 +84,7 @@ def work_out_worst_case(
     done = results.cases.loc[results.cases["state"] == "done", "case"].tolist()
     if not sweep.spec.frequency.spots or not done or len(done) > MOST_CASES:
         return None
-    budgets: list[CaseBudget] = []
-    for case in done:
-        try:
-            budgets += budget_cases(sweep, solver, analyses, [case])
-        except SimulationError:
-            # A board at the edges of its tolerances that cannot be solved leaves its case without a worst case.
-            continue
+    budgets = list(budget_cases(sweep, solver, analyses, done, skip_unsolved=True))
     if not budgets:
         return None
     quantiles = pd.read_parquet(folder.path("quantiles.parquet"))

@@ -10,6 +10,7 @@ from modepair.circuits import Deck
 from modepair.reports.budget import decibels
 from modepair.runner.analyses import Analyses
 from modepair.runner.budgeting import CaseBudget, budget_case
+from modepair.runner.errors import SimulationError
 from modepair.runner.plans import drawn_case
 from modepair.runner.pool import BatchSolver
 from modepair.sweeps import Sweep
@@ -21,7 +22,12 @@ MOST_CASES = 200
 
 
 def budget_cases(
-    sweep: Sweep, solver: BatchSolver, analyses: Analyses, cases: Sequence[int]
+    sweep: Sweep,
+    solver: BatchSolver,
+    analyses: Analyses,
+    cases: Sequence[int],
+    *,
+    skip_unsolved: bool = False,
 ) -> Iterator[CaseBudget]:
     """Work out the budgets of some cases.
 
@@ -35,6 +41,8 @@ def budget_cases(
         The frequencies; the spec's spots among them.
     cases : sequence of int
         Case numbers.
+    skip_unsolved : bool
+        Whether to pass over a case near which a circuit cannot be solved.
 
     Yields
     ------
@@ -44,11 +52,15 @@ def budget_cases(
     Raises
     ------
     SimulationError
-        If a circuit near a case cannot be solved.
+        If a circuit near a case cannot be solved, unless such cases are passed over.
     """
     decks: dict[object, Deck] = {}
     for case in cases:
-        yield budget_case(drawn_case(sweep, case), solver, analyses, sweep.spec.frequency.spots, decks)
+        try:
+            yield budget_case(drawn_case(sweep, case), solver, analyses, sweep.spec.frequency.spots, decks)
+        except SimulationError:
+            if not skip_unsolved:
+                raise
 
 
 def budget_table(budgets: Sequence[CaseBudget]) -> pd.DataFrame:
