@@ -27,7 +27,7 @@ __all__ = ["BatchSolver", "ExecutorFactory", "worker_pool"]
 
 DIED = "the simulator process died on this case"
 NO_MEMORY = "the simulator ran out of memory"
-NOT_TRIED = "not tried: three cases with the same op-amps were, none before them was solved, and each cost the simulator"
+NOT_TRIED = "not tried, since each of the first three cases with the same op-amps cost the simulator"
 
 LEAST_TRIED = 3
 """Cases that must have cost a worker, with none solved, before their like are given up."""

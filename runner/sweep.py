@@ -13,11 +13,12 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from modepair.circuits import candidates
+from modepair.runner.allowances import TIME_LIMIT_S
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
-from modepair.sweeps import Spec, Streams, expand, load_spec
+from modepair.sweeps import Spec, Streams, Sweep, expand, load_spec
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -73,7 +74,10 @@ def run(
     progress: Progress | None = None,
     executors: ExecutorFactory | None = None,
     draw: int | None = None,
+    resume: bool = False,
+    time_limit_s: float | None = None,
     baseline: Baseline | None = None,
+    page: bool = False,
 ) -> Run:
     """Run a sweep and write its run folder.
 
@@ -92,9 +96,15 @@ def run(
     draw : int, optional
         Run that one of the spec's draws alone, in place of nominal parts and all draws; the run folder is then
         `runs/<name>-draw-<draw>` where `output` is absent.
-
+    resume : bool
+        Go on from where a run of the same into the same folder was killed or stopped, to the same bytes; from the
+        beginning where there is none.
+    time_limit_s : float, optional
+        Seconds after which a case is given up; 30 and some more by the number of frequencies where absent.
     baseline : Baseline, optional
         Curves accepted earlier, to compare with.
+    page : bool
+        Whether to write `report.html` too, which takes about two seconds more; never of one draw.
 
     Returns
     -------
@@ -108,7 +118,8 @@ def run(
     EngineMissingError
         If there is no ngspice library.
     OutputError
-        If the run folder cannot be written.
+        If the run folder cannot be written, another run is writing it, or what is there to resume is of another
+        spec, other op-amp data or other versions.
     RequestError
         If the spec has no such draw.
     """
@@ -127,14 +138,15 @@ def run(
     target = Path(output) if output is not None else Path("runs") / name
     workers = min(jobs or os.cpu_count() or 1, sweep.count * (draws + 1))
     with (
-        run_folder(target) as folder,
+        run_folder(target, resume=resume) as folder,
         worker_pool() as local,
-        BatchSolver(executors or local, workers) as solver,
+        BatchSolver(executors or local, workers, time_limit_s or TIME_LIMIT_S) as solver,
     ):
         solver.warm()
         # What follows takes a second to import, in which the workers start.
         from modepair.runner.budget_pages import work_out_worst_case
         from modepair.runner.decks import write_decks
+        from modepair.runner.journal import Journal, run_key
         from modepair.runner.judging import judge_run
         from modepair.runner.measuring import measured_section, write_measured
         from modepair.runner.pages import write_pages
@@ -146,10 +158,19 @@ def run(
         plans = plan_batches(sweep, draws + 1)
         drawn = plan_draws(sweep, Streams(spec.tolerance)) if spec.tolerance and draws else ()
         ordered: Iterator[Plan] = merge(plans, drawn, key=lambda plan: int(plan.position[0]))
-        solved = solver.solve((plan.batch() for plan in ordered), analyses)
-        results = collect(
-            solved, sweep, analyses.frequency_hz, folder, progress, draws=draws, only_draw=draw or 0
-        )
+        kinds = _kinds(sweep)
+        with Journal(folder, run_key(sweep, plans, analyses, draws, draw or 0)) as journal:
+            batches = journal.batches(ordered)
+            solved = solver.solve(batches, analyses, lambda position: kinds[position // (draws + 1)])
+            results = collect(
+                journal.recorded(solved),
+                sweep,
+                analyses.frequency_hz,
+                folder,
+                progress,
+                draws=draws,
+                only_draw=draw or 0,
+            )
         judged = judge_run(
             sweep,
             results.cases,
@@ -167,9 +188,22 @@ def run(
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
         measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
-        made_of = provenance(spec, results.engine, started)
+        origin = provenance(spec, results.engine, started)
         write_pages(
-            folder, sweep, results, made_of, judged, measured_section(measured, spec, results.cases), worst
+            folder, sweep, results, origin, judged, measured_section(measured, spec, results.cases), worst
         )
+        if page and draw is None:
+            from modepair.runner.report import write_report
+
+            write_report(folder, spec, results.cases, judged.verdicts, origin, baseline)
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
     return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes)
+
+
+def _kinds(sweep: Sweep) -> list[int]:
+    """Number the kinds of cases, by topology and op-amps: one kind for each block."""
+    kinds = [0] * sweep.count
+    for number, block in enumerate(sweep.blocks):
+        for case in block.case.tolist():
+            kinds[case - 1] = number
+    return kinds

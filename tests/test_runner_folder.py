@@ -77,15 +77,65 @@ def test_a_place_that_cannot_be_made_is_said_plainly(tmp_path: Path) -> None:
         pass
 
 
-def test_what_a_killed_run_left_goes_with_the_next_and_a_living_run_stays(tmp_path: Path) -> None:
+def test_what_a_killed_run_left_goes_with_the_next(tmp_path: Path) -> None:
     left = tmp_path / ".one.unfinished-dead"
     left.mkdir()
     (left / "curves.parquet").write_text("half", encoding="utf-8")
-    with run_folder(tmp_path / "one") as living:
+    (left / "solved.journal").write_text("some", encoding="utf-8")
+    with run_folder(tmp_path / "one") as folder:
         assert not left.exists()
-        with run_folder(tmp_path / "one") as second:
-            assert living.building.exists()
-            second.publish({"run": 2})
-        living.publish({"run": 1})
-    assert json.loads((tmp_path / "one" / "run.json").read_text(encoding="utf-8")) == {"run": 1}
+        folder.publish({"run": 1})
     assert names(tmp_path) == ["one"]
+
+
+def test_a_second_run_into_the_same_folder_is_refused_and_the_first_goes_on(tmp_path: Path) -> None:
+    for resume in (False, True):
+        with run_folder(tmp_path / "one") as living:
+            with (
+                pytest.raises(OutputError, match="another run is writing it; wait for that, or name another"),
+                run_folder(tmp_path / "one", resume=resume),
+            ):
+                pass
+            living.publish({"run": 1})
+        assert json.loads((tmp_path / "one" / "run.json").read_text(encoding="utf-8")) == {"run": 1}
+        assert names(tmp_path) == ["one"]
+
+
+def test_a_name_with_brackets_is_taken_as_it_is(tmp_path: Path) -> None:
+    left = tmp_path / ".one[1].unfinished-dead"
+    other = tmp_path / ".one1.unfinished-dead"
+    left.mkdir()
+    other.mkdir()
+    with run_folder(tmp_path / "one[1]") as folder:
+        folder.publish({})
+    assert names(tmp_path) == [".one1.unfinished-dead", "one[1]"]
+
+
+def stop_half_way(target: Path, error: BaseException) -> None:
+    with run_folder(target) as folder:
+        folder.write_text("solved.journal", "some")
+        folder.write_text("decks/a.cir", "deck")
+        folder.resumable = True
+        raise error
+
+
+def test_of_a_run_that_was_stopped_the_journal_alone_is_kept_until_it_is_taken_up(tmp_path: Path) -> None:
+    for number, error in enumerate((KeyboardInterrupt("half-way"), OSError(28, "No space left on device"))):
+        target = tmp_path / str(number) / "one"
+        with pytest.raises((KeyboardInterrupt, OutputError), match="half-way|No space left") as caught:
+            stop_half_way(target, error)
+        assert "--resume goes on from there" in caught.value.__notes__[0]
+        (left,) = target.parent.iterdir()
+        assert names(left) == [".lock", "solved.journal"]
+        with run_folder(target, resume=True) as again:
+            assert again.building == left
+            assert names(left) == [".lock", "solved.journal"]
+            again.publish({})
+        assert names(target) == ["run.json"]
+        assert names(target.parent) == ["one"]
+
+
+def test_of_a_run_that_failed_otherwise_nothing_is_kept(tmp_path: Path) -> None:
+    with pytest.raises(RuntimeError, match="half-way"):
+        stop_half_way(tmp_path / "one", RuntimeError("half-way"))
+    assert names(tmp_path) == []

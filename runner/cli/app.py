@@ -1,6 +1,6 @@
 """The command line.
 
-Exit status: 0 done, 1 judged and failing, 2 usage or spec, 3 simulation failed.
+Exit status: 0 done, 1 judged and failing, 2 usage, spec or output, 3 simulation failed, 130 interrupted.
 """
 
 from __future__ import annotations
@@ -11,16 +11,16 @@ import typer
 
 from modepair.runner.cli.budget import budget_command
 from modepair.runner.cli.check import check_command
+from modepair.runner.cli.compare import compare_command
 from modepair.runner.cli.netlist import netlist_command
 from modepair.runner.cli.opamp import opamp_command
 from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
 from modepair.runner.cli.run import run_command
 from modepair.runner.cli.schema import schema_command
+from modepair.runner.cli.stopping import StoppedError, stop_in_order
 from modepair.runner.cli.tighten import tighten_command
 
 __all__ = ["app", "main"]
-
-INTERRUPTED = 130
 
 app = typer.Typer(
     help="CMRR over frequency of difference and instrumentation amplifier stages, swept in ngspice.",
@@ -31,6 +31,7 @@ app = typer.Typer(
 )
 app.command("run")(run_command)
 app.command("check")(check_command)
+app.command("compare")(compare_command)
 app.command("budget")(budget_command)
 app.command("tighten")(tighten_command)
 app.command("netlist")(netlist_command)
@@ -40,6 +41,14 @@ app.command("schema")(schema_command)
 
 def main() -> None:
     """Run the command line and turn every known error into its message and exit status."""
+    try:
+        stop_in_order()
+        _run()
+    except StoppedError as stopped:
+        _fail(f"modepair: {stopped}", stopped.status)
+
+
+def _run() -> None:
     from modepair.sweeps import ModepairError, SpecError
 
     try:
@@ -50,15 +59,15 @@ def main() -> None:
         from modepair.runner.errors import OutputError
 
         usage = isinstance(error, OutputError | ValueError)
-        _fail(f"modepair: {error}", USAGE if usage else SIMULATION_FAILED)
-    except KeyboardInterrupt:
-        _fail("modepair: interrupted; nothing was written", INTERRUPTED)
+        message = "; ".join([str(error), *getattr(error, "__notes__", ())])
+        _fail(f"modepair: {message}", USAGE if usage else SIMULATION_FAILED)
     except BrokenPipeError:
         # Whoever read the output has left; keep the interpreter from complaining as it closes the stream.
         sys.stderr.close()
         sys.exit(1)
     except OSError as error:
-        _fail(f"modepair: {error.filename or ''}: {error.strerror or error}", USAGE)
+        where = f"{error.filename}: " if error.filename else ""
+        _fail(f"modepair: {where}{error.strerror or error}", USAGE)
 
 
 def _fail(message: str, status: int) -> None:

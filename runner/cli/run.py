@@ -25,12 +25,36 @@ def run_command(
     draw: Annotated[
         int | None, typer.Option("--draw", min=1, metavar="N", help="Run that one of the drawn boards alone.")
     ] = None,
+    resume: Annotated[
+        bool,
+        typer.Option(
+            "--resume", help="Go on from where a run was killed or stopped; from the start if none was."
+        ),
+    ] = False,
+    time_limit: Annotated[
+        float | None,
+        typer.Option(
+            "--time-limit", min=0.1, metavar="S", help="Seconds that a case may take; 30 if not given."
+        ),
+    ] = None,
+    page: Annotated[
+        bool, typer.Option("--page", help="Write report.html too: one file that opens without a network.")
+    ] = False,
 ) -> None:
     """Run a sweep: curves, figures, plots and decks go to a run folder."""
     from modepair.runner.sweep import run
 
     with progress_bar() as progress:
-        result = run(spec, output, jobs=jobs, progress=progress, draw=draw)
+        result = run(
+            spec,
+            output,
+            jobs=jobs,
+            progress=progress,
+            draw=draw,
+            page=page,
+            resume=resume,
+            time_limit_s=time_limit,
+        )
     if as_json:
         print(_as_json(result))
     else:
