@@ -1,0 +1,20 @@
+"""The start of the command: able to stop in order before the rest of it is imported."""
+
+from __future__ import annotations
+
+import sys
+
+from modepair.runner.cli.stopping import StoppedError, stop_in_order
+
+__all__ = ["main"]
+
+
+def main() -> None:
+    """Import the command line and run it."""
+    try:
+        stop_in_order()
+        from modepair.runner.cli.app import main as run
+    except StoppedError as stopped:
+        print(f"modepair: {stopped}", file=sys.stderr)
+        sys.exit(stopped.status)
+    run()
