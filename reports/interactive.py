@@ -20,6 +20,7 @@ GRID = "#e3e5e7"
 POINTS = ("measured", "mark")
 """Kinds of overlays that are points, drawn above the curves."""
 
+_ROOM = 0.012
 _FLOOR_DB = 20.0 * float(np.log10(FLOOR_VOLTS))
 
 
@@ -30,7 +31,7 @@ class PageCurve:
     Parameters
     ----------
     name : str
-        What the pointer shows; also told apart by it.
+        What the pointer shows.
     keys : tuple of (str, str)
         Group and value of each button that shows or hides it.
     style : CurveStyle
@@ -138,8 +139,9 @@ def curves_item(
     Returns
     -------
     dict
-        A document for bokeh's `embed_item`. Its glyphs are named ``curve-1``, ``overlay-1`` and so on, with
-        every part of a curve under one tag, so that a page can show and hide them.
+        A document for bokeh's `embed_item`. Every part of a curve has the tag ``curve-1`` and so on, of an overlay
+        ``overlay-1``, so that a page can show and hide them. What has a name can be read by the pointer: the
+        columns ``f`` and ``t`` of its source say what is there.
 
     Raises
     ------
@@ -148,7 +150,7 @@ def curves_item(
     """
     from bokeh.embed import json_item
     from bokeh.layouts import column
-    from bokeh.models import HoverTool, Line, Scatter
+    from bokeh.models import Line, Scatter
 
     if not curves:
         raise ValueError("there must be a curve to draw")
@@ -163,7 +165,6 @@ def curves_item(
         if overlay.kind not in POINTS:
             _draw_overlay(upper, overlay, index)
     commons: list[FloatArray] = []
-    drawn: list[Any] = []
     for index, curve in enumerate(curves, start=1):
         source, level_db, common_db = _source(curve, keep_hz)
         levels.append(level_db)
@@ -174,39 +175,20 @@ def curves_item(
             _band(upper, curve, tag, keep_hz)
         for panel, certain, bound in ((upper, "y", "b"), (lower, "c", "d")):
             glyph = Line(x="x", y=certain, line_width=2, **look)
-            drawn.append((panel, panel.add_glyph(source, glyph, name=curve.name, tags=[tag])))
+            panel.add_glyph(source, glyph, name=curve.name, tags=[tag])
             if curve.pair.above_floor.any():
                 thin = Line(x="x", y=bound, line_width=0.8, line_alpha=0.7, **look)
                 panel.add_glyph(source, thin, tags=[tag])
             if curve.pair.frequency_hz.size == 1:
                 dot = Scatter(x="x", y=certain, size=8, fill_color=curve.style.colour, line_color=None)
                 panel.add_glyph(source, dot, tags=[tag])
-    points = [
-        _draw_overlay(upper, overlay, index)
-        for index, overlay in enumerate(overlays, start=1)
-        if overlay.kind in POINTS
-    ]
-    for panel in (upper, lower):
-        lines = [line for owner, line in drawn if owner is panel]
-        panel.add_tools(
-            HoverTool(
-                renderers=lines + (points if panel is upper else []),
-                tooltips=_TOOLTIP,
-                line_policy="nearest",
-                point_policy="snap_to_data",
-                attachment="horizontal",
-            )
-        )
+    for index, overlay in enumerate(overlays, start=1):
+        if overlay.kind in POINTS:
+            _draw_overlay(upper, overlay, index)
     _level_range(upper, levels)
     _level_range(lower, commons)
     item: dict[str, Any] = json_item(column(upper, lower, sizing_mode="stretch_width"))  # type: ignore[assignment]
     return item
-
-
-_TOOLTIP = (
-    '<div style="font: 13px/1.45 system-ui, sans-serif; color: #22262b; max-width: 22em; white-space: normal">'
-    "<div><b>$name</b></div><div>@f</div><div>@t</div></div>"
-)
 
 
 def _panel(name: str, low_hz: float, high_hz: float, title: str, height: int) -> Any:
@@ -221,7 +203,7 @@ def _panel(name: str, low_hz: float, high_hz: float, title: str, height: int) ->
         height=height,
         sizing_mode="stretch_width",
         x_axis_type="log",
-        x_range=(low_hz, high_hz),
+        x_range=(low_hz * (low_hz / high_hz) ** _ROOM, high_hz * (high_hz / low_hz) ** _ROOM),
         tools=[BoxZoomTool()],
         toolbar_location=None,
         title=title,

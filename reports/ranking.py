@@ -74,6 +74,9 @@ def finding(comparison: Comparison) -> Finding:
     at = _place(first)
     names = _listed(winners["candidate"].tolist())
     several = len(winners) > 1
+    levels = winners[comparison.target.column]
+    most = _level_range(float(levels.min()), float(levels.max()))
+    short = _level_range(-float(levels.max()), -float(levels.min()))
     alone = len(comparison.table) == 1
     met: bool | None = None
     if comparison.target.mask:
@@ -84,18 +87,22 @@ def finding(comparison: Comparison) -> Finding:
             headline += f" in the worst condition{_with(first)}."
         elif met:
             verb = "meets the mask" if alone else "win" if several else "wins"
-            headline = f"{names} {verb}: {level_text(score, False)} dB above the mask at worst, {at}."
+            headline = f"{names} {verb}: {most} dB above the mask at worst, {at}."
         elif alone:
-            headline = f"{names} fails the mask by {level_text(-score, False)} dB, {at}."
+            headline = f"{names} fails the mask by {short} dB, {at}."
         else:
             near = "come" if several else "comes"
-            short = level_text(-score, False)
             headline = f"No candidate meets the mask. {names} {near} nearest: {short} dB short, {at}."
     else:
         verb = "keep" if several else "keeps"
-        most = "" if alone else " the most:"
-        headline = f"{names} {verb}{most} {level_text(score, False)} dB of CMRR at worst, {at}."
+        than = "" if alone else " the most:"
+        headline = f"{names} {verb}{than} {most} dB of CMRR at worst, {at}."
     return Finding(headline, met, tuple(_reasons(comparison, first, several)), terms)
+
+
+def _level_range(low_db: float, high_db: float) -> str:
+    low, high = level_text(low_db, False), level_text(high_db, False)
+    return low if low == high else f"{low} to {high}"
 
 
 def _with(row: pd.Series) -> str:

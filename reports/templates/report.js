@@ -26,6 +26,9 @@
     });
   }
 
+  // Paper has no buttons: what is folded up is printed open.
+  addEventListener("beforeprint", () => document.querySelectorAll("details").forEach((one) => { one.open = true; }));
+
   const data = document.getElementById("curves-data");
   if (!data) return;
   const keys = JSON.parse(document.getElementById("curves-keys").textContent);
@@ -100,6 +103,62 @@
     document.querySelector(".whole").addEventListener("click", () => {
       for (const [one, start, end] of whole) one.setv({ start, end });
     });
+    // What lies under the pointer, within so many pixels, in the order in which it lies there.
+    const near = 9, most = 9;
+    const reading = document.getElementById("reading");
+    let pointer = { x: 0, y: 0 };
+    document.getElementById("plot").addEventListener("pointermove", (event) => { pointer = { x: event.clientX, y: event.clientY }; }, true);
+    document.getElementById("plot").addEventListener("pointerdown", (event) => { pointer = { x: event.clientX, y: event.clientY }; }, true);
+    document.getElementById("plot").addEventListener("pointerleave", () => { reading.hidden = true; });
+    const nearest = (xs, x) => {
+      let [low, high] = [0, xs.length - 1];
+      while (high - low > 1) {
+        const middle = (low + high) >> 1;
+        if (xs[middle] > x) high = middle; else low = middle;
+      }
+      return Math.abs(Math.log(xs[high] / x)) < Math.abs(Math.log(xs[low] / x)) ? high : low;
+    };
+    const under = (panel, at) => {
+      const found = [];
+      const [across, up] = [panel.inner_width / Math.log(panel.x_range.end / panel.x_range.start), panel.inner_height / (panel.y_range.end - panel.y_range.start)];
+      for (const one of panel.renderers) {
+        const columns = one.data_source?.columns?.() || [];
+        if (!one.name || !one.visible || !columns.includes("t")) continue;
+        const [xs, ys] = ["x", one.glyph.y.field].map((name) => one.data_source.get_column(name));
+        const i = nearest(xs, at.x);
+        const j = xs[i] < at.x ? Math.min(i + 1, xs.length - 1) : Math.max(i - 1, 0);
+        const share = i === j ? 0 : Math.log(at.x / xs[i]) / Math.log(xs[j] / xs[i]);
+        const point = one.glyph.type !== "Line";
+        const level = point || !Number.isFinite(ys[j]) ? ys[i] : ys[i] + share * (ys[j] - ys[i]);
+        const away = point ? Math.hypot((level - at.y) * up, Math.log(xs[i] / at.x) * across) : Math.abs(level - at.y) * up;
+        if (away <= near) found.push({ level, name: one.name, at: one.data_source.get_column("f")[i], text: one.data_source.get_column("t")[i] });
+      }
+      return found.sort((a, b) => b.level - a.level);
+    };
+    const read = (panel) => (at) => {
+      const found = under(panel, at);
+      reading.hidden = found.length === 0;
+      if (reading.hidden) return;
+      const lines = found.slice(0, most).map((one) => {
+        const line = document.createElement("div");
+        const name = document.createElement("b");
+        name.textContent = one.name;
+        line.append(name, one.at === found[0].at ? ` ${one.text}` : ` at ${one.at}: ${one.text}`);
+        return line;
+      });
+      lines.unshift(`at ${found[0].at}`);
+      if (found.length > most) lines.push(`and ${found.length - most} more`);
+      reading.replaceChildren(...lines);
+      const box = reading.getBoundingClientRect();
+      const left = pointer.x + 16 + box.width < innerWidth ? pointer.x + 16 : Math.max(6, pointer.x - 16 - box.width);
+      const top = Math.min(pointer.y + 14, innerHeight - box.height - 6);
+      reading.style.transform = `translate(${left}px, ${top}px)`;
+    };
+    for (const panel of views) {
+      panel.on_event("mousemove", read(panel));
+      panel.on_event("tap", read(panel));
+      panel.on_event("mouseleave", () => { reading.hidden = true; });
+    }
     // On a touch screen a drag scrolls the page.
     if (matchMedia("(pointer: coarse)").matches) {
       models.filter((model) => model.type === "BoxZoomTool").forEach((tool) => { tool.active = false; });
