@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import replace
 
 import numpy as np
@@ -11,7 +12,7 @@ from modepair.runner.errors import RequestError
 from modepair.runner.plans import drawn_case
 from modepair.sweeps import Block, Streams, Sweep, boards
 
-__all__ = ["board_sweep", "board_table"]
+__all__ = ["board_sweep", "board_table", "signed_parts"]
 
 
 def board_sweep(sweep: Sweep, draw: int) -> Sweep:
@@ -70,8 +71,17 @@ def board_table(sweep: Sweep, board: Sweep) -> pd.DataFrame:
     """
     rows = []
     for case in range(1, sweep.count + 1):
-        nominal, drawn = drawn_case(sweep, case).parts, drawn_case(board, case).parts
+        nominal, drawn = (signed_parts(drawn_case(of, case).parts) for of in (sweep, board))
         for name, value in drawn.items():
             if value != nominal.get(name):
                 rows.append({"case": case, "part": name, "nominal": nominal.get(name), "board": value})
     return pd.DataFrame(rows, columns=["case", "part", "nominal", "board"])
+
+
+def signed_parts(parts: Mapping[str, float]) -> dict[str, float]:
+    """Give part values with each CMRR as the signed ratio, and without the signs beside it."""
+    return {
+        name: value * parts.get(f"{name}_sign", 1.0)
+        for name, value in parts.items()
+        if not name.endswith(".cmrr_sign")
+    }

@@ -13,6 +13,7 @@ from modepair.runner.budgeting import CaseBudget, budget_case
 from modepair.runner.errors import SimulationError
 from modepair.runner.plans import drawn_case
 from modepair.runner.pool import BatchSolver
+from modepair.runner.redraw import signed_parts
 from modepair.sweeps import Sweep
 
 __all__ = ["MOST_CASES", "board_table", "budget_cases", "budget_table", "worst_case_table"]
@@ -173,8 +174,8 @@ def board_table(budgets: Sequence[CaseBudget]) -> pd.DataFrame:
                     "case": budget.drawn.case,
                     "frequency_hz": spot.frequency_hz,
                     "part": part,
-                    "nominal": budget.drawn.parts.get(part),
-                    "board": board[part],
+                    "nominal": signed_parts(budget.drawn.parts).get(part),
+                    "board": signed_parts(board)[part],
                 }
                 for part in moved
             ]
