@@ -270,7 +270,7 @@ def model_faults(document: Document, model: type[BaseModel], error: ValidationEr
         elif isinstance(raised, RefusedError):
             yield document.fault(location, raised.message(name))
         elif item["type"] == "missing":
-            if name in _MISSING:
+            if name in _MISSING and location[0] != "measured":
                 yield document.fault(location[:-1], _MISSING[name], at_key=True)
         elif item["type"] == "too_short":
             # pydantic counts only items that it could read; a list that is empty has a fault of its section's own.
