@@ -106,7 +106,8 @@ def _bridge(topology: str, parts: Mapping[str, float]) -> dict[str, dict[str, fl
     found: dict[str, dict[str, float]] = {}
     if topology == "two-opamp":
         balanced = r1 * r3 / r2
-        if parts["A1.open_loop_gain"] < IDEAL_GAIN or parts["A1.gain_bandwidth"] < IDEAL_BANDWIDTH_HZ:
+        gain, bandwidth_hz = parts.get("A1.open_loop_gain", 0.0), parts.get("A1.gain_bandwidth", 0.0)
+        if gain < IDEAL_GAIN or bandwidth_hz < IDEAL_BANDWIDTH_HZ:
             found["A1's finite gain"] = {
                 "A1.open_loop_gain": IDEAL_GAIN,
                 "A1.gain_bandwidth": IDEAL_BANDWIDTH_HZ,
