@@ -45,6 +45,8 @@ class BoardSpots:
         That of the nominal circuit.
     least_db : ndarray, shape (S,), optional
         Least CMRR asked for in dB; NaN where nothing is asked for.
+    floor_db : ndarray, shape (S,), optional
+        Level in dB beyond which the solve tells nothing of the nominal circuit.
     label : str
         What tells the case from others.
 
@@ -58,13 +60,14 @@ class BoardSpots:
     rho: npt.NDArray[np.complex128]
     nominal: npt.NDArray[np.complex128] | None = None
     least_db: FloatArray | None = None
+    floor_db: FloatArray | None = None
     label: str = ""
 
     def __post_init__(self) -> None:
         spots = np.size(self.frequency_hz)
         if self.rho.ndim != 2 or self.rho.shape[1] != spots or not self.rho.size:
             raise ValueError(f"rho must have the shape (n, {spots}) with n at least 1, not {self.rho.shape}")
-        for name in ("nominal", "least_db"):
+        for name in ("nominal", "least_db", "floor_db"):
             values = getattr(self, name)
             if values is not None and np.shape(values) != (spots,):
                 raise ValueError(f"{name} must have the shape ({spots},), not {np.shape(values)}")
@@ -126,7 +129,7 @@ def plot_histograms(spots: BoardSpots, *, title: str = "") -> Figure:
         title,
         _HEIGHT,
         between=1.0,
-        above=2 * HEADING_LINE + (0.1 if rows > 1 else 0.0),
+        above=2 * HEADING_LINE + (0.2 if rows > 1 else 0.0),
         subtitle=spots.label,
     )
     places = [panel for row in panels for panel in row]
@@ -151,7 +154,9 @@ def _spot(spots: BoardSpots, column: int) -> _Spot:
     ]
     if spots.nominal is not None and np.isfinite(spots.nominal[column]):
         level = float(_decibels(spots.nominal[column : column + 1])[0])
-        marks.append(_Mark(level, f"nominal: {_level(level)}", _NOMINAL, (5.0, 2.0), 1.4, "mark-nominal"))
+        floor_db = np.inf if spots.floor_db is None else float(spots.floor_db[column])
+        written = _level(min(level, floor_db), level >= floor_db)
+        marks.append(_Mark(level, f"nominal: {written}", _NOMINAL, (5.0, 2.0), 1.4, "mark-nominal"))
     if spots.least_db is not None and np.isfinite(spots.least_db[column]):
         level = float(spots.least_db[column])
         marks.append(_Mark(level, f"asked for: {_level(level)}", INK, (), 2.2, "mark-least"))
@@ -161,8 +166,8 @@ def _spot(spots: BoardSpots, column: int) -> _Spot:
     return _Spot(cmrr_db, tuple(marks), law, note, _edges(cmrr_db, marks))
 
 
-def _level(level_db: float) -> str:
-    return f"{decibel_text(level_db)} dB".replace("-", "−")
+def _level(level_db: float, at_floor: bool = False) -> str:
+    return f"{decibel_text(level_db, at_floor)} dB".replace("-", "−")
 
 
 def _decibels(rho: npt.NDArray[np.complex128]) -> FloatArray:
@@ -224,7 +229,7 @@ def _draw_marks(panel: Axes, one: _Spot, highest: float, top: float) -> None:
     """Draw marks from the left down in rows, each as high as its text, so that no text meets another's line."""
     low, high = one.range_db
     figure = panel.get_figure(root=True)
-    renderer = FigureCanvasAgg(figure).get_renderer()  # type: ignore[no-untyped-call, arg-type]
+    renderer = FigureCanvasAgg(figure).get_renderer()  # type: ignore[no-untyped-call]
     row_height = _ROW / _HEIGHT * top
     for row, mark in enumerate(sorted(one.marks, key=lambda mark: mark.level_db)):
         level = top - (row + 0.6) * row_height

@@ -34,7 +34,11 @@ BAND_PERCENTS = (1, 5, 50, 95, 99)
 NOMINAL_REACH_DB = 25.0
 """How far above the boards the axis follows the nominal curve."""
 
-_ALL, _MOST, _MEDIAN = mix(HUES[0], "#ffffff", 0.82), mix(HUES[0], "#ffffff", 0.5), HUES[0]
+_ALL, _MOST, _MEDIAN = (
+    mix(HUES[0], "#ffffff", 0.82),
+    mix(HUES[0], "#ffffff", 0.5),
+    mix(HUES[0], "#000000", 0.3),
+)
 _NOMINAL, _WORST = CurveStyle(HUES[3], (5.0, 2.0)), CurveStyle(HUES[1])
 _LEVEL_STEPS_DB = (1, 2, 5, 10, 20, 40)
 # Characters of a heading and of a note to the inch, safely.
@@ -143,7 +147,7 @@ def plot_boards(
         title,
         lower_height=height,
         between=label_room(short[0]) + 0.62,
-        above=lines * HEADING_LINE + (0.1 if rows > 1 else 0.0),
+        above=lines * HEADING_LINE + (0.2 if rows > 1 else 0.0),
     )
     places = [panel for row in panels for panel in row]
     for panel in places[len(boards) :]:

@@ -56,16 +56,33 @@ def _label_size(ends: Sequence[EndLabel]) -> float:
     return 8.5 if len(ends) <= 16 else 7.0
 
 
+def text_width(text: str, size: float) -> float:
+    """Measure a line of text.
+
+    Parameters
+    ----------
+    text : str
+        One line.
+    size : float
+        Of the type, in points.
+
+    Returns
+    -------
+    float
+        Inches.
+    """
+    renderer = FigureCanvasAgg(Figure(dpi=100)).get_renderer()  # type: ignore[no-untyped-call]
+    font = FontProperties(family="DejaVu Sans", size=size)
+    return float(renderer.get_text_width_height_descent(text, font, False)[0]) / 100
+
+
 def _label_extent(ends: Sequence[EndLabel]) -> list[tuple[float, float]]:
     """Width and height of each label in inches."""
     size = _label_size(ends)
-    canvas = FigureCanvasAgg(Figure(dpi=100))
-    renderer = canvas.get_renderer()  # type: ignore[no-untyped-call]
-    font = FontProperties(family="DejaVu Sans", size=size)
     extents = []
     for end in ends:
         lines = end.text.split("\n")
-        width = max(renderer.get_text_width_height_descent(line, font, False)[0] for line in lines) / 100
+        width = max(text_width(line, size) for line in lines)
         extents.append((width, len(lines) * size * 1.3 / 72))
     return extents
 

@@ -117,7 +117,7 @@ def make_panels(
     panels : list of list of Axes
         Rows of panels.
     """
-    between_rows, top_room = 0.62 + above, _TOP + above + (0.22 if subtitle else 0.0)
+    between_rows, top_room = 0.62 + above, _TOP + above + (0.3 if subtitle else 0.0)
     heights = [height, *[lower_height] * (rows - 1)]
     total_width = left + columns * width + (columns - 1) * between + room + _RIGHT
     total_height = _BOTTOM + sum(heights) + (rows - 1) * between_rows + top_room

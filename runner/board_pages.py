@@ -73,6 +73,7 @@ def plot_board_pages(folder: RunFolder, sweep: Sweep, results: Results) -> dict[
         np.concatenate(worst.rho),
         nominal[worst.case].error_ratio[columns] if worst.case in nominal else None,
         mask.at(spots_hz) if mask else None,
+        nominal[worst.case].floor_db[columns] if worst.case in nominal else None,
         texts[worst.case],
     )
     figure = plot_histograms(spots, title=spec.title)
