@@ -1,5 +1,9 @@
+from .deck import Bias as Bias
 from .deck import Deck as Deck
 from .imperfections import imperfections as imperfections
+from .imported import ImportedModel as ImportedModel
+from .imported import imported_models as imported_models
+from .imported import models_of as models_of
 from .library import candidates as candidates
 from .netlist import COPIES as COPIES
 from .netlist import netlist as netlist

@@ -21,7 +21,9 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from modepair.circuits.deck import Bias
 from modepair.circuits.elements import GROUND, Card, Element, Kind
+from modepair.circuits.imported import ImportedModel
 from modepair.circuits.netlist import circuit
 from modepair.circuits.opamps import opamp_elements
 
@@ -32,6 +34,7 @@ __all__ = [
     "SUPPLY_VECTORS",
     "Mounting",
     "bench_netlist",
+    "imported_mounting",
     "macromodel_mounting",
 ]
 
@@ -63,11 +66,14 @@ class Mounting:
         Definitions of subcircuits that these name.
     supplies : tuple of float, optional
         Positive and negative supply in volts; absent for a model without.
+    bias : Bias, optional
+        What is to be checked of its operating point on the bench.
     """
 
     cards: Callable[[str, str, str, str, str], list[Card]]
     models: str = ""
     supplies: tuple[float, float] | None = None
+    bias: Bias | None = None
 
 
 def macromodel_mounting(parameters: Mapping[str, float]) -> Mounting:
@@ -89,6 +95,27 @@ def macromodel_mounting(parameters: Mapping[str, float]) -> Mounting:
         return list(opamp_elements("A1", plus, minus, out, parts))
 
     return Mounting(cards)
+
+
+def imported_mounting(model: ImportedModel) -> Mounting:
+    """Mount an imported model.
+
+    Parameters
+    ----------
+    model : ImportedModel
+        The model.
+
+    Returns
+    -------
+    Mounting
+        With its supplies.
+    """
+
+    def cards(plus: str, minus: str, out: str, positive: str, negative: str) -> list[Card]:
+        return [model.instance("A1", plus, minus, out, positive, negative)]
+
+    supplies = (model.supplies[0], model.supplies[1]) if model.supplies else None
+    return Mounting(cards, model.text, supplies, model.bias("the op-amp", "p_d", "n_d", "out_d"))
 
 
 def _source(name: str, kind: Kind, node_a: str, node_b: str, value: float, dc: float = 0.0) -> Element:

@@ -2,12 +2,84 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["Deck"]
+from modepair.circuits.elements import GROUND
+
+__all__ = ["Bias", "Deck"]
+
+RAIL_SHARE = 0.01
+"""Share of the supplies' span within which an output is at its rail."""
+
+LARGEST_INPUT_VOLT = 0.1
+"""Voltage between an op-amp's inputs beyond which feedback does not hold them together: far beyond any offset."""
+
+
+@dataclass(frozen=True)
+class Bias:
+    """What is to be checked of an imported op-amp's operating point.
+
+    Attributes
+    ----------
+    instance : str
+        The op-amp, such as "A1".
+    plus, minus, out : str
+        Its nodes in the deck.
+    supplies : tuple of float
+        Positive and negative supply in volts; empty for a model without.
+    """
+
+    instance: str
+    plus: str
+    minus: str
+    out: str
+    supplies: tuple[float, ...] = ()
+
+    @property
+    def nodes(self) -> tuple[str, str, str]:
+        """The nodes whose voltages are needed."""
+        return self.plus, self.minus, self.out
+
+    def in_copy(self, copy: str) -> Bias:
+        """Return the same of one copy of the circuit."""
+        plus, minus, out = (node if node == GROUND else f"{node}_{copy}" for node in self.nodes)
+        return replace(self, plus=plus, minus=minus, out=out)
+
+    def fault(self, plus_volt: float, minus_volt: float, out_volt: float) -> str:
+        """Say why a curve about this operating point would mean nothing.
+
+        Parameters
+        ----------
+        plus_volt, minus_volt, out_volt : float
+            Voltages of its nodes.
+
+        Returns
+        -------
+        str
+            The reason; empty if there is none.
+        """
+        why = "a small-signal curve about such a point means nothing"
+        if self.supplies:
+            high, low = self.supplies
+            rails = f"with supplies of {high:g} V and {low:g} V"
+            for name, volt in (("plus", plus_volt), ("minus", minus_volt)):
+                if not low < volt < high:
+                    return (
+                        f"{self.instance}'s {name} input is at {volt:.4g} V {rails}, not between them: {why}"
+                    )
+            margin = RAIL_SHARE * (high - low)
+            if not low + margin < out_volt < high - margin:
+                return f"{self.instance}'s output is at {out_volt:.4g} V {rails}, at a rail: {why}"
+        apart = plus_volt - minus_volt
+        if abs(apart) > LARGEST_INPUT_VOLT:
+            return (
+                f"{self.instance}'s inputs are {apart:.4g} V apart at an output of {out_volt:.4g} V, so that feedback "
+                f"does not hold it: {why}"
+            )
+        return ""
 
 
 @dataclass(frozen=True)
@@ -23,8 +95,14 @@ class Deck:
         each copy.
     values : ndarray, shape (m,)
         The element values that the text holds.
+    biases : tuple of Bias
+        What is to be checked of the operating point of each case.
+    nonlinear : bool
+        Whether the circuit has an operating point.
     """
 
     text: str
     commands: tuple[tuple[str, ...], ...]
     values: npt.NDArray[np.float64]
+    biases: tuple[Bias, ...] = ()
+    nonlinear: bool = False

@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Hashable, Mapping
+from dataclasses import dataclass, field
 
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits.deck import Deck
-from modepair.circuits.elements import Element, Values
+from modepair.circuits.deck import Bias, Deck
+from modepair.circuits.elements import GROUND, Card, Element, Values
+from modepair.circuits.imported import ImportedModel, Models, model_texts, supply_nodes
 from modepair.circuits.netlist import COPIES, netlist
 from modepair.circuits.sources import source_elements
-from modepair.circuits.stages import stage_elements
+from modepair.circuits.stages import stage_cards
 
 __all__ = ["Structure", "structures"]
 
@@ -39,6 +40,8 @@ class Structure:
         Part values of all the cases handed in.
     rows : ndarray of int, shape (k,)
         Which of the n cases have this structure, ascending.
+    models : mapping of str to ImportedModel
+        Imported models by op-amp instance.
     """
 
     topology: str
@@ -46,9 +49,24 @@ class Structure:
     imbalanced_leg: str
     parts: GivenParts
     rows: Rows
+    models: Models = field(default_factory=dict)
+
+    def _circuit(self, rows: Rows) -> tuple[tuple[Card, ...], list[Bias]]:
+        here = {name: _taken(self.parts[name], rows) for name in self.parts if name in self.present}
+        if "RI" in here:
+            here["RI"] = np.abs(here["RI"])
+        network, plus, minus = source_elements(here, self.imbalanced_leg)
+        cards, biases = stage_cards(self.topology, here, plus, minus, self.models)
+        return (*network, *cards), biases
+
+    def _netlist(self, rows: Rows) -> str:
+        cards, biases = self._circuit(rows)
+        used = self.models.values()
+        watched = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
+        return netlist(cards, models=model_texts(used), supplies=supply_nodes(used), watched=watched)
 
     def elements(self, rows: Rows) -> tuple[Element, ...]:
-        """Elements of some of the cases.
+        """Elements of some of the cases, without what imported models hold.
 
         Parameters
         ----------
@@ -60,11 +78,7 @@ class Structure:
         tuple of Element
             In the order of the netlist, with values of shape (j,).
         """
-        here = {name: _taken(self.parts[name], rows) for name in self.parts if name in self.present}
-        if "RI" in here:
-            here["RI"] = np.abs(here["RI"])
-        network, plus, minus = source_elements(here, self.imbalanced_leg)
-        return (*network, *stage_elements(self.topology, here, plus, minus))
+        return tuple(card for card in self._circuit(rows)[0] if isinstance(card, Element))
 
     def values(self, rows: Rows) -> Values:
         """Element values of some of the cases: shape (j, m), a column per element of the deck."""
@@ -72,18 +86,21 @@ class Structure:
 
     def text(self, row: int) -> str:
         """Netlist of one case, without analyses."""
-        return netlist(self.elements(np.array([row])))
+        return self._netlist(np.array([row]))
 
     @property
-    def key(self) -> tuple[str, frozenset[str], str]:
+    def key(self) -> Hashable:
         """What two structures have in common when one deck serves both."""
-        return self.topology, self.present, self.imbalanced_leg
+        return self.topology, self.present, self.imbalanced_leg, frozenset(self.models.items())
 
     def deck(self) -> Deck:
         """Write the deck, with the values of the structure's first case."""
-        elements = self.elements(self.rows[:1])
+        row = self.rows[:1]
+        elements = self.elements(row)
         commands = tuple(_commands(element) for element in elements)
-        return Deck(netlist(elements), commands, np.array([element.values[0] for element in elements]))
+        values = np.array([element.values[0] for element in elements])
+        biases = tuple(bias.in_copy(COPIES[0]) for bias in self._circuit(row)[1])
+        return Deck(self._netlist(row), commands, values, biases, bool(self.models))
 
 
 def _taken(values: float | Values, rows: Rows) -> Values:
@@ -96,7 +113,9 @@ def _commands(element: Element) -> tuple[str, ...]:
     return tuple(f"alter {element.name.lower()}_{copy}{parameter} = " for copy in COPIES)
 
 
-def structures(topology: str, parts: GivenParts, count: int) -> list[Structure]:
+def structures(
+    topology: str, parts: GivenParts, count: int, models: Mapping[str, ImportedModel] = {}
+) -> list[Structure]:
     """Split cases by structure.
 
     Parameters
@@ -107,6 +126,8 @@ def structures(topology: str, parts: GivenParts, count: int) -> list[Structure]:
         Part values in SI units; a part that no case has needs no key.
     count : int
         Number of cases n.
+    models : mapping of str to ImportedModel
+        Imported models by op-amp instance, the same in all cases.
 
     Returns
     -------
@@ -129,6 +150,7 @@ def structures(topology: str, parts: GivenParts, count: int) -> list[Structure]:
                 "N" if sign.get("RI", 1) < 0 else "P",
                 parts,
                 np.flatnonzero(member.ravel() == pattern),
+                models,
             )
         )
     return result

@@ -14,6 +14,9 @@ __all__ = ["Bench", "Comparison", "bench_figures", "compare_figures"]
 FloatArray = npt.NDArray[np.float64]
 ComplexArray = npt.NDArray[np.complex128]
 
+LEAST_FARAD = 1e-18
+"""Below this a capacitance is the round-off of a solve."""
+
 FLAT_DB = 0.05
 """Change of the gain over the lowest octave beyond which the lowest frequency does not show its DC value."""
 
@@ -179,7 +182,7 @@ def bench_figures(bench: Bench) -> dict[str, float]:
         if admittance[0].real > 0:
             figures[f"input_resistance_{mode}"] = 1.0 / float(admittance[0].real)
         capacitance = float(admittance[last].imag / (2 * np.pi * f[last]))
-        if capacitance > 0:
+        if capacitance > LEAST_FARAD:
             figures[f"input_capacitance_{mode}"] = capacitance
     figures["output_resistance"] = float(np.abs(bench.output_impedance[0]))
     if bench.supply_gains is not None:

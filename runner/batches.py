@@ -2,18 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits.deck import Deck
+from modepair.circuits.deck import Bias, Deck
+from modepair.circuits.elements import GROUND
 from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
 from modepair.runner.errors import EngineDeadError, SimulationError
 
-__all__ = ["Batch", "Solved", "solve_batch"]
+__all__ = ["Batch", "Solved", "check_biases", "solve_batch"]
 
 
 @dataclass(frozen=True)
@@ -89,6 +90,37 @@ def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.f
             yield command + value
 
 
+def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
+    """Check the operating point of the loaded circuit, if it has imported op-amps.
+
+    Parameters
+    ----------
+    simulator : Engine
+        The simulator, with the circuit loaded.
+    biases : sequence of Bias
+        What is to be checked.
+
+    Raises
+    ------
+    SimulationError
+        If there is no operating point, or a curve about it would mean nothing.
+    """
+    if not biases:
+        return
+    nodes = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
+    try:
+        found = simulator.operating_point([node.lower() for node in nodes])
+    except EngineDeadError:
+        raise
+    except SimulationError as error:
+        raise SimulationError(f"there is no operating point: {error}") from error
+    volts = {GROUND: 0.0, **dict(zip(nodes, found.tolist(), strict=True))}
+    for bias in biases:
+        reason = bias.fault(*(volts[node] for node in bias.nodes))
+        if reason:
+            raise SimulationError(reason)
+
+
 def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = None) -> Solved:
     """Solve the cases of a batch, each in both drives.
 
@@ -120,10 +152,11 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
             continue
         try:
             if loaded is None:
-                simulator.load(batch.deck.text)
+                simulator.load(batch.deck.text, nonlinear=batch.deck.nonlinear)
                 loaded = batch.deck.values
             simulator.alter(list(_alterations(batch.deck, loaded, values)))
             loaded = values
+            check_biases(simulator, batch.deck.biases)
             gains[index] = analyses.solve(simulator, batch.vectors)
         except EngineDeadError:
             raise

@@ -8,8 +8,8 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 
-from modepair.circuits import candidates
-from modepair.circuits.bench import macromodel_mounting
+from modepair.circuits import candidates, imported_models
+from modepair.circuits.bench import imported_mounting, macromodel_mounting
 from modepair.reports.bench import Bench
 from modepair.reports.bench_tables import BenchPage, bench_markdown, bench_rows
 from modepair.runner.benching import measure_opamps
@@ -83,6 +83,8 @@ def bench(opamps: Mapping[str, Opamp], output: Path | None = None, *, jobs: int 
 
     Raises
     ------
+    SpecError
+        If an imported model's file is refused.
     EngineMissingError
         If there is no ngspice library.
     OutputError
@@ -90,7 +92,11 @@ def bench(opamps: Mapping[str, Opamp], output: Path | None = None, *, jobs: int 
     """
     started = datetime.now(UTC)
     locate_library()
-    mountings = {name: macromodel_mounting(opamp.parameters) for name, opamp in opamps.items()}
+    models = imported_models(opamps, opamps)
+    mountings = {
+        name: imported_mounting(models[name]) if name in models else macromodel_mounting(opamp.parameters)
+        for name, opamp in opamps.items()
+    }
     pages: list[BenchPage] = []
     failures: dict[str, SimulationError] = {}
     engine = ""
@@ -98,7 +104,7 @@ def bench(opamps: Mapping[str, Opamp], output: Path | None = None, *, jobs: int 
         for name, result, version in measure_opamps(executors, jobs or os.cpu_count() or 1, mountings):
             engine = engine or version
             if isinstance(result, Bench):
-                pages.append(BenchPage(result, opamps[name].parameters))
+                pages.append(BenchPage(result, opamps[name].declared, name in models))
             else:
                 failures[name] = result
     if output is not None and pages:

@@ -9,9 +9,11 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
+from modepair.circuits import Bias
 from modepair.circuits.bench import Mounting, bench_netlist
 from modepair.reports.bench import Bench
 from modepair.runner.allowances import MEMORY_BYTES, TIME_LIMIT_S, Allowance, limited
+from modepair.runner.batches import check_biases
 from modepair.runner.engine import engine
 from modepair.runner.errors import EngineDeadError, SimulationError
 from modepair.runner.workers import ExecutorFactory, submit
@@ -39,10 +41,12 @@ def _frequencies() -> npt.NDArray[np.float64]:
     return np.geomspace(BENCH_START_HZ, BENCH_STOP_HZ, decades * POINTS_PER_DECADE + 1)
 
 
-def _solve(text: str, vectors: tuple[str, ...], nonlinear: bool) -> Solve:
+def _solve(text: str, vectors: tuple[str, ...], bias: Bias | None) -> Solve:
     with limited(Allowance(TIME_LIMIT_S, MEMORY_BYTES)):
         simulator = engine()
-        simulator.load(text, nonlinear=nonlinear)
+        simulator.load(text, nonlinear=bias is not None)
+        if bias is not None:
+            check_biases(simulator, [bias])
         command = f"ac dec {POINTS_PER_DECADE} {BENCH_START_HZ!r} {BENCH_STOP_HZ!r}"
         return Solve(simulator.analyse(command, _frequencies(), vectors), simulator.version)
 
@@ -70,7 +74,7 @@ def measure_opamps(
     version : str
         Version of ngspice; empty without a result.
     """
-    tasks = {name: (*bench_netlist(mounting), bool(mounting.models)) for name, mounting in mountings.items()}
+    tasks = {name: (*bench_netlist(mounting), mounting.bias) for name, mounting in mountings.items()}
     with executors(min(jobs, max(1, len(tasks)))) as executor:
         futures = {name: submit(executor, _solve, *task) for name, task in tasks.items()}
         for name, future in futures.items():

@@ -110,7 +110,12 @@ class _Case:
         self.drawn = drawn
         self.solver = solver
         self.decks = decks
-        self.defects = imperfections(drawn.topology, self.board({}))
+        self.defects = {
+            name: ideal
+            for name, ideal in imperfections(drawn.topology, self.board({})).items()
+            # An imported model has no parameters that could be made ideal.
+            if not all(part.partition(".")[0] in drawn.models for part in ideal)
+        }
 
     def board(self, edges: Mapping[str, float], without: str = "") -> dict[str, float]:
         """Part values with some tolerances at their edges, and perhaps one imperfection taken away."""
@@ -127,7 +132,15 @@ class _Case:
         return values
 
     def solve(self, rows: Sequence[Mapping[str, Value]], analyses: Analyses) -> ModePair:
-        return solve_rows(self.solver, self.drawn.topology, _stacked(rows), len(rows), analyses, self.decks)
+        return solve_rows(
+            self.solver,
+            self.drawn.topology,
+            _stacked(rows),
+            len(rows),
+            analyses,
+            self.decks,
+            self.drawn.models,
+        )
 
 
 def _carried(ideal: float, on_board: float | None, nominal: float | None) -> float:

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import Deck, structures
+from modepair.circuits import Deck, ImportedModel, structures
 from modepair.reports import ModePair
 from modepair.runner.analyses import Analyses
 from modepair.runner.batches import Batch
@@ -27,6 +27,7 @@ def solve_rows(
     count: int,
     analyses: Analyses,
     decks: dict[object, Deck],
+    models: Mapping[str, ImportedModel] = {},
 ) -> ModePair:
     """Solve circuits of one topology.
 
@@ -44,6 +45,8 @@ def solve_rows(
         What to run on each.
     decks : dict
         Decks by structure, kept from one call to the next.
+    models : mapping of str to ImportedModel
+        Imported op-amps by instance.
 
     Returns
     -------
@@ -57,7 +60,7 @@ def solve_rows(
     """
 
     def batches() -> Iterator[Batch]:
-        for structure in structures(topology, parts, count):
+        for structure in structures(topology, parts, count, models):
             deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
             for start in range(0, len(structure.rows), BATCH_CASES):
                 rows = structure.rows[start : start + BATCH_CASES]

@@ -11,6 +11,7 @@ from collections.abc import Collection, Iterator, Mapping
 from modepair.sweeps.axes import MOST_CASES
 from modepair.sweeps.document import Document, Location, Node
 from modepair.sweeps.faults import Fault, RefusedError, shown
+from modepair.sweeps.imported import imported_faults
 from modepair.sweeps.parts import (
     INSTANCES,
     OPAMP_PARAMETERS,
@@ -271,7 +272,8 @@ def candidate_faults(
     axes
         Parameters of it that axes give.
     """
-    for parameter in REQUIRED_PARAMETERS:
+    yield from imported_faults(document, name, entries)
+    for parameter in () if "file" in entries else REQUIRED_PARAMETERS:
         if parameter not in entries and parameter not in axes:
             example = OPAMP_PARAMETERS[parameter].takes
             message = f"{parameter} is missing; it takes {example}"

@@ -22,6 +22,7 @@ from modepair.sweeps.faults import (
     form_of,
     shown,
 )
+from modepair.sweeps.imported import ineffective_faults
 from modepair.sweeps.interference import interference_faults
 from modepair.sweeps.limits import limit_faults
 from modepair.sweeps.measured import Measurement, measured_faults, read_measurements
@@ -131,8 +132,9 @@ def _read_spec(
         raise SpecError(ordered)
     if spec is None:
         raise SpecError([Fault(document.file, 0, 0, "", "the file cannot be read as a spec")])
-    bound = spec.bind(document, {**candidates, **from_files, **spec.opamps}, axes)
-    faults = gain_faults(bound)
+    in_place_ones = {name: opamp.named(name, document) for name, opamp in spec.opamps.items()}
+    bound = spec.bind(document, {**candidates, **from_files, **in_place_ones}, axes)
+    faults = [*gain_faults(bound), *ineffective_faults(bound)]
     if spec.tolerance and not faults:
         sweep = expand(bound)
         valued = {name for block in sweep.blocks for name in (*block.parts, *block.tolerances)}
@@ -176,7 +178,7 @@ def read_candidates(path: str | Path) -> dict[str, Opamp]:
     ordered = _in_order(document, faults, {})
     if ordered or read is None:
         raise SpecError(ordered)
-    return read.opamps
+    return {name: opamp.named(name, document) for name, opamp in read.opamps.items()}
 
 
 def _read_files(document: Document) -> tuple[dict[str, Opamp], dict[Location, tuple[Fault, ...]]]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from pathlib import Path
 from typing import Annotated, Any, Protocol
 
 import numpy as np
@@ -12,7 +13,9 @@ from numpy.typing import NDArray
 from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
 from pydantic_core import CoreSchema, core_schema
 
-from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.document import Document
+from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.imported import PIN, SUBCIRCUIT, SUPPLY
 from modepair.sweeps.parts import (
     INSTANCES,
     OPAMP_PARAMETERS,
@@ -143,10 +146,20 @@ class Section(BaseModel):
 
 
 class Opamp(Section):
-    """An op-amp candidate's small-signal macromodel; every value in SI units, ratios plain.
+    """An op-amp candidate: a small-signal macromodel, or a model imported from a file with declared values beside it.
+
+    Every value is in SI units, ratios plain. An imported model has `file`, `subcircuit` and `pins`.
 
     Parameters
     ----------
+    file
+        A SPICE file in the folder of the file that gives the candidate, or below it; None: a macromodel.
+    subcircuit
+        Name of its subcircuit.
+    pins
+        What each of the subcircuit's ports is connected to, in order.
+    supplies
+        Positive and negative supply, V.
     open_loop_gain
         Gain at dc, V/V.
     gain_bandwidth
@@ -171,8 +184,12 @@ class Opamp(Section):
         Free number for comparisons.
     """
 
-    open_loop_gain: Annotated[float, _parameter("open_loop_gain")]
-    gain_bandwidth: Annotated[float, _parameter("gain_bandwidth")]
+    file: Annotated[str, Reads(FILE_NAME)] | None = None
+    subcircuit: Annotated[str, Reads(SUBCIRCUIT)] | None = None
+    pins: tuple[Annotated[str, Reads(PIN)], ...] | None = None
+    supplies: tuple[Annotated[float, Reads(SUPPLY)], ...] | None = None
+    open_loop_gain: Annotated[float, _parameter("open_loop_gain")] | None = None
+    gain_bandwidth: Annotated[float, _parameter("gain_bandwidth")] | None = None
     phase_margin: Annotated[float, _parameter("phase_margin")] | None = None
     cmrr: Annotated[float, _parameter("cmrr")] | None = None
     cmrr_corner: Annotated[float, _parameter("cmrr_corner")] | None = None
@@ -187,9 +204,35 @@ class Opamp(Section):
     note: Annotated[str, Reads(NOTE)] = ""
     unit_price: Annotated[float, Reads(NUMBER)] | None = None
 
+    _name: str = PrivateAttr(default="")
+    _document: Document | None = PrivateAttr(default=None)
+
+    def named(self, name: str, document: Document) -> Opamp:
+        """Return the candidate with its name and the file that gives it."""
+        bound = self.model_copy()
+        bound._name = name
+        bound._document = document
+        return bound
+
+    @property
+    def folder(self) -> Path:
+        """The folder in which its model's file lies."""
+        return Path(self._document.file).parent if self._document else Path()
+
+    def fault(self, key: str, message: str) -> Fault:
+        """Return a fault at one of its keys."""
+        if self._document is None:
+            return Fault("", 0, 0, f"opamps.{self._name}.{key}", message)
+        return self._document.fault(("opamps", self._name, key), message)
+
     @property
     def parameters(self) -> dict[str, float]:
-        """The macromodel's parameters that are given, SI values by name."""
+        """The macromodel's parameters that are given, SI values by name; none of an imported model."""
+        return {} if self.file is not None else self.declared
+
+    @property
+    def declared(self) -> dict[str, float]:
+        """The values given under the names of parameters, SI values by name."""
         values = {name: getattr(self, name) for name in OPAMP_PARAMETERS}
         return {name: value for name, value in values.items() if value is not None}
 

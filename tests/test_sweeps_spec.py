@@ -13,6 +13,7 @@ import pytest
 from pydantic import ValidationError
 
 from modepair.sweeps import OPAMP_PARAMETERS, PARTS, Opamp, Spec, json_schema, load_spec
+from modepair.sweeps.imported import MODEL_KEYS
 
 TEXT = """\
 title: Silo weighing, bridge front end
@@ -110,7 +111,7 @@ def test_the_schema_enumerates_parts_and_parameters() -> None:
     named = {name for name in (*stage["properties"], *source["properties"]) if "." not in name}
     assert named == set(PARTS)
     assert {f"A1.{parameter}" for parameter in OPAMP_PARAMETERS} <= set(stage["properties"])
-    assert set(properties("Opamp")) == {*OPAMP_PARAMETERS, "note", "unit_price"}
+    assert set(properties("Opamp")) == {*OPAMP_PARAMETERS, *MODEL_KEYS, "note", "unit_price"}
     assert properties("Stage")["topology"] == {
         "enum": ["difference", "buffered-difference", "two-opamp", "three-opamp"],
         "title": "Topology",
