@@ -44,9 +44,10 @@ def value_text(name: str, value: Value) -> str:
     unit = PARTS[name].kind.unit
     values = np.unique(np.atleast_1d(value))
     if values.size > 3:
-        return f"{render(values[0], digits=4)} to {render(values[-1], unit, digits=4)}"
-    texts = [render(one, digits=5) for one in values[:-1].tolist()]
-    return ", ".join([*texts, render(float(values[-1]), unit, digits=5)])
+        return f"{render(float(values[0]), unit, digits=4)} to {render(float(values[-1]), unit, digits=4)}"
+    texts = [render(one, unit, digits=5) for one in values.tolist()]
+    short = [text.removesuffix(f" {unit}") for text in texts[:-1]]
+    return ", ".join([*short, texts[-1]])
 
 
 def part_values(blocks: list[Mapping[str, Value]]) -> dict[str, Value]:
