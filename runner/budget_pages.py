@@ -6,6 +6,8 @@ from collections.abc import Mapping, Sequence
 
 import pandas as pd
 
+from modepair.reports import write_plot
+from modepair.reports.budget_plots import SpotContributions, plot_budget_shares, plot_budget_spots
 from modepair.runner.analyses import Analyses
 from modepair.runner.budgeting import CaseBudget
 from modepair.runner.folder import RunFolder
@@ -14,7 +16,10 @@ from modepair.runner.results import Results
 from modepair.runner.worst_case import MOST_CASES, board_table, budget_cases, budget_table, worst_case_table
 from modepair.sweeps import Sweep
 
-__all__ = ["case_labels", "work_out_worst_case", "write_budget"]
+__all__ = ["case_labels", "plot_budgets", "work_out_worst_case", "write_budget"]
+
+PLOTTED_CASES = 24
+"""Cases for which charts are drawn."""
 
 
 def write_budget(
@@ -47,6 +52,34 @@ def write_budget(
     if any(one.drawn.causes for one in budgets):
         board_table(budgets).to_csv(folder.path("worst_boards.csv"), index=False)
     return budget, worst
+
+
+def plot_budgets(
+    folder: RunFolder, budgets: Sequence[CaseBudget], labels: Mapping[int, str], title: str
+) -> None:
+    """Draw bars at the spots and shares over frequency, for up to `PLOTTED_CASES` cases.
+
+    Parameters
+    ----------
+    folder : RunFolder
+        Gets `budget-case-1-spots.png`, `budget-case-1-shares.png` and so on, and the same as SVG.
+    budgets : sequence of CaseBudget
+        The cases.
+    labels : mapping of int to str
+        For each case number what tells it apart.
+    title : str
+        Title of the spec.
+    """
+    for one in budgets[:PLOTTED_CASES]:
+        name, label = f"budget-case-{one.drawn.case}", labels[one.drawn.case]
+        spots = [
+            SpotContributions(spot.frequency_hz, spot.contributions, abs(spot.worst)) for spot in one.spots
+        ]
+        if any(spot.contributions for spot in spots):
+            bars = plot_budget_spots(spots, title=title, subtitle=label)
+            write_plot(bars, folder.path(f"{name}-spots"))
+            shares = plot_budget_shares(one.frequency_hz, one.contributions, title=title, subtitle=label)
+            write_plot(shares, folder.path(f"{name}-shares"))
 
 
 def case_labels(sweep: Sweep, cases: Sequence[int]) -> dict[int, str]:

@@ -36,6 +36,8 @@ class BudgetRun:
         As `modepair.runner.worst_case` makes them.
     labels : dict of int to str
         For each case number what tells it apart.
+    warnings : tuple of str
+        What its op-amp models cannot show.
     """
 
     folder: Path
@@ -43,6 +45,7 @@ class BudgetRun:
     budget: pd.DataFrame
     worst_case: pd.DataFrame
     labels: dict[int, str]
+    warnings: tuple[str, ...] = ()
 
 
 def run_budget(
@@ -98,21 +101,25 @@ def run_budget(
         BatchSolver(factory, jobs or os.cpu_count() or 1) as solver,
     ):
         solver.warm()
-        from modepair.runner.budget_pages import case_labels, write_budget
+        from modepair.runner.budget_pages import case_labels, plot_budgets, write_budget
+        from modepair.runner.model_warnings import model_warnings
         from modepair.runner.record import versions
         from modepair.runner.worst_case import budget_cases
 
         budgets = list(budget_cases(sweep, solver, plan_analyses(spec.frequency), numbers))
         labels = case_labels(sweep, numbers)
         budget, worst = write_budget(folder, budgets, None, labels)
+        warnings = model_warnings(sweep, factory, jobs or os.cpu_count() or 1)
+        plot_budgets(folder, budgets, labels, spec.title)
         folder.publish(
             {
                 "title": spec.title,
                 "spec_file": Path(spec.path).name,
                 "spec_digest": spec.digest,
                 "spec": spec.text,
+                "warnings": list(warnings),
                 "versions": versions(""),
                 "started": started.isoformat(timespec="seconds"),
             }
         )
-    return BudgetRun(folder.target, spec, budget, worst, labels)
+    return BudgetRun(folder.target, spec, budget, worst, labels, warnings)
