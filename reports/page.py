@@ -74,6 +74,8 @@ class Page:
         What is to be said of measurements.
     measured_table : sequence of Column
         Their differences, per frequency.
+    warnings : sequence of str
+        What the op-amp models cannot show; they stand at the top.
     caution_flags : sequence of str
         Keys of `modepair.reports.summary.CAUTIONS`.
     provenance : mapping of str to str
@@ -105,6 +107,7 @@ class Page:
     measured: Sequence[str] = ()
     measured_table: Sequence[Column] = ()
     caution_flags: Sequence[str] = ("model", "nominal")
+    warnings: Sequence[str] = ()
     stills: Mapping[str, str] = field(default_factory=dict)
 
 
@@ -144,7 +147,7 @@ def page_html(page: Page) -> str:
         thinned=MOST_POINTS if thin else 0,
         schematics={name: Markup(svg) for name, svg in page.schematics.items()},
         stills={name: base64.b64encode(svg.encode()).decode() for name, svg in page.stills.items()},
-        dangers=[CAUTIONS[flag] for flag in DANGERS if flag in page.caution_flags],
+        dangers=[*page.warnings, *(CAUTIONS[flag] for flag in DANGERS if flag in page.caution_flags)],
         cautions=cautions(page.caution_flags),
     )
 

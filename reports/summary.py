@@ -93,6 +93,8 @@ class Summary:
         Caption to file name, relative to the page.
     where : str
         Where all cases can be read.
+    warnings : sequence of str
+        What the op-amp models cannot show; they stand at the top.
     opening, further : mapping of str to str
         Sections before what was asked, and after the results: heading to Markdown, which is not escaped again.
     """
@@ -107,6 +109,7 @@ class Summary:
     caution_flags: Sequence[str] = ("model", "nominal")
     plots: Mapping[str, str] = field(default_factory=dict)
     where: str = "cases.csv"
+    warnings: Sequence[str] = ()
     opening: Mapping[str, str] = field(default_factory=dict)
     further: Mapping[str, str] = field(default_factory=dict)
 
@@ -173,6 +176,7 @@ def summary_text(summary: Summary) -> str:
         ],
         more_failed=max(0, len(failed) - ROWS_OF_MANY),
         where=escape_markdown(summary.where),
+        warnings=[escape_markdown(text) for text in summary.warnings],
         opening=summary.opening,
         further=summary.further,
         cautions=[escape_markdown(text) for text in cautions(summary.caution_flags)],

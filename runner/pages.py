@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from functools import partial
 from pathlib import Path
 
@@ -81,6 +82,11 @@ def asked(sweep: Sweep) -> dict[str, str]:
         name = key if prefix.endswith("parts.") else key.replace("_", " ").replace(".", " ")
         found[SECTIONS[prefix]].append(f"{name} {_written(value, kinds[path])}")
     texts = {section: ", ".join(items) for section, items in found.items() if items}
+    for name in used:
+        opamp = spec.candidates[name]
+        if opamp.file is not None:
+            opamps[name] = [f"model {opamp.file}", f"subcircuit {opamp.subcircuit}"]
+            opamps[name] += [f"supply {render(volts, 'V')}" for volts in opamp.supplies or ()]
     texts |= {f"op-amp {name}": ", ".join(items) for name, items in opamps.items()}
     plan = spec.frequency
     texts["frequency"] = (
@@ -103,6 +109,7 @@ def write_pages(
     judged: Judged,
     measured: str = "",
     worst: pd.DataFrame | None = None,
+    warnings: Sequence[str] = (),
 ) -> None:
     """Write plots and summary of a run.
 
@@ -122,6 +129,8 @@ def write_pages(
         The section on measurements, in Markdown; empty where there is none.
     worst : DataFrame, optional
         The worst case of each case.
+    warnings : sequence of str
+        What its op-amp models cannot show.
     """
     spec = sweep.spec
     plots = {}
@@ -148,6 +157,7 @@ def write_pages(
         provenance=provenance,
         caution_flags=("model", "nominal", *spec.cautions),
         plots=plots,
+        warnings=warnings,
         opening=_verdict(sweep, results, judged),
         further=_boards(sweep, results, worst)
         | _interference(sweep, results)

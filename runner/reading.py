@@ -111,7 +111,19 @@ def open_run(folder: str | Path) -> Run:
         raise ReadingError(f"{folder / 'cases.csv'}: has no column {lacking[0]}; run the spec again")
     if "above_floor" in cases:
         cases["above_floor"] = cases["above_floor"].fillna("")
-    return Run(folder, spec.with_measurements(_measurements(folder, spec)), cases, _verdicts(folder))
+    return Run(
+        folder,
+        spec.with_measurements(_measurements(folder, spec)),
+        cases,
+        _verdicts(folder),
+        warnings=_warnings(record),
+    )
+
+
+def _warnings(record: dict[str, Any]) -> tuple[str, ...]:
+    """What a run said of its op-amp models; one of an older version said nothing."""
+    found = record.get("warnings", [])
+    return tuple(str(text) for text in found) if isinstance(found, list) else ()
 
 
 def _verdicts(folder: Path) -> pd.DataFrame:

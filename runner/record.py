@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
+import hashlib
 import platform
+from collections.abc import Sequence
 from datetime import datetime
 from importlib.metadata import version
 from pathlib import Path
 from typing import Any
 
+from modepair.circuits import imported_models
 from modepair.runner.results import Results
 from modepair.sweeps import Spec, Sweep
 
@@ -41,7 +44,9 @@ def provenance(spec: Spec, engine: str, started: datetime) -> dict[str, str]:
     }
 
 
-def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float) -> dict[str, Any]:
+def run_record(
+    sweep: Sweep, results: Results, started: datetime, seconds: float, warnings: Sequence[str] = ()
+) -> dict[str, Any]:
     """Content of `run.json`.
 
     Parameters
@@ -54,6 +59,8 @@ def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float
         When it began.
     seconds : float
         How long it took, up to the writing of this record.
+    warnings : sequence of str
+        What its op-amp models cannot show.
 
     Returns
     -------
@@ -69,6 +76,11 @@ def run_record(sweep: Sweep, results: Results, started: datetime, seconds: float
         "spec_digest": spec.digest,
         "spec": spec.text,
         "opamps": {name: spec.candidates[name].model_dump(exclude_none=True) for name in used},
+        "models": {
+            name: hashlib.sha256(model.text.encode()).hexdigest()
+            for name, model in imported_models(used, spec.candidates).items()
+        },
+        "warnings": list(warnings),
         "axes": {axis.path: list(axis.labels) for axis in sweep.axes},
         "versions": versions(results.engine),
         "seed": int(spec.tolerance.seed) if spec.tolerance else None,

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 import pandas as pd
 
+from modepair.reports.markdown import escape_markdown
 from modepair.reports.page import Page, page_html
 from modepair.reports.ranking import ranking_csv, ranking_markdown
 from modepair.reports.readings import decibel_text, frequency_text
@@ -97,6 +98,7 @@ def page_of(
         tables=_tables(runs, compared),
         measured=[line for run, table in bench for line in measured_lines(table, run.spec, run.cases)],
         measured_table=_bench_columns(pd.concat([table for _, table in bench], ignore_index=True)),
+        warnings=list(dict.fromkeys(text for run in runs for text in run.warnings)),
         caution_flags=("model", "nominal", *(flag for spec in specs for flag in spec.cautions)),
         provenance=provenance,
         stills=drawn.stills,
@@ -267,6 +269,7 @@ def write_report(
     verdicts: pd.DataFrame,
     provenance: Mapping[str, str],
     baseline: Baseline | None = None,
+    warnings: Sequence[str] = (),
 ) -> None:
     """Write `report.html` into a run folder.
 
@@ -282,11 +285,19 @@ def write_report(
         What makes the run repeatable.
     baseline : Baseline, optional
         Curves accepted earlier.
+    warnings : sequence of str
+        What the op-amp models cannot show.
     """
-    run = Run(folder.building, spec, cases, verdicts)
+    run = Run(folder.building, spec, cases, verdicts, warnings=warnings)
     any_done = bool((cases["state"] == "done").any())
     compared = compare_runs([run]) if any_done and candidate_axes(spec, ()) else None
     folder.write_text("report.html", page_html(page_of([run], provenance, compared, baseline)))
+
+
+def _warned(runs: Sequence[Run]) -> str:
+    """Warnings of several runs, for the top of a page in Markdown."""
+    texts = dict.fromkeys(text for run in runs for text in run.warnings)
+    return "".join(f"**Warning:** {escape_markdown(text)}\n\n" for text in texts)
 
 
 def write_comparison(output: Path, compared: Compared) -> list[Path]:
@@ -314,7 +325,7 @@ def write_comparison(output: Path, compared: Compared) -> list[Path]:
     title = runs[0].spec.title if len(runs) == 1 else ""
     texts = {
         "comparison.csv": ranking_csv(comparison).to_csv(index=False),
-        "comparison.md": ranking_markdown(comparison, spots, title),
+        "comparison.md": _warned(runs) + ranking_markdown(comparison, spots, title),
         "report.html": page_html(page_of(runs, _made_from(runs, compared.names), compared)),
     }
     written = []

@@ -45,6 +45,8 @@ class Run:
         A row per case and judged quantity, as in verdicts.csv; no rows where nothing is judged.
     changes : sequence of str
         What else differs from what the baseline came from.
+    warnings : sequence of str
+        What its op-amp models cannot show, for the top of every page.
     """
 
     folder: Path
@@ -52,6 +54,7 @@ class Run:
     cases: pd.DataFrame
     verdicts: pd.DataFrame
     changes: Sequence[str] = ()
+    warnings: Sequence[str] = ()
 
     @cached_property
     def curves(self) -> pd.DataFrame:
@@ -149,6 +152,7 @@ def run(
         from modepair.runner.journal import Journal, run_key
         from modepair.runner.judging import judge_run
         from modepair.runner.measuring import measured_section, write_measured
+        from modepair.runner.model_warnings import model_warnings
         from modepair.runner.pages import write_pages
         from modepair.runner.plans import Plan, plan_batches, plan_draws
         from modepair.runner.record import provenance, run_record
@@ -187,17 +191,25 @@ def run(
         if draw is not None:
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
+        warnings = model_warnings(sweep, executors or local, workers)
         measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
         origin = provenance(spec, results.engine, started)
         write_pages(
-            folder, sweep, results, origin, judged, measured_section(measured, spec, results.cases), worst
+            folder,
+            sweep,
+            results,
+            origin,
+            judged,
+            measured_section(measured, spec, results.cases),
+            worst,
+            warnings,
         )
         if page and draw is None:
             from modepair.runner.report import write_report
 
-            write_report(folder, spec, results.cases, judged.verdicts, origin, baseline)
-        folder.publish(run_record(sweep, results, started, time.perf_counter() - clock))
-    return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes)
+            write_report(folder, spec, results.cases, judged.verdicts, origin, baseline, warnings)
+        folder.publish(run_record(sweep, results, started, time.perf_counter() - clock, warnings))
+    return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes, warnings)
 
 
 def _kinds(sweep: Sweep) -> list[int]:

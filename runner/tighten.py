@@ -17,6 +17,7 @@ from modepair.runner.batches import Batch
 from modepair.runner.budgeting import budget_case
 from modepair.runner.engine import locate_library
 from modepair.runner.errors import RequestError
+from modepair.runner.model_warnings import model_warnings
 from modepair.runner.plans import DrawnCase, case_draws, drawn_case
 from modepair.runner.pool import BatchSolver, worker_pool
 from modepair.sweeps import Spec, Streams, Sweep, expand, load_spec
@@ -87,6 +88,8 @@ class Tightening:
         The yield asked for.
     cases : tuple of CaseGrades
         Each case.
+    warnings : tuple of str
+        What its op-amp models cannot show.
     """
 
     spec: Spec
@@ -95,6 +98,7 @@ class Tightening:
     key: str
     share: float
     cases: tuple[CaseGrades, ...]
+    warnings: tuple[str, ...] = ()
 
 
 def tighten(
@@ -161,7 +165,8 @@ def tighten(
     with worker_pool() as factory, BatchSolver(factory, jobs or os.cpu_count() or 1) as solver:
         search = _Search(streams, solver, analyses, mask_db, entry, key, wanted, progress)
         cases = tuple(search.case(drawn_case(sweep, case)) for case in range(1, sweep.count + 1))
-    return Tightening(spec, sweep, entry, key, wanted, cases)
+        warnings = model_warnings(sweep, factory, jobs or os.cpu_count() or 1)
+    return Tightening(spec, sweep, entry, key, wanted, cases, warnings)
 
 
 @dataclass

@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-from modepair.runner.cli.options import AsJson, Folder, Jobs, SpecFile, shown_path
+from modepair.runner.cli.options import AsJson, Folder, Jobs, SpecFile, print_warnings, shown_path
 
 __all__ = ["budget_command"]
 
@@ -34,6 +34,7 @@ def budget_command(
     console = console_for(sys.stdout)
     if result.spec.title:
         console.print(f"{result.spec.title}\n", markup=False)
+    print_warnings(console, result.warnings)
     for number in result.worst_case["case"].unique().tolist():
         budget = result.budget[result.budget["case"] == number]
         worst = result.worst_case[result.worst_case["case"] == number]

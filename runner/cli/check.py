@@ -77,12 +77,13 @@ def _decibels(text: str) -> float:
 def _print_check(result: Check) -> None:
     from modepair.reports.tables import console_for
     from modepair.reports.verdicts import print_verdicts
-    from modepair.runner.cli.options import shown_path
+    from modepair.runner.cli.options import print_warnings, shown_path
 
     console = console_for(sys.stdout)
     run = result.run
     if run.spec.title:
         console.print(f"{run.spec.title}\n", markup=False, soft_wrap=True)
+    print_warnings(console, run.warnings)
     if len(run.verdicts):
         changes = run.changes if not result.passed else ()
         print_verdicts(console, run.verdicts, run.cases, run.spec.axes, changes)
@@ -97,6 +98,7 @@ def _as_json(result: Check) -> str:
         "folder": str(result.run.folder),
         "passed": result.passed,
         "failed": result.run.failed,
+        "warnings": list(result.run.warnings),
         "baseline": str(result.baseline) if result.baseline else None,
         "accepted": result.accepted,
         "verdicts": rows,

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, shown_path
+from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, print_warnings, shown_path
 from modepair.runner.cli.progress import progress_bar
 
 if TYPE_CHECKING:
@@ -61,7 +61,9 @@ def compare_command(
         from modepair.reports.tables import console_for
 
         title = opened[0].spec.title if len(opened) == 1 else ""
-        print_ranking(console_for(sys.stdout), compared.comparison, opened[0].spec.frequency.spots, title)
+        console = console_for(sys.stdout)
+        print_warnings(console, dict.fromkeys(text for run in opened for text in run.warnings))
+        print_ranking(console, compared.comparison, opened[0].spec.frequency.spots, title)
         for path in written:
             print(shown_path(path))
     if any(run.failed for run in opened):

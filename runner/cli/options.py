@@ -2,12 +2,26 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from pathlib import Path
-from typing import Annotated
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-__all__ = ["FAILING", "SIMULATION_FAILED", "USAGE", "AsJson", "Folder", "Jobs", "SpecFile", "shown_path"]
+if TYPE_CHECKING:
+    from rich.console import Console
+
+__all__ = [
+    "FAILING",
+    "SIMULATION_FAILED",
+    "USAGE",
+    "AsJson",
+    "Folder",
+    "Jobs",
+    "SpecFile",
+    "print_warnings",
+    "shown_path",
+]
 
 FAILING = 1
 USAGE = 2
@@ -22,6 +36,16 @@ Jobs = Annotated[
     ),
 ]
 AsJson = Annotated[bool, typer.Option("--json", help="Print JSON for a script instead of a table.")]
+
+
+def print_warnings(console: Console, warnings: Iterable[str]) -> None:
+    """Print what op-amp models cannot show, at the top of what a command prints."""
+    told = False
+    for text in warnings:
+        console.print(f"WARNING {text}", style="red", markup=False, soft_wrap=True)
+        told = True
+    if told:
+        console.print()
 
 
 def shown_path(path: Path) -> Path:

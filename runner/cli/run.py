@@ -8,7 +8,15 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from modepair.runner.cli.options import SIMULATION_FAILED, AsJson, Folder, Jobs, SpecFile, shown_path
+from modepair.runner.cli.options import (
+    SIMULATION_FAILED,
+    AsJson,
+    Folder,
+    Jobs,
+    SpecFile,
+    print_warnings,
+    shown_path,
+)
 from modepair.runner.cli.progress import progress_bar
 
 if TYPE_CHECKING:
@@ -70,6 +78,7 @@ def _print_run(result: Run) -> None:
     console = console_for(sys.stdout)
     if spec.title:
         console.print(f"{spec.title}\n", markup=False)
+    print_warnings(console, result.warnings)
     band = (spec.frequency.start, spec.frequency.stop)
     print_cases(
         console, result.cases, spec.axes, spec.frequency.spots, band, str(result.folder / "cases.csv")
@@ -91,5 +100,10 @@ def _print_run(result: Run) -> None:
 
 def _as_json(result: Run) -> str:
     rows = json.loads(result.cases.to_json(orient="records", double_precision=15))
-    content = {"folder": str(result.folder), "failed": result.failed, "cases": rows}
+    content = {
+        "folder": str(result.folder),
+        "failed": result.failed,
+        "warnings": list(result.warnings),
+        "cases": rows,
+    }
     return json.dumps(content, indent=2, ensure_ascii=False)

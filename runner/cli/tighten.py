@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from modepair.runner.cli.options import FAILING, AsJson, Jobs, SpecFile
+from modepair.runner.cli.options import FAILING, AsJson, Jobs, SpecFile, print_warnings
 
 if TYPE_CHECKING:
     from modepair.runner.tighten import Tightening
@@ -59,6 +59,7 @@ def _print(result: Tightening) -> None:
     from modepair.runner.budget_pages import case_labels
 
     console = console_for(sys.stdout)
+    print_warnings(console, result.warnings)
     parts = " ".join(result.spec.tolerance.parts[result.entry].of) if result.spec.tolerance else ""
     console.print(
         f"{result.key} of {parts}: the widest grade with which {percent_text(result.share)} % of boards pass",
