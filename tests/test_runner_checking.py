@@ -41,7 +41,7 @@ def change(spec: Path, old: str, new: str) -> None:
 
 
 def expected_case_5_db() -> float:
-    """Closed form of the difference stage, first order: rho = d4/(1 + G) + k, d4 = 1e-4, G = 1, k = 1e-4 (1 + jf/1k)."""
+    """Closed form of the difference stage, first order: rho = d4/2 + k, d4 = 1e-4, k = 1e-4 (1 + jf/1k)."""
     return -20 * math.log10(abs(1e-4 / 2 + 1e-4 * (1 + 3j)))
 
 
