@@ -10,6 +10,9 @@ from .faults import Fault as Fault
 from .faults import ModepairError as ModepairError
 from .faults import RefusedError as RefusedError
 from .faults import SpecError as SpecError
+from .interference import Interference as Interference
+from .limits import Limits as Limits
+from .limits import Mask as Mask
 from .parts import OPAMP_PARAMETERS as OPAMP_PARAMETERS
 from .parts import PARTS as PARTS
 from .parts import TOPOLOGIES as TOPOLOGIES
