@@ -21,6 +21,7 @@ from modepair.sweeps import boards
 __all__ = ["CaseBudget", "SpotBudget", "budget_case"]
 
 Complex = npt.NDArray[np.complex128]
+Floats = npt.NDArray[np.float64]
 Value = float | npt.NDArray[np.float64]
 
 TOP = 5
@@ -28,6 +29,9 @@ TOP = 5
 
 VERTICES = 24
 """Boards solved at a spot for the extreme value, by the size that first order gives them."""
+
+LINEAR = 1e-3
+"""Share of |rho| by which first order may miss a solved board and still be trusted to rank boards."""
 
 
 @dataclass(frozen=True)
@@ -131,6 +135,10 @@ class _Case:
             }
         return values
 
+    def edges(self, signs: Floats) -> dict[str, float]:
+        """Edges of the tolerances by key."""
+        return {cause.key: float(sign) for cause, sign in zip(self.drawn.causes, signs, strict=True)}
+
     def solve(self, rows: Sequence[Mapping[str, Value]], analyses: Analyses) -> ModePair:
         return solve_rows(
             self.solver,
@@ -209,6 +217,35 @@ def budget_case(
     )
 
 
+def _worst(case: _Case, centre: complex, slopes: Complex, there: Analyses) -> tuple[Floats, complex]:
+    """Find the worst board at one frequency: solve those that first order names.
+
+    Where tolerances are too wide for first order, it is taken anew about the worst board found, by moving one
+    tolerance after the other to its other edge, until no board named so is worse.
+    """
+
+    def solved(signs: Floats) -> Complex:
+        rho: Complex = case.solve([case.board(case.edges(row)) for row in signs], there).error_ratio[:, 0]
+        return rho
+
+    named = worst_signs(centre, slopes)[:VERTICES]
+    rho = solved(named)
+    row = int(np.abs(rho).argmax())
+    signs, worst = named[row], complex(rho[row])
+    if not signs.size or abs(worst - centre - signs @ slopes) <= LINEAR * abs(worst):
+        return signs, worst
+    while True:
+        flipped = signs * (1.0 - 2.0 * np.eye(signs.size))
+        beside = solved(flipped)
+        slopes = 0.5 * (worst - beside) * signs
+        named = worst_signs(worst - complex(signs @ slopes), slopes)[:VERTICES]
+        others, rho = np.concatenate([flipped, named]), np.concatenate([beside, solved(named)])
+        row = int(np.abs(rho).argmax())
+        if abs(rho[row]) <= abs(worst) * (1.0 + 1e-9):
+            return signs, worst
+        signs, worst = others[row], complex(rho[row])
+
+
 def _spot(
     case: _Case,
     frequency_hz: float,
@@ -221,30 +258,28 @@ def _spot(
     centre = complex(rho[1, column])
     slopes = np.array([one.rho[column] for one in tolerances], np.complex128)
     there = spot_analyses([frequency_hz])
-    candidates = worst_signs(centre, slopes)[:VERTICES]
-    edges = [{cause.key: float(s) for cause, s in zip(causes, row, strict=True)} for row in candidates]
-    solved = case.solve([case.board(one) for one in edges], there).error_ratio[:, 0]
-    worst = int(np.abs(solved).argmax())
+    signs, worst = _worst(case, centre, slopes, there)
+    edges = case.edges(signs)
     signed = [
         Contribution(one.name, one.kind, one.rho[column : column + 1] * sign)
-        for one, sign in zip(tolerances, candidates[worst], strict=True)
+        for one, sign in zip(tolerances, signs, strict=True)
     ] + [Contribution(one.name, one.kind, one.rho[column : column + 1]) for one in nominals]
     order = sorted(range(len(signed)), key=lambda i: -abs(signed[i].rho[0]))
     gone = []
     for i in order[:TOP]:
         if i < len(causes):
-            gone.append(case.board({**edges[worst], causes[i].key: 0.0}))
+            gone.append(case.board({**edges, causes[i].key: 0.0}))
         else:
-            gone.append(case.board(edges[worst], without=signed[i].name))
+            gone.append(case.board(edges, without=signed[i].name))
     without = np.abs(case.solve(gone, there).error_ratio[:, 0]) if gone else np.empty(0)
     spot = SpotBudget(
         frequency_hz,
         complex(rho[0, column]),
-        complex(solved[worst]),
+        worst,
         complex(sum(one.rho[0] for one in signed)),
         float(root_sum_square(np.array([centre]), slopes[:, np.newaxis])[0]),
-        {cause.name: edges[worst][cause.key] for cause in causes},
+        {cause.name: edges[cause.key] for cause in causes},
         tuple(signed[i] for i in order),
         tuple(without.tolist()),
     )
-    return spot, case.board(edges[worst])
+    return spot, case.board(edges)
