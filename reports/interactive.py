@@ -284,52 +284,52 @@ def _source(curve: PageCurve, keep_hz: Sequence[float]) -> tuple[Any, FloatArray
 
 
 def _band(panel: Any, curve: PageCurve, tag: str, keep_hz: Sequence[float]) -> None:
+    from bokeh.models import ColumnDataSource, VArea
+
     if curve.band_db is None:
         return
     chosen = thinned(curve.pair.frequency_hz, keep_hz)
     low, high = (edge[chosen] for edge in curve.band_db)
-    panel.varea(
-        curve.pair.frequency_hz[chosen], low, high, fill_color=curve.style.colour, fill_alpha=0.14, tags=[tag]
-    )
+    source = ColumnDataSource({"x": curve.pair.frequency_hz[chosen], "low": low, "high": high})
+    area = VArea(x="x", y1="low", y2="high", fill_color=curve.style.colour, fill_alpha=0.14)
+    panel.add_glyph(source, area, tags=[tag])
 
 
-def _draw_overlay(panel: Any, overlay: PageOverlay, index: int) -> Any:
-    from bokeh.models import ColumnDataSource
+def _draw_overlay(panel: Any, overlay: PageOverlay, index: int) -> None:
+    from bokeh.models import ColumnDataSource, Line, Scatter, VArea
 
-    tag, x, y = f"overlay-{index}", overlay.frequency_hz, overlay.level_db
-    if overlay.kind == "spread" and overlay.upper_db is not None:
-        return panel.varea(x, y, overlay.upper_db, fill_color=mix(HUES[0], "#ffffff", 0.8), tags=[tag])
-    if overlay.kind == "mask":
-        low = np.full(y.shape, min(0.0, float(y.min())) - 400)
-        panel.varea(
-            x,
-            low,
-            y,
-            fill_color=INK,
-            fill_alpha=0.05,
-            hatch_pattern="/",
-            hatch_alpha=0.16,
-            hatch_scale=16,
-            hatch_weight=0.7,
-            tags=[tag],
-        )
-        return panel.line(x, y, line_color=INK, line_width=3, name=overlay.name, tags=[tag])
-    if overlay.kind == "baseline":
-        return panel.line(x, y, line_color="#cdd0d4", line_width=5, name=overlay.name, tags=[tag])
     mark = overlay.kind == "mark"
-    said = "" if mark else "measured "
+    said = {"mark": "", "measured": "measured ", "mask": "asked for: ", "baseline": "accepted: "}.get(
+        overlay.kind, ""
+    )
+    low_db = overlay.level_db if overlay.kind == "spread" else np.full(overlay.level_db.shape, -1000.0)
     source = ColumnDataSource(
         {
-            "x": x,
-            "y": y,
-            "f": [frequency_text(hz, digits=4) for hz in x.tolist()],
-            "t": [f"{said}CMRR {level:.1f} dB" for level in y.tolist()],
+            "x": overlay.frequency_hz,
+            "y": overlay.level_db,
+            "low": low_db,
+            "high": overlay.level_db if overlay.upper_db is None else overlay.upper_db,
+            "f": [frequency_text(hz, digits=4) for hz in overlay.frequency_hz.tolist()],
+            "t": [f"{said}CMRR {level:.1f} dB" for level in overlay.level_db.tolist()],
         }
     )
-    look: dict[str, Any] = (
-        {"size": 17, "fill_color": None, "line_width": 2} if mark else {"size": 8, "fill_color": "white"}
-    )
-    return panel.scatter("x", "y", source=source, line_color=INK, name=overlay.name, tags=[tag], **look)
+    area: dict[str, Any] = {"x": "x", "y1": "low", "y2": "high"}
+    glyphs: dict[str, list[Any]] = {
+        "spread": [VArea(**area, fill_color=mix(HUES[0], "#ffffff", 0.8))],
+        "mask": [
+            VArea(
+                **area, fill_color=INK, fill_alpha=0.04,
+                hatch_pattern="/", hatch_alpha=0.16, hatch_scale=16, hatch_weight=0.7,
+            ),
+            Line(x="x", y="y", line_color=INK, line_width=3),
+        ],
+        "baseline": [Line(x="x", y="y", line_color="#cdd0d4", line_width=5)],
+        "measured": [Scatter(x="x", y="y", size=8, fill_color="white", line_color=INK)],
+        "mark": [Scatter(x="x", y="y", size=17, fill_color=None, line_color=INK, line_width=2)],
+    }  # fmt: skip
+    for glyph in glyphs[overlay.kind]:
+        named = {} if isinstance(glyph, VArea) or mark else {"name": overlay.name}
+        panel.add_glyph(source, glyph, tags=[f"overlay-{index}"], **named)
 
 
 def _dash(style: CurveStyle) -> list[int]:

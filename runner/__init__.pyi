@@ -1,7 +1,11 @@
 from .checking import Check as Check
 from .checking import check as check
+from .comparing import compare_runs as compare_runs
+from .comparing import Compared as Compared
 from .errors import EngineMissingError as EngineMissingError
 from .errors import OutputError as OutputError
+from .errors import ReadingError as ReadingError
 from .errors import SimulationError as SimulationError
+from .reading import open_run as open_run
 from .sweep import Run as Run
 from .sweep import run as run

@@ -68,7 +68,8 @@ class Browser:
             const view = find([...Bokeh.index]);
             view.el.scrollIntoView({ block: "center" });
             const box = view.el.getBoundingClientRect();
-            return [box.left + view.frame.x_scale.compute(arguments[1]), box.top + view.frame.y_scale.compute(arguments[2])];
+            const { x_scale, y_scale } = view.frame;
+            return [box.left + x_scale.compute(arguments[1]), box.top + y_scale.compute(arguments[2])];
             """,
             panel, frequency_hz, level,
         )  # fmt: skip
@@ -80,11 +81,8 @@ class Browser:
     def reading(self) -> list[str]:
         """What the page shows of the curves under the pointer, a line each."""
         lines = "[...reading.childNodes].map((line) => line.textContent)"
-        return list(
-            self.run(
-                f"const reading = document.getElementById('reading'); return reading.hidden ? [] : {lines};"
-            )
-        )
+        script = f"const reading = document.getElementById('reading'); return reading.hidden ? [] : {lines};"
+        return list(self.run(script))
 
     def requests(self) -> list[str]:
         """Addresses that the page has asked for since the last call."""
