@@ -197,7 +197,9 @@ def run_folder(target: Path, *, resume: bool = False) -> Iterator[RunFolder]:
     except BaseException as error:
         failure = _as_output_error(target, error)
         if folder.resumable and (isinstance(failure, OutputError) or not isinstance(failure, Exception)):
-            failure.add_note(RESUMABLE.format(target=target))
+            if not isinstance(error, OutputError):
+                # A refusal to resume is one; it has its own advice.
+                failure.add_note(RESUMABLE.format(target=target))
         else:
             folder.resumable = False
         if failure is error:

@@ -78,7 +78,7 @@ def run_key(
                 circuits.update(name.encode() + np.asarray(value, np.float64).tobytes())
     circuits.update(repr([command for command, _, _ in analyses.commands]).encode())
     circuits.update(repr((draws, sweep.spec.tolerance)).encode())
-    return {"spec": sweep.spec.digest, "circuits": circuits.hexdigest(), "draw": str(draw), **versions("")}
+    return {"spec": sweep.spec.digest, "draw": str(draw), "circuits": circuits.hexdigest(), **versions("")}
 
 
 class Journal:
@@ -104,16 +104,11 @@ class Journal:
         self._engine = ""
         self._end = 0
         self._file: BinaryIO | None = self._path.open("r+b" if self._path.exists() else "w+b")
-        header = _frame(self._file)
-        if header is None:
-            # New, or of a run that was killed before it had written as much as this.
-            self._file.seek(0)
-            self._file.truncate()
-            self._append(json.dumps(dict(key)).encode())
-        else:
-            self._refuse_other(json.loads(header), key)
-            folder.resumable = True
-        self._end = self._file.tell()
+        try:
+            self._begin(self._file, key)
+        except BaseException:
+            self._file.close()
+            raise
 
     def __enter__(self) -> Journal:
         return self
@@ -123,6 +118,18 @@ class Journal:
     ) -> None:
         if self._file is not None:
             self._file.close()
+
+    def _begin(self, file: BinaryIO, key: Mapping[str, str]) -> None:
+        header = _frame(file)
+        if header is None:
+            # New, or of a run that was killed before it had written as much as this.
+            file.seek(0)
+            file.truncate()
+            self._append(json.dumps(dict(key)).encode())
+        else:
+            self._refuse_other(json.loads(header), key)
+            self._folder.resumable = True
+        self._end = file.tell()
 
     def _refuse_other(self, begun: Mapping[str, str], key: Mapping[str, str]) -> None:
         for name in key:
@@ -136,7 +143,7 @@ class Journal:
         )
 
     def batches(self, plans: Iterable[Plan]) -> Iterator[Batch | Solved]:
-        """Give what the journal holds of a run's batches, and work out the others.
+        """Work out a run's batches, and give what the journal holds in the place of those that it holds.
 
         Parameters
         ----------
@@ -150,25 +157,29 @@ class Journal:
         """
         reading = self._file is not None
         for plan in plans:
-            solved = self._next() if reading else None
-            if solved is not None and np.array_equal(solved.position, plan.position):
+            # Worked out in any case, since a deck holds the values of the first batch that asks for it, and the last
+            # digits of all that are solved on it depend on these.
+            batch = plan.batch()
+            solved = self._next(batch) if reading else None
+            if solved is not None:
                 self._found += 1
                 self._engine = self._engine or solved.engine
                 yield solved
                 continue
             reading = False
-            yield plan.batch()
+            yield batch
 
-    def _next(self) -> Solved | None:
-        """Read the next whole record; the place behind it is where records are appended."""
+    def _next(self, batch: Batch) -> Solved | None:
+        """Read the next record if it is whole and of this batch; behind the last such one records are appended."""
         if self._file is None:
             return None
         self._file.seek(self._end)
         payload = _frame(self._file)
-        if payload is None:
+        solved = None if payload is None else _unpacked(payload)
+        if solved is None or not np.array_equal(solved.position, batch.position):
             return None
         self._end = self._file.tell()
-        return _unpacked(payload)
+        return solved
 
     def recorded(self, solved: Iterable[Solved]) -> Iterator[Solved]:
         """Write down batches as they are solved.
