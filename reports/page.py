@@ -68,6 +68,8 @@ class Page:
         The error budget, its columns as they are to be headed.
     budget_note : str
         What is to be said below it.
+    causes : sequence of str
+        What the budget says of the verdict, in a sentence or two.
     tables : mapping of str to sequence of Column
         Further tables by heading.
     measured : sequence of str
@@ -103,6 +105,7 @@ class Page:
     opamps: Mapping[str, str] = field(default_factory=dict)
     budget: pd.DataFrame | None = None
     budget_note: str = ""
+    causes: Sequence[str] = ()
     tables: Mapping[str, Sequence[Column]] = field(default_factory=dict)
     measured: Sequence[str] = ()
     measured_table: Sequence[Column] = ()
@@ -132,7 +135,7 @@ def page_html(page: Page) -> str:
         page=page,
         headline=said.headline if said else page.statement,
         met=page.met if page.judged or said is None else said.met,
-        reasons=said.reasons if said else (),
+        reasons=(*(said.reasons if said else ()), *page.causes),
         terms=said.terms if said else (),
         ranking=_ranking(page) if page.comparison else None,
         notes=remarks(page.comparison) if page.comparison else (),
@@ -345,5 +348,5 @@ def _budget(budget: pd.DataFrame | None) -> PageTable | None:
 
 def _plain(value: Any) -> str:
     if isinstance(value, float):
-        return "–" if np.isnan(value) else f"{value:.4g}"
+        return "–" if np.isnan(value) else f"{value:.1f}" if abs(value) >= 0.1 else f"{value:.2g}"
     return str(value)

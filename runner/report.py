@@ -32,6 +32,9 @@ if TYPE_CHECKING:
 
 __all__ = ["page_of", "write_comparison", "write_report"]
 
+MOST_CAUSES = 12
+"""Causes of the budget that the page lists."""
+
 MOST_ROWS = 40
 """Rows of measurements that the page lists."""
 
@@ -68,6 +71,7 @@ def page_of(
     names = run_names(runs)
     specs = [run.spec for run in runs]
     drawn = draw_curves(runs, compared, baseline)
+    budget, cause = _budget(runs, compared)
     sweeps = [expand(spec) for spec in specs]
     judged, met = _judged(runs)
     title = runs[0].spec.title or Path(runs[0].spec.path).stem
@@ -93,8 +97,9 @@ def page_of(
         opamps={
             name.removeprefix("op-amp "): text for name, text in told.items() if name.startswith("op-amp ")
         },
-        budget=_budget(runs, compared),
+        budget=budget,
         budget_note=_BUDGET_NOTE,
+        causes=[cause] if cause else [],
         tables=_tables(runs, compared),
         measured=[line for run, table in bench for line in measured_lines(table, run.spec, run.cases)],
         measured_table=_bench_columns(pd.concat([table for _, table in bench], ignore_index=True)),
@@ -215,24 +220,32 @@ _BUDGET_NOTE = (
 )
 
 
-def _budget(runs: Sequence[Run], compared: Compared | None) -> pd.DataFrame | None:
-    """The budget of the case that decides, at the spot nearest to where it does; None where none was worked out."""
+def _budget(runs: Sequence[Run], compared: Compared | None) -> tuple[pd.DataFrame | None, str]:
+    """The budget of the case that decides, at the spot nearest to where it does, and its largest cause in words.
+
+    None where no budget was worked out.
+    """
     winner = winner_of(compared)
     run = next((r for r, n in zip(runs, run_names(runs), strict=True) if winner and n == winner[0]), runs[0])
     path = run.folder / "budget.csv"
-    if not path.is_file():
-        return None
-    table = pd.read_csv(path)
+    table = pd.read_csv(path) if path.is_file() else pd.DataFrame()
     if table.empty:
-        return None
+        return None, ""
     case = winner[1] if winner and (table["case"] == winner[1]).any() else int(table["case"].iloc[0])
     table = table[table["case"] == case]
     at_hz = float(compared.comparison.winners.iloc[0]["decided_at_hz"]) if compared and winner else 0.0
     spots = table["frequency_hz"].unique()
-    spot = spots[int(np.argmin(np.abs(np.log(spots / at_hz))))] if at_hz else spots[0]
-    rows = table[table["frequency_hz"] == spot].head(12)
-    place = f"case {case}, {frequency_text(float(spot))}"
-    return pd.DataFrame(
+    spot = float(spots[int(np.argmin(np.abs(np.log(spots / at_hz))))] if at_hz else spots[0])
+    rows = table[table["frequency_hz"] == spot].sort_values("rank").head(MOST_CAUSES)
+    place = f"case {case}, {frequency_text(spot)}"
+    first = rows.iloc[0]
+    said = (
+        f"The largest single cause on the worst board at {frequency_text(spot)} is {first['cause']}, with "
+        f"{100 * first['share']:.0f} % of the budget"
+    )
+    if not np.isnan(first["without_db"]):
+        said += f"; without it that board has {first['without_db']:.1f} dB"
+    shown = pd.DataFrame(
         {
             f"cause ({place})": rows["cause"].tolist(),
             "kind": rows["kind"].tolist(),
@@ -241,6 +254,7 @@ def _budget(runs: Sequence[Run], compared: Compared | None) -> pd.DataFrame | No
             "without it, dB": rows["without_db"].round(1).tolist(),
         }
     )
+    return shown, f"{said}."
 
 
 def _bench_columns(table: pd.DataFrame) -> list[Column]:
