@@ -13,6 +13,7 @@ from matplotlib.transforms import Bbox
 from modepair.reports.axis_labels import axis_columns
 from modepair.reports.pairs import ModePair
 from modepair.reports.plots import MOST_CURVES, plot_cmrr, plot_gains, write_plot
+from modepair.sweeps.measured import Measurement
 from tests.synthetic_cases import Made, one_pole_cases
 
 SIZES = [(1, 1), (2, 1), (4, 2), (4, 6), (3, 10), (4, 15)]
@@ -257,7 +258,8 @@ def test_the_users_settings_do_not_leak_in_or_out():
         figure = plot_cmrr(made.pair, labels_of(made))
         assert mpl.rcParams["font.size"] == 30.0
     assert figure.axes[0].get_facecolor() == (1.0, 1.0, 1.0, 1.0)
-    assert "matplotlib.pyplot" not in sys.modules or figure.number is None  # never registered with pyplot
+    pyplot = sys.modules.get("matplotlib.pyplot")
+    assert pyplot is None or not pyplot.get_fignums()  # never registered with pyplot
 
 
 def test_refuses():
@@ -268,3 +270,13 @@ def test_refuses():
         )
     with pytest.raises(ValueError, match=r"labels of stage\.opamp must be one per case, 2, not 1"):
         plot_gains(made.pair, {"stage.opamp": ["a"]})
+
+
+def test_measurements_lie_over_the_curves_as_points():
+    made = one_pole_cases(2, 1)
+    frequency_hz = np.array([0.5, 50.0, 1e3])  # the first lies outside the solved band
+    bench = Measurement("board 3 $x$", frequency_hz, np.array([90.0, 95.0, 70.0]), np.full(3, np.inf), {})
+    figure = plot_cmrr(made.pair, axis_columns(made.cases, made.axes), measured=[bench])
+    (points,) = [line for line in figure.axes[0].lines if line.get_gid() == "measured-1"]
+    np.testing.assert_array_equal(points.get_xydata(), [[50.0, 95.0], [1e3, 70.0]])
+    assert "measured: board 3 $x$" in [text.get_text() for text in shown_texts(figure)]
