@@ -21,7 +21,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from modepair.circuits.deck import Bias
+from modepair.circuits.deck import GAIN_NODES, Bias
 from modepair.circuits.elements import GROUND, Card, Element, Kind
 from modepair.circuits.imported import ImportedModel
 from modepair.circuits.netlist import circuit
@@ -34,6 +34,7 @@ __all__ = [
     "SUPPLY_VECTORS",
     "Mounting",
     "bench_netlist",
+    "gain_netlist",
     "imported_mounting",
     "macromodel_mounting",
 ]
@@ -140,6 +141,12 @@ def _copy(
         for node, volts, swing in zip(("vcc", "vee"), mounting.supplies, ripple, strict=True):
             cards.append(_source(node, "V", node, GROUND, swing, volts))
     return cards + mounting.cards("p", "n", "out", "vcc", "vee")
+
+
+def gain_netlist(mounting: Mounting) -> str:
+    """Write a netlist that measures an op-amp's gains only, at `modepair.circuits.deck.GAIN_NODES`."""
+    copies = {suffix: _copy(mounting, *DRIVES[suffix], 0.0, (0.0, 0.0)) for suffix in "dc"}
+    return str(circuit(copies, saved=[f"v({node})" for node in GAIN_NODES], models=mounting.models))
 
 
 def bench_netlist(mounting: Mounting) -> tuple[str, tuple[str, ...]]:

@@ -9,13 +9,23 @@ import numpy.typing as npt
 
 from modepair.circuits.elements import GROUND
 
-__all__ = ["Bias", "Deck"]
+__all__ = ["GAIN_NODES", "Bias", "Deck"]
+
+GAIN_NODES = ("out_d", "out_c")
+"""Outputs of the bench's copies that are driven differentially and in common mode."""
 
 RAIL_SHARE = 0.01
 """Share of the supplies' span within which an output is at its rail."""
 
 LARGEST_INPUT_VOLT = 0.1
 """Voltage between an op-amp's inputs beyond which feedback does not hold them together: far beyond any offset."""
+
+LEAST_GAIN_SHARE = 0.1
+"""Share of its gain on the bench below which an op-amp in its place is saturated. A load as low as the output
+resistance halves its gain."""
+
+TELLING_GAIN = 100.0
+"""Gain on the bench below which the lowest frequency is too high to tell."""
 
 
 @dataclass(frozen=True)
@@ -30,6 +40,10 @@ class Bias:
         Its nodes in the deck.
     supplies : tuple of float
         Positive and negative supply in volts; empty for a model without.
+    driven : tuple of str
+        The same nodes of the copy that is driven differentially.
+    reference : str
+        Netlist in which the voltages of `GAIN_NODES` are the model's own gain, and that from the common mode.
     """
 
     instance: str
@@ -37,16 +51,53 @@ class Bias:
     minus: str
     out: str
     supplies: tuple[float, ...] = ()
+    driven: tuple[str, str, str] = ("", "", "")
+    reference: str = ""
 
     @property
     def nodes(self) -> tuple[str, str, str]:
         """The nodes whose voltages are needed."""
         return self.plus, self.minus, self.out
 
-    def in_copy(self, copy: str) -> Bias:
-        """Return the same of one copy of the circuit."""
-        plus, minus, out = (node if node == GROUND else f"{node}_{copy}" for node in self.nodes)
-        return replace(self, plus=plus, minus=minus, out=out)
+    def in_copies(self, common: str, differential: str) -> Bias:
+        """Return the same with the nodes of the two copies of the circuit, given their suffixes."""
+        plus, minus, out = (node if node == GROUND else f"{node}_{common}" for node in self.nodes)
+        positive, negative, output = (
+            node if node == GROUND else f"{node}_{differential}" for node in self.nodes
+        )
+        return replace(self, plus=plus, minus=minus, out=out, driven=(positive, negative, output))
+
+    def gain_fault(self, volts: tuple[complex, complex, complex], gain: float, error: float) -> str:
+        """Say why a solve shows that an op-amp is saturated: it needs far more input than on the bench.
+
+        Parameters
+        ----------
+        volts : tuple of complex
+            Voltages of its nodes in the differentially driven copy, at the lowest frequency.
+        gain : float
+            Size of its open-loop gain on the bench there, V/V.
+        error : float
+            Size of its common-mode error there, V/V.
+
+        Returns
+        -------
+        str
+            The reason; empty if there is none.
+
+        Notes
+        -----
+        Between its inputs an op-amp needs |out|/A for its output, and |k| times the common mode at the most.
+        """
+        if gain < TELLING_GAIN:
+            return ""
+        plus, minus, out = volts
+        needed = abs(out) / gain + error * abs(plus + minus) / 2
+        if abs(plus - minus) <= needed / LEAST_GAIN_SHARE:
+            return ""
+        return (
+            f"{self.instance} needs {abs(plus - minus) / needed:.3g} times the input that it needs on the bench: at an "
+            "operating point with so little gain it is saturated, and a small-signal curve about it means nothing"
+        )
 
     def fault(self, plus_volt: float, minus_volt: float, out_volt: float) -> str:
         """Say why a curve about this operating point would mean nothing.

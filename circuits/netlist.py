@@ -142,7 +142,7 @@ def netlist(
     supplies : mapping of str to float
         Nodes that both copies share, and their DC voltages.
     watched : sequence of str
-        Nodes whose voltages at the operating point are wanted of the first copy.
+        Further nodes whose voltages are wanted.
     drives : mapping of str to (float, float)
         As for `pair_of_drives`.
 
@@ -153,7 +153,7 @@ def netlist(
         the same double.
     """
     saved = [f"v({OUTPUT}_{copy})" for copy in drives]
-    saved += [f"v({node}_{next(iter(drives))})" for node in watched if node != OUTPUT]
+    saved += [f"v({node}_{copy})" for copy in drives for node in watched if node != OUTPUT]
     copies = pair_of_drives(cards, drives)
     return str(circuit(copies, saved=saved, models=models, supplies=supplies))
 

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Hashable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 import numpy.typing as npt
 
+from modepair.circuits.bench import gain_netlist, imported_mounting
 from modepair.circuits.deck import Bias, Deck
 from modepair.circuits.elements import GROUND, Card, Element, Values
 from modepair.circuits.imported import ImportedModel, Models, model_texts, supply_nodes
@@ -99,7 +100,11 @@ class Structure:
         elements = self.elements(row)
         commands = tuple(_commands(element) for element in elements)
         values = np.array([element.values[0] for element in elements])
-        biases = tuple(bias.in_copy(COPIES[0]) for bias in self._circuit(row)[1])
+        references = {name: gain_netlist(imported_mounting(model)) for name, model in self.models.items()}
+        biases = tuple(
+            replace(bias.in_copies(*COPIES), reference=references[bias.instance])
+            for bias in self._circuit(row)[1]
+        )
         return Deck(self._netlist(row), commands, values, biases, bool(self.models))
 
 

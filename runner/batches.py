@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits.deck import Bias, Deck
+from modepair.circuits.deck import GAIN_NODES, Bias, Deck
 from modepair.circuits.elements import GROUND
 from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
@@ -121,6 +121,31 @@ def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
             raise SimulationError(reason)
 
 
+def _own_gain(simulator: Engine, netlist: str, analyses: Analyses) -> tuple[float, float]:
+    """Size of a model's gain on the bench at the lowest frequency, and of its common-mode error; 0 if unknown."""
+    lowest_hz = float(analyses.frequency_hz[0])
+    try:
+        simulator.load(netlist, nonlinear=True)
+        found = simulator.analyse(f"ac lin 1 {lowest_hz!r} {lowest_hz!r}", np.array([lowest_hz]), GAIN_NODES)
+    except EngineDeadError:
+        raise
+    except SimulationError:
+        return 0.0, 0.0
+    gain, common = np.abs(found[:, 0]).tolist()
+    return gain, common / gain if gain else 0.0
+
+
+def _check_gains(
+    biases: Sequence[Bias], own_gains: Mapping[str, tuple[float, float]], volts: Mapping[str, complex]
+) -> None:
+    """Refuse a solve in which an imported op-amp's gain has gone."""
+    for bias in biases:
+        plus, minus, out = (0.0 if node == GROUND else volts[node.lower()] for node in bias.driven)
+        reason = bias.gain_fault((plus, minus, out), *own_gains[bias.reference])
+        if reason:
+            raise SimulationError(reason)
+
+
 def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = None) -> Solved:
     """Solve the cases of a batch, each in both drives.
 
@@ -146,18 +171,26 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
     simulator = simulator or engine()
     gains = np.full((len(batch.position), 2, analyses.frequency_hz.size), np.nan, np.complex128)
     failures = _unusable(batch)
+    deck = batch.deck
+    own_gains = {
+        text: _own_gain(simulator, text, analyses) for text in {bias.reference for bias in deck.biases}
+    }
+    pins = list(dict.fromkeys(node.lower() for bias in deck.biases for node in bias.driven if node != GROUND))
+    vectors = (*batch.vectors, *(pin for pin in pins if pin not in batch.vectors))
     loaded: npt.NDArray[np.float64] | None = None
     for index, (position, values) in enumerate(zip(batch.position.tolist(), batch.values, strict=True)):
         if position in failures:
             continue
         try:
             if loaded is None:
-                simulator.load(batch.deck.text, nonlinear=batch.deck.nonlinear)
+                simulator.load(deck.text, nonlinear=deck.nonlinear)
                 loaded = batch.deck.values
             simulator.alter(list(_alterations(batch.deck, loaded, values)))
             loaded = values
-            check_biases(simulator, batch.deck.biases)
-            gains[index] = analyses.solve(simulator, batch.vectors)
+            check_biases(simulator, deck.biases)
+            solved = analyses.solve(simulator, vectors)
+            _check_gains(deck.biases, own_gains, dict(zip(vectors, solved[:, 0].tolist(), strict=True)))
+            gains[index] = solved[:2]
         except EngineDeadError:
             raise
         except SimulationError as error:
