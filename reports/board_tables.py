@@ -30,8 +30,13 @@ LEAST_SHARE = 5e-4
 MOST_CAUSES = 12
 
 
-def _decibels(values: pd.Series[float]) -> list[str]:
-    return ["–" if pd.isna(value) else decibel_text(float(value)) for value in values]
+def _decibels(values: pd.Series[float], floor_db: pd.Series[float] | None = None) -> list[str]:
+    """Levels as text; those at the floor as a bound."""
+    floors = [float("inf")] * len(values) if floor_db is None else floor_db.tolist()
+    return [
+        "–" if pd.isna(value) else decibel_text(float(value), float(value) >= floor)
+        for value, floor in zip(values, floors, strict=True)
+    ]
 
 
 def board_columns(cases: pd.DataFrame, spots_hz: Sequence[float]) -> list[Column]:
@@ -104,11 +109,12 @@ def worst_case_columns(worst: pd.DataFrame) -> list[Column]:
     list of Column
         Spot, nominal, extreme value, root-sum-square, and of the draws the 1 % board and the lowest.
     """
+    floor_db = worst.get("floor_db")
     columns = [
         Column("spot\n", [spot_text(float(f)) for f in worst["frequency_hz"]]),
-        Column("nominal\ndB", _decibels(worst["nominal_db"])),
-        Column("extreme value\ndB", _decibels(worst["extreme_value_db"])),
-        Column("root-sum-square\ndB", _decibels(worst["root_sum_square_db"])),
+        Column("nominal\ndB", _decibels(worst["nominal_db"], floor_db)),
+        Column("extreme value\ndB", _decibels(worst["extreme_value_db"], floor_db)),
+        Column("root-sum-square\ndB", _decibels(worst["root_sum_square_db"], floor_db)),
     ]
     if worst["drawn_lowest_db"].notna().any():
         columns.append(Column("99 % of draws\ndB", _decibels(worst["drawn_p1_db"])))
@@ -130,15 +136,16 @@ def budget_columns(budget: pd.DataFrame) -> list[Column]:
         Cause, whether its sign is open, its contribution, CMRR of it alone and of the circuit without it.
     """
     rho = budget["rho_re"] + 1j * budget["rho_im"]
+    floor_db = budget.get("floor_db")
     return [
         Column("cause\n", budget["cause"].tolist(), "left"),
         Column("from\n", budget["kind"].tolist(), "left"),
         Column("real\nµV/V", [_micro(value.real, abs(value)) for value in rho]),
         Column("imaginary\nµV/V", [_micro(value.imag, abs(value)) for value in rho]),
         Column("share\n%", [f"{100 * value:.1f}" for value in budget["share"]]),
-        Column("alone\ndB", _decibels(budget["alone_db"])),
-        Column("without it\ndB", _decibels(budget["without_db"])),
-        Column("as summed\ndB", _decibels(budget["without_summed_db"])),
+        Column("alone\ndB", _decibels(budget["alone_db"], floor_db)),
+        Column("without it\ndB", _decibels(budget["without_db"], floor_db)),
+        Column("as summed\ndB", _decibels(budget["without_summed_db"], floor_db)),
     ]
 
 
@@ -244,15 +251,20 @@ def print_budget(console: Console, budget: pd.DataFrame, worst: pd.DataFrame, la
     for _, total in worst.iterrows():
         here = budget[budget["frequency_hz"] == total["frequency_hz"]]
         spot = spot_text(float(total["frequency_hz"]))
+        floor_db = float(total.get("floor_db", float("inf")))
         nominal, worst_db, sum_db = (
-            decibel_text(float(total[key])) for key in ("nominal_db", "extreme_value_db", "sum_db")
+            decibel_text(float(total[key]), float(total[key]) >= floor_db)
+            for key in ("nominal_db", "extreme_value_db", "sum_db")
         )
         board = f", worst board {worst_db} dB" if toleranced else ""
+        off = "" if pd.isna(total["residual"]) else f", {100 * total['residual']:.2g} % off"
         console.print(
-            f"\n{spot}: nominal {nominal} dB{board}; the contributions sum to {sum_db} dB, "
-            f"{100 * total['residual']:.2g} % off.\n",
+            f"\n{spot}: nominal {nominal} dB{board}; the contributions sum to {sum_db} dB{off}.\n",
             markup=False,
         )
+        if here.empty:
+            console.print("Nothing is unlike on the two sides, and nothing varies.", markup=False)
+            continue
         shown = here[(here["share"] >= LEAST_SHARE) | (here["rank"] <= 3)].head(MOST_CAUSES)
         print_columns(console, [], budget_columns(shown))
         if len(here) > len(shown):

@@ -78,6 +78,8 @@ def plot_budgets(
         if any(spot.contributions for spot in spots):
             bars = plot_budget_spots(spots, title=title, subtitle=label)
             write_plot(bars, folder.path(f"{name}-spots"))
+            if len(one.frequency_hz) < 2:
+                continue
             shares = plot_budget_shares(one.frequency_hz, one.contributions, title=title, subtitle=label)
             write_plot(shares, folder.path(f"{name}-shares"))
 

@@ -10,7 +10,7 @@ import numpy.typing as npt
 
 from modepair.circuits import Deck, imperfections
 from modepair.reports import ModePair
-from modepair.reports.budget import Contribution, root_sum_square, worst_signs
+from modepair.reports.budget import Contribution, decibels, root_sum_square, worst_signs
 from modepair.reports.figures import spot_indices
 from modepair.runner.analyses import Analyses, spot_analyses
 from modepair.runner.plans import DrawnCase
@@ -56,6 +56,8 @@ class SpotBudget:
         By falling size, rho at this spot only (shape (1,)), with the worst board's signs.
     without : tuple of float
         |rho| of the worst board without each of the first contributions, solved.
+    floor_db : float
+        Highest CMRR that the solve can tell; what reads higher is only known to be above it.
     """
 
     frequency_hz: float
@@ -66,11 +68,18 @@ class SpotBudget:
     signs: Mapping[str, float]
     contributions: tuple[Contribution, ...]
     without: tuple[float, ...]
+    floor_db: float
 
     @property
     def residual(self) -> float:
-        """What the sum of the contributions leaves, as a share of the solved |rho|."""
+        """What the sum of the contributions leaves, as a share of the solved |rho|; NaN where this is round-off."""
+        if decibels(self.worst) >= self.floor_db:
+            return float("nan")
         return abs(self.estimate - self.worst) / abs(self.worst)
+
+    def level_db(self, rho: complex) -> float:
+        """CMRR of an error ratio in dB, and no more than the floor."""
+        return min(float(decibels(rho)), self.floor_db)
 
 
 @dataclass(frozen=True)
@@ -195,7 +204,8 @@ def budget_case(
     rows: list[Mapping[str, Value]] = [drawn.parts, case.board({})]
     rows += [case.board({cause.key: edge}) for cause in causes for edge in (1.0, -1.0)]
     rows += [case.board({}, without=name) for name in defects]
-    rho = case.solve(rows, analyses).error_ratio
+    pair = case.solve(rows, analyses)
+    rho = pair.error_ratio
     centre, edges, without = rho[1], rho[2 : 2 + 2 * len(causes)], rho[2 + 2 * len(causes) :]
     tolerances = [
         Contribution(cause.name, "tolerance", 0.5 * (edges[2 * i] - edges[2 * i + 1]))
@@ -204,7 +214,7 @@ def budget_case(
     nominals = [Contribution(name, "nominal", centre - without[i]) for i, name in enumerate(defects)]
     columns = spot_indices(analyses.frequency_hz, spots_hz)
     found = [
-        _spot(case, float(spot), int(column), rho, tolerances, nominals)
+        _spot(case, float(spot), int(column), pair, tolerances, nominals)
         for spot, column in zip(spots_hz, columns.tolist(), strict=True)
     ]
     return CaseBudget(
@@ -250,12 +260,12 @@ def _spot(
     case: _Case,
     frequency_hz: float,
     column: int,
-    rho: Complex,
+    pair: ModePair,
     tolerances: Sequence[Contribution],
     nominals: Sequence[Contribution],
 ) -> tuple[SpotBudget, Mapping[str, float]]:
     causes = case.drawn.causes
-    centre = complex(rho[1, column])
+    nominal, centre = pair.error_ratio[:2, column].tolist()
     slopes = np.array([one.rho[column] for one in tolerances], np.complex128)
     there = spot_analyses([frequency_hz])
     signs, worst = _worst(case, centre, slopes, there)
@@ -274,12 +284,13 @@ def _spot(
     without = np.abs(case.solve(gone, there).error_ratio[:, 0]) if gone else np.empty(0)
     spot = SpotBudget(
         frequency_hz,
-        complex(rho[0, column]),
+        nominal,
         worst,
         complex(sum(one.rho[0] for one in signed)),
         float(root_sum_square(np.array([centre]), slopes[:, np.newaxis])[0]),
         {cause.name: edges[cause.key] for cause in causes},
         tuple(signed[i] for i in order),
         tuple(without.tolist()),
+        float(pair.floor_db[1, column]),
     )
     return spot, case.board(edges)

@@ -7,7 +7,6 @@ from collections.abc import Iterator, Sequence
 import pandas as pd
 
 from modepair.circuits import Deck
-from modepair.reports.budget import decibels
 from modepair.runner.analyses import Analyses
 from modepair.runner.budgeting import CaseBudget, budget_case
 from modepair.runner.errors import SimulationError
@@ -17,6 +16,21 @@ from modepair.runner.redraw import signed_parts
 from modepair.sweeps import Sweep
 
 __all__ = ["MOST_CASES", "board_table", "budget_cases", "budget_table", "worst_case_table"]
+
+BUDGET_COLUMNS = (
+    "case",
+    "frequency_hz",
+    "rank",
+    "cause",
+    "kind",
+    "rho_re",
+    "rho_im",
+    "share",
+    "alone_db",
+    "without_db",
+    "without_summed_db",
+    "floor_db",
+)
 
 MOST_CASES = 200
 """Cases for which a run with tolerances works out budget and worst case."""
@@ -78,7 +92,8 @@ def budget_table(budgets: Sequence[CaseBudget]) -> pd.DataFrame:
         A row per case, spot and cause, by falling size: `case`, `frequency_hz`, `rank`, `cause`, `kind`, `rho_re`,
         `rho_im` (V/V, signed as on the worst board), `share` (of the sum of sizes), `alone_db` (CMRR if it were
         the only one), `without_db` (CMRR of the worst board without it, solved, for the first five) and
-        `without_summed_db` (the same from the sum).
+        `without_summed_db` (the same from the sum), and `floor_db`, the highest CMRR that the solve can tell, which
+        stands for what is above it.
     """
     rows = []
     for budget in budgets:
@@ -97,12 +112,13 @@ def budget_table(budgets: Sequence[CaseBudget]) -> pd.DataFrame:
                         "rho_re": rho.real,
                         "rho_im": rho.imag,
                         "share": abs(rho) / size if size else 0.0,
-                        "alone_db": float(decibels(rho)),
-                        "without_db": float(decibels(spot.without[rank])) if solved else None,
-                        "without_summed_db": float(decibels(spot.worst - rho)) if solved else None,
+                        "alone_db": spot.level_db(rho),
+                        "without_db": spot.level_db(spot.without[rank]) if solved else None,
+                        "without_summed_db": spot.level_db(spot.worst - rho) if solved else None,
+                        "floor_db": spot.floor_db,
                     }
                 )
-    return pd.DataFrame(rows)
+    return pd.DataFrame(rows, columns=list(BUDGET_COLUMNS))
 
 
 def worst_case_table(budgets: Sequence[CaseBudget], quantiles: pd.DataFrame | None) -> pd.DataFrame:
@@ -121,7 +137,7 @@ def worst_case_table(budgets: Sequence[CaseBudget], quantiles: pd.DataFrame | No
         A row per case and spot: `case`, `frequency_hz`, `nominal_db`, `extreme_value_db` (the worst board, solved),
         `root_sum_square_db`, `drawn_p1_db`, `drawn_lowest_db`, `lowest_draw`, and the check of the budget:
         `sum_db` (CMRR from the phasor sum of all contributions) and `residual` (what the sum leaves of the solved
-        rho, as a share).
+        rho, as a share; NaN where this is below the floor). `floor_db` as in the budget.
     """
     rows = []
     for budget in budgets:
@@ -129,14 +145,15 @@ def worst_case_table(budgets: Sequence[CaseBudget], quantiles: pd.DataFrame | No
             row: dict[str, object] = {
                 "case": budget.drawn.case,
                 "frequency_hz": spot.frequency_hz,
-                "nominal_db": float(decibels(spot.nominal)),
-                "extreme_value_db": float(decibels(spot.worst)),
-                "root_sum_square_db": float(decibels(spot.root_sum_square)),
+                "nominal_db": spot.level_db(spot.nominal),
+                "extreme_value_db": spot.level_db(spot.worst),
+                "root_sum_square_db": spot.level_db(spot.root_sum_square),
                 "drawn_p1_db": None,
                 "drawn_lowest_db": None,
                 "lowest_draw": None,
-                "sum_db": float(decibels(spot.estimate)),
+                "sum_db": spot.level_db(spot.estimate),
                 "residual": spot.residual,
+                "floor_db": spot.floor_db,
             }
             if quantiles is not None:
                 here = quantiles[

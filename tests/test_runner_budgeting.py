@@ -3,20 +3,28 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
+from io import StringIO
 from itertools import product
+from pathlib import Path
 
 import numpy as np
+import pandas as pd
 import pytest
 from numpy.typing import NDArray
+from rich.console import Console
 
+from modepair.reports.board_tables import print_budget
 from modepair.reports.budget import decibels
 from modepair.runner.analyses import spot_analyses
+from modepair.runner.budget_run import run_budget
 from modepair.runner.budgeting import CaseBudget, SpotBudget, budget_case
 from modepair.runner.plans import DrawnCase
 from modepair.runner.pool import BatchSolver, worker_pool
 from modepair.runner.solving import solve_rows
+from modepair.runner.worst_case import budget_table, worst_case_table
 from modepair.sweeps import Variate, boards
 from tests.dense import solve_dense
+from tests.drawing import swept
 from tests.published.parts import difference, opamps
 from tests.random_stages import TOPOLOGIES, random_parts
 
@@ -264,3 +272,48 @@ def test_taking_away_an_imperfection_leaves_the_boards_own_errors(solver: BatchS
     spot = one_spot(solver, drawn("difference", parts, dict.fromkeys(RESISTORS, 1e-3)))
     assert spot.contributions[0].name == "R1 to R4 out of balance"
     assert spot.without[0] == pytest.approx(4e-3 / 11, rel=0.01)
+
+
+def test_what_lies_above_the_floor_is_a_bound_and_never_a_number(solver: BatchSolver) -> None:
+    """A matched stage with a near-ideal op-amp, G = 10: nothing to tell but that CMRR is above 220 dB."""
+    found = budget(solver, DrawnCase(1, "difference", difference(10.0), ()), [50.0, 1000.0])
+    assert found.contributions == ()
+    for spot in found.spots:
+        assert spot.floor_db == pytest.approx(220, abs=0.01)
+        assert decibels(spot.worst) > 220
+        assert spot.level_db(spot.worst) == spot.level_db(0.0) == spot.floor_db
+        assert np.isnan(spot.residual)
+    budgets, worst = budget_table([found]), worst_case_table([found], None)
+    assert budgets.empty
+    assert {"case", "cause", "kind", "rho_re", "alone_db"} < set(budgets)
+    assert (worst[["nominal_db", "extreme_value_db", "sum_db"]].eq(worst["floor_db"], axis=0)).all(axis=None)
+    console = Console(file=StringIO(), width=200)
+    print_budget(console, budgets, worst, "Case 1")
+    printed = console.file.getvalue()  # type: ignore[attr-defined]
+    assert "1 kHz: nominal > 220 dB; the contributions sum to > 220 dB.\n" in printed
+    assert "Nothing is unlike on the two sides, and nothing varies." in printed
+
+
+def test_a_budget_of_one_frequency(tmp_path: Path) -> None:
+    """From a spec to its folder; closed forms of the difference stage in the tables."""
+    text = """\
+stage: {topology: difference, parts: {R1: 10k, R3: 10k}, gain: 10, opamp: near-ideal}
+frequency: {start: 50, stop: 50, spots: [50]}
+opamps: {near-ideal: {open_loop_gain: 160 dB, gain_bandwidth: 1G}}
+tolerance: {draws: 10, parts: [{of: [R1, R2, R3, R4], absolute: 0.1 %}]}
+"""
+    result = run_budget(swept(tmp_path, text).spec, tmp_path / "budget", jobs=1)
+    table = pd.read_csv(result.folder / "budget.csv")
+    assert table["cause"].sort_values().tolist() == list(RESISTORS)
+    np.testing.assert_allclose(table["alone_db"], 20 * np.log10(11 / 1e-3), atol=0.01)
+    np.testing.assert_allclose(table["without_db"], 20 * np.log10(11 / 3e-3), atol=0.01)
+    np.testing.assert_allclose(table["without_summed_db"], table["without_db"], atol=0.01)
+    np.testing.assert_allclose(table["share"], 0.25, atol=1e-3)
+    worst = pd.read_csv(result.folder / "worst_case.csv").iloc[0]
+    assert worst["extreme_value_db"] == pytest.approx(20 * np.log10(11 / 4e-3), abs=0.01)
+    assert worst["root_sum_square_db"] == pytest.approx(20 * np.log10(11 / 2e-3), abs=0.01)
+    assert worst["residual"] < 1e-3
+    board = pd.read_csv(result.folder / "worst_boards.csv").set_index("part")
+    errors = board["board"] / board["nominal"] - 1
+    np.testing.assert_allclose(np.abs(errors), 1e-3, rtol=1e-9)
+    assert np.sign(errors[list(RESISTORS)]).tolist() in ([1, -1, -1, 1], [-1, 1, 1, -1])
