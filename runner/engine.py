@@ -145,9 +145,8 @@ class Engine:
         complaints = self._complaints()
         loaded = any(line.startswith("Circuit:") for line in self._shared.stdout.splitlines())
         if complaints or not loaded:
-            raise SimulationError(
-                "the netlist was refused: " + ("; ".join(complaints) or "no circuit loaded")
-            )
+            said = "; ".join(complaints) or "no circuit loaded"
+            raise SimulationError(_explained(f"the netlist was refused: {said}"))
 
     def alter(self, commands: Sequence[str]) -> None:
         """Set element values of the loaded circuit.

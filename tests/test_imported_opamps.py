@@ -8,7 +8,10 @@ from __future__ import annotations
 
 import json
 import math
+import os
 import re
+import subprocess
+import sys
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -382,6 +385,20 @@ def test_a_hostile_model_is_refused_with_file_and_line(tmp_path: Path) -> None:
     assert isinstance(result.exception, SpecError)
     assert re.search(r"a\.lib:12:1: ngspice runs this comment as a command", str(result.exception))
     assert not canary.exists()
+
+
+def test_missing_code_models_are_named_with_the_remedy(tmp_path: Path) -> None:
+    path = write(tmp_path, {"b.lib": Boyle().text()}, {"b": f"file: b.lib, subcircuit: boyle, {FIVE}"})
+    # Without its scripts ngspice does not load the code models, as where they are not installed.
+    environment = {**os.environ, "SPICE_SCRIPTS": str(tmp_path)}
+    program = "from modepair.runner.cli.app import main; main()"
+    done = subprocess.run(
+        [sys.executable, "-c", program, "opamp", "--file", str(path)],
+        env=environment, capture_output=True, text=True, timeout=120, check=False,
+    )  # fmt: skip
+    assert done.returncode == 3
+    assert "POLY and TABLE need ngspice's code models" in done.stdout
+    assert "apt-get install ngspice" in done.stdout
 
 
 def test_a_changed_model_file_is_screened_again(folder: Path) -> None:
