@@ -1,6 +1,7 @@
 from .deck import Bias as Bias
 from .deck import Deck as Deck
 from .imperfections import imperfections as imperfections
+from .imperfections import parts_gone as parts_gone
 from .imported import ImportedModel as ImportedModel
 from .imported import imported_models as imported_models
 from .imported import models_of as models_of

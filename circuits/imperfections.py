@@ -10,7 +10,7 @@ from collections.abc import Mapping
 
 import numpy as np
 
-__all__ = ["imperfections"]
+__all__ = ["imperfections", "parts_gone"]
 
 SUBTRACTOR_OPAMP = {"difference": "A1", "buffered-difference": "A3", "two-opamp": "A2", "three-opamp": "A3"}
 """The op-amp that subtracts. It holds its output at nothing against the common mode's current in its feedback, by
@@ -98,6 +98,24 @@ def imperfections(topology: str, parts: Mapping[str, float]) -> dict[str, dict[s
     if subtractor and value(f"{subtractor}.output_resistance"):
         found[f"{subtractor}.output_resistance"] = {f"{subtractor}.output_resistance": 0.0}
     return found
+
+
+def parts_gone(ideal: Mapping[str, float]) -> frozenset[str]:
+    """Name the parts that make no more error of their own, whatever their tolerance, once an imperfection is gone.
+
+    Parameters
+    ----------
+    ideal : mapping of str to float
+        Part values that take it away, from `imperfections`.
+
+    Returns
+    -------
+    frozenset of str
+        Those that are taken out or made ideal; not those made equal to others.
+    """
+    return frozenset(
+        name for name, value in ideal.items() if value in (0.0, np.inf, IDEAL_GAIN, IDEAL_BANDWIDTH_HZ)
+    )
 
 
 def _bridge(topology: str, parts: Mapping[str, float]) -> dict[str, dict[str, float]]:

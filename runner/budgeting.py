@@ -8,7 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import Deck, imperfections
+from modepair.circuits import Deck, imperfections, parts_gone
 from modepair.reports import ModePair
 from modepair.reports.budget import Contribution, decibels, root_sum_square, worst_signs
 from modepair.reports.figures import spot_indices
@@ -56,6 +56,9 @@ class SpotBudget:
         By falling size, rho at this spot only (shape (1,)), with the worst board's signs.
     without : tuple of float
         |rho| of the worst board without each of the first contributions, solved.
+    without_summed : tuple of float
+        The same from the sum: |rho| of the worst board less the contribution, and less the tolerances of parts that
+        go with a nominal imperfection.
     floor_db : float
         Highest CMRR that the solve can tell; what reads higher is only known to be above it.
     """
@@ -68,6 +71,7 @@ class SpotBudget:
     signs: Mapping[str, float]
     contributions: tuple[Contribution, ...]
     without: tuple[float, ...]
+    without_summed: tuple[float, ...]
     floor_db: float
 
     @property
@@ -275,12 +279,16 @@ def _spot(
         for one, sign in zip(tolerances, signs, strict=True)
     ] + [Contribution(one.name, one.kind, one.rho[column : column + 1]) for one in nominals]
     order = sorted(range(len(signed)), key=lambda i: -abs(signed[i].rho[0]))
-    gone = []
+    gone, summed = [], []
     for i in order[:TOP]:
+        along = {i}
         if i < len(causes):
             gone.append(case.board({**edges, causes[i].key: 0.0}))
         else:
             gone.append(case.board(edges, without=signed[i].name))
+            parts = parts_gone(case.defects[signed[i].name])
+            along |= {index for index, cause in enumerate(causes) if parts.issuperset(cause.parts)}
+        summed.append(abs(worst - sum(complex(signed[index].rho[0]) for index in along)))
     without = np.abs(case.solve(gone, there).error_ratio[:, 0]) if gone else np.empty(0)
     spot = SpotBudget(
         frequency_hz,
@@ -291,6 +299,7 @@ def _spot(
         {cause.name: edges[cause.key] for cause in causes},
         tuple(signed[i] for i in order),
         tuple(without.tolist()),
+        tuple(summed),
         float(pair.floor_db[1, column]),
     )
     return spot, case.board(edges)

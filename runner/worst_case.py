@@ -114,7 +114,7 @@ def budget_table(budgets: Sequence[CaseBudget]) -> pd.DataFrame:
                         "share": abs(rho) / size if size else 0.0,
                         "alone_db": spot.level_db(rho),
                         "without_db": spot.level_db(spot.without[rank]) if solved else None,
-                        "without_summed_db": spot.level_db(spot.worst - rho) if solved else None,
+                        "without_summed_db": spot.level_db(spot.without_summed[rank]) if solved else None,
                         "floor_db": spot.floor_db,
                     }
                 )

@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from modepair.circuits import imperfections
+from modepair.circuits import imperfections, parts_gone
 from tests.dense import solve_dense
 from tests.published.parts import buffered_difference, difference, three_opamp, two_opamp
 from tests.random_stages import TOPOLOGIES, random_parts
@@ -106,6 +106,18 @@ def test_values_that_gain_worked_out_are_balanced_despite_round_off() -> None:
         r1, r3 = 9.1e3, 4.7e3
         parts = difference() | {"R1": r1, "R3": r3, "R2": gain * r1, "R4": gain * r3}
         assert list(imperfections("difference", parts)) == ["R1 against R3"]
+
+
+def test_parts_that_are_taken_out_or_made_ideal_are_gone_and_those_made_equal_are_not() -> None:
+    parts = two_opamp() | {"RREF": 0.1, "C2": 1e-12, "RSP": 10.0, "RSN": 11.0, "A2.cmrr": 1e5}
+    found = {name: parts_gone(ideal) for name, ideal in imperfections("two-opamp", parts).items()}
+    assert found == {
+        "RREF": {"RREF"},
+        "RSP against RSN": set(),
+        "A1's finite gain": {"A1.open_loop_gain", "A1.gain_bandwidth", "A1.phase_margin"},
+        "C2": {"C2"},
+        "A2.cmrr": {"A2.cmrr"},
+    }
 
 
 def test_an_ideal_cmrr_is_no_imperfection() -> None:
