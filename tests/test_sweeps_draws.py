@@ -322,7 +322,9 @@ def test_only_the_parts_of_a_case_vary() -> None:
 def test_an_axis_value_holds_in_place_of_the_sections() -> None:
     section = tolerance({"of": ["R1", "R2"], "absolute": 1e-2})
     causes = variates(
-        section, {"tolerance.parts[0].absolute": 2e-2, "tolerance.parts[0].matching": 1e-4}, dict.fromkeys(NAMES, 1.0)
+        section,
+        {"tolerance.parts[0].absolute": 2e-2, "tolerance.parts[0].matching": 1e-4},
+        dict.fromkeys(NAMES, 1.0),
     )
     assert [cause.bound for cause in causes] == [2e-2, 1e-4, 1e-4]
 
