@@ -12,7 +12,8 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.ticker import FixedFormatter, FixedLocator, MultipleLocator, NullFormatter
+from matplotlib.markers import TICKDOWN
+from matplotlib.ticker import FixedFormatter, FixedLocator, MultipleLocator, NullLocator
 from matplotlib.transforms import ScaledTranslation
 
 from modepair.reports.pairs import FloatArray
@@ -39,12 +40,11 @@ _LOOK: dict[str, Any] = {
     "xtick.color": INK,
     "ytick.color": INK,
     "xtick.major.size": 4.0,
-    "xtick.minor.size": 2.0,
     "hatch.linewidth": 0.5,
     "svg.hashsalt": "modepair",
     "svg.fonttype": "path",
     "figure.dpi": 100.0,
-    "savefig.dpi": 160.0,
+    "savefig.dpi": 140.0,
 }
 
 # Inches.
@@ -197,12 +197,26 @@ def frequency_axis(panel: Axes, frequency_hz: FloatArray, named: bool = True, sp
     panel.xaxis.set_major_formatter(
         FixedFormatter([frequency_text(t) if i % every == 0 else "" for i, t in enumerate(major)])
     )
-    panel.xaxis.set_minor_locator(FixedLocator(minor))
-    panel.xaxis.set_minor_formatter(NullFormatter())
+    panel.xaxis.set_minor_locator(NullLocator())
+    _draw_minor_ticks(panel, minor)
     panel.grid(True, which="major", axis="x")
     panel.set_axisbelow(True)
     if named:
         panel.set_xlabel("frequency", loc="right")
+
+
+def _draw_minor_ticks(panel: Axes, places: Sequence[float]) -> None:
+    """Draw minor ticks as one artist: matplotlib's own are three each, and cost half of a picture's time."""
+    panel.scatter(
+        list(places),
+        [0.0] * len(places),
+        s=4.0,
+        marker=TICKDOWN,
+        color=INK,
+        linewidths=0.6,
+        transform=panel.get_xaxis_transform(),
+        clip_on=False,
+    )
 
 
 def level_axis(panel: Axes, levels: Sequence[FloatArray], name: str, steps: Sequence[float]) -> None:

@@ -254,7 +254,7 @@ def write_plot(figure: Figure, stem: Path) -> tuple[Path, Path]:
         The PNG and the SVG file. The same curves give the same bytes: no date, no random identifiers.
     """
     png, svg = stem.with_name(f"{stem.name}.png"), stem.with_name(f"{stem.name}.svg")
-    figure.savefig(png, metadata={"Software": "modepair"})
+    figure.savefig(png, metadata={"Software": "modepair"}, pil_kwargs={"compress_level": 3})
     figure.savefig(svg, metadata={"Date": None, "Creator": "modepair"})
     return png, svg
 

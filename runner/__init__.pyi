@@ -1,7 +1,7 @@
 from .checking import Check as Check
 from .checking import check as check
-from .comparing import compare_runs as compare_runs
 from .comparing import Compared as Compared
+from .comparing import compare_runs as compare_runs
 from .errors import EngineMissingError as EngineMissingError
 from .errors import OutputError as OutputError
 from .errors import ReadingError as ReadingError

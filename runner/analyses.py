@@ -54,6 +54,10 @@ class Analyses:
         SimulationError
             As `Engine.analyse`.
         """
+        if len(self.commands) == 1:
+            # One sweep solves the whole grid, and nothing needs to be put in order.
+            command, frequencies, _ = self.commands[0]
+            return engine.analyse(command, frequencies, vectors)
         result = np.empty((len(vectors), self.frequency_hz.size), np.complex128)
         for command, frequencies, places in self.commands:
             solved = engine.analyse(command, frequencies, vectors)

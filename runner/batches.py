@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -70,7 +70,7 @@ class Solved:
 
 def _unusable(batch: Batch) -> dict[int, str]:
     """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
-    names = [commands[0].split()[1].rpartition("_")[0] for commands in batch.deck.commands]
+    names = [commands[0].split()[1].lstrip("@").rpartition("_")[0] for commands in batch.deck.commands]
     passive = np.array([name[0] in "rc" for name in names])
     bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
     reasons = {}
@@ -83,11 +83,13 @@ def _unusable(batch: Batch) -> dict[int, str]:
     return reasons
 
 
-def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> Iterator[str]:
-    for index in np.flatnonzero(old != new):
-        value = repr(float(new[index]))
-        for command in deck.commands[index]:
-            yield command + value
+def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> list[str]:
+    """Commands that set what differs, one text for each element with all its copies."""
+    indices = np.flatnonzero(old != new)
+    return [
+        ";".join([command + value for command in deck.commands[index]])
+        for index, value in zip(indices.tolist(), map(repr, new[indices].tolist()), strict=True)
+    ]
 
 
 def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
@@ -184,12 +186,13 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
         try:
             if loaded is None:
                 simulator.load(deck.text, nonlinear=deck.nonlinear)
-                loaded = batch.deck.values
-            simulator.alter(list(_alterations(batch.deck, loaded, values)))
+                loaded = deck.values
+            simulator.alter(_alterations(deck, loaded, values))
             loaded = values
             check_biases(simulator, deck.biases)
             solved = analyses.solve(simulator, vectors)
-            _check_gains(deck.biases, own_gains, dict(zip(vectors, solved[:, 0].tolist(), strict=True)))
+            if deck.biases:
+                _check_gains(deck.biases, own_gains, dict(zip(vectors, solved[:, 0].tolist(), strict=True)))
             gains[index] = solved[:2]
         except EngineDeadError:
             raise

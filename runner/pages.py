@@ -10,11 +10,8 @@ from pathlib import Path
 import pandas as pd
 
 from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
-from modepair.reports.board_tables import boards_section, worst_case_section
 from modepair.reports.judged_sections import interference_section, verdict_section
 from modepair.reports.yields import Yield, draws_needed
-from modepair.runner.board_pages import plot_board_pages
-from modepair.runner.budget_pages import case_labels
 from modepair.runner.folder import RunFolder
 from modepair.runner.judging import Judged
 from modepair.runner.results import Results
@@ -146,7 +143,10 @@ def write_pages(
         ):
             figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
             plots[caption] = write_plot(figure, folder.path(name))[0].name
-    plots |= plot_board_pages(folder, sweep, results)
+    if results.boards is not None:
+        from modepair.runner.board_pages import plot_board_pages
+
+        plots |= plot_board_pages(folder, sweep, results)
     summary = Summary(
         title=spec.title or Path(spec.path).stem,
         asked=asked(sweep),
@@ -185,6 +185,9 @@ def board_claim(cases: pd.DataFrame) -> str:
 def _boards(sweep: Sweep, results: Results, worst: pd.DataFrame | None) -> dict[str, str]:
     if results.boards is None or not (results.cases["draws"] > 0).any():
         return {}
+    from modepair.reports.board_tables import boards_section, worst_case_section
+    from modepair.runner.budget_pages import case_labels
+
     cases, axes = results.cases, sweep.axes
     found = {"Boards": boards_section(cases, axes, sweep.spec.frequency.spots, board_claim(cases))}
     if worst is not None:

@@ -24,7 +24,7 @@ __all__ = [
     "plan_draws",
 ]
 
-BATCH_CASES = 64
+BATCH_CASES = 128
 """Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
 deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
 

@@ -9,7 +9,9 @@ from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from functools import cached_property
 from heapq import merge
+from importlib import import_module
 from pathlib import Path
+from threading import Thread
 from typing import TYPE_CHECKING
 
 from modepair.circuits import candidates
@@ -146,14 +148,11 @@ def run(
         BatchSolver(executors or local, workers, time_limit_s or TIME_LIMIT_S) as solver,
     ):
         solver.warm()
-        # What follows takes a second to import, in which the workers start.
-        from modepair.runner.budget_pages import work_out_worst_case
+        # What follows takes a while to import, in which the workers start.
         from modepair.runner.decks import write_decks
         from modepair.runner.journal import Journal, run_key
         from modepair.runner.judging import judge_run
         from modepair.runner.measuring import measured_section, write_measured
-        from modepair.runner.model_warnings import model_warnings
-        from modepair.runner.pages import write_pages
         from modepair.runner.plans import Plan, plan_batches, plan_draws
         from modepair.runner.record import provenance, run_record
         from modepair.runner.results import collect
@@ -163,6 +162,8 @@ def run(
         drawn = plan_draws(sweep, Streams(spec.tolerance)) if spec.tolerance and draws else ()
         ordered: Iterator[Plan] = merge(plans, drawn, key=lambda plan: int(plan.position[0]))
         kinds = _kinds(sweep)
+        # The plots are needed last and take longest to import: it is done while the workers solve.
+        Thread(target=import_module, args=("modepair.runner.pages",), daemon=True).start()
         with Journal(folder, run_key(sweep, plans, analyses, draws, draw or 0)) as journal:
             batches = journal.batches(ordered)
             solved = solver.solve(batches, analyses, lambda position: kinds[position // (draws + 1)])
@@ -187,10 +188,17 @@ def run(
         results.cases.to_csv(folder.path("cases.csv"), index=False)
         if len(judged.verdicts):
             judged.verdicts.to_csv(folder.path("verdicts.csv"), index=False)
-        worst = work_out_worst_case(folder, sweep, solver, analyses, results) if draws else None
+        worst = None
+        if draws:
+            from modepair.runner.budget_pages import work_out_worst_case
+
+            worst = work_out_worst_case(folder, sweep, solver, analyses, results)
         if draw is not None:
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
+        from modepair.runner.model_warnings import model_warnings
+        from modepair.runner.pages import write_pages
+
         warnings = model_warnings(sweep, executors or local, workers)
         measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
         origin = provenance(spec, results.engine, started)

@@ -71,10 +71,16 @@ def test_its_comment_counts_its_cases_right(path: Path) -> None:
 
 def test_the_spec_in_the_readme_is_one(tmp_path: Path) -> None:
     readme = (FOLDER.parent.parent / "README.md").read_text(encoding="utf-8")
-    (block,) = re.findall(r"^```yaml\n(.*?)^```", readme, re.MULTILINE | re.DOTALL)
+    blocks = re.findall(r"^```yaml\n(.*?)^```", readme, re.MULTILINE | re.DOTALL)
+    (base,) = [block for block in blocks if block.startswith("title:")]
     path = tmp_path / "readme.yaml"
-    path.write_text(block, encoding="utf-8")
+    path.write_text(base, encoding="utf-8")
     assert expand(load_spec(path, candidates())).count == 4
+    sections = [block for block in blocks if block.startswith(("limits:", "tolerance:"))]
+    assert len(sections) == 2
+    for section in sections:
+        path.write_text(base + section, encoding="utf-8")
+        assert expand(load_spec(path, candidates())).count == 4
 
 
 @pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
@@ -100,13 +106,23 @@ def test_candidates_and_wiring_both_matter_for_the_silo(cases: dict[str, pd.Data
     at_50hz = cases["silo-weighing"].pivot(
         index="stage.opamp", columns="source.imbalance", values="cmrr_db_at_50hz"
     )
-    assert at_50hz[0.0].max() - at_50hz[0.0].min() > 30
+    assert at_50hz[0.0].max() - at_50hz[0.0].min() > 20
     # The imbalance against 3 nF of cable and 1 nF of filter: 1/(2 pi 50 Hz 100 ohm 4 nF) is 78.0 dB. It rules
     # where the op-amps are far better; 0.3 dB for what is left of their own error.
     better = at_50hz.index.isin(["precision-bipolar", "quiet-bipolar", "zero-drift"])
     assert at_50hz.loc[better, 100.0].to_numpy() == pytest.approx(78.0, abs=0.3)
-    # Op-amps of opposite sign, 6 dB below one alone: 86 dB is 80 dB, where the network's 120 dB hardly adds.
-    assert at_50hz.loc["general-purpose", 0.0] == pytest.approx(80.0, abs=0.3)
+    # Equal op-amps in A1 and A2 cancel. A3's 86 dB, divided by a first stage of 101, adds to the reference's
+    # 0.1 ohm, 10 ppm of R4, over (1 + 1) 101: 1/(4.96e-7 + 4.95e-8) is 125.3 dB.
+    assert at_50hz.loc["general-purpose", 0.0] == pytest.approx(125.3, abs=0.3)
+
+
+def test_a_nominal_run_flatters_the_silo(cases: dict[str, pd.DataFrame]) -> None:
+    """What the README says of it: the boards' tolerances cost some 50 dB where nothing else limits."""
+    table = cases["silo-weighing"].set_index(["stage.opamp", "source.imbalance"])
+    for opamp in ("precision-bipolar", "quiet-bipolar", "zero-drift"):
+        assert 144 < table.loc[(opamp, 0.0), "cmrr_db_at_50hz"] < 146
+        assert 92 < table.loc[(opamp, 0.0), "cmrr_db_p1_at_50hz"] < 96
+    assert table.xs(100.0, level=1)["cmrr_db_p1_at_50hz"].max() < 77
 
 
 def test_a_resistor_ratio_costs_the_motor_shunt_what_its_comments_say(cases: dict[str, pd.DataFrame]) -> None:

@@ -256,9 +256,7 @@ MALFORMED = [
     Malformed(
         "unknown key, nothing near",
         spec(plus="zzz: 1\n"),
-        [
-            f"9:1: zzz: zzz is not a known key; known keys: {KNOWN_KEYS}"
-        ],
+        [f"9:1: zzz: zzz is not a known key; known keys: {KNOWN_KEYS}"],
     ),
     Malformed(
         "unknown stage key",

@@ -122,7 +122,7 @@ def test_the_record_makes_the_run_repeatable(result: Run) -> None:
     record = json.loads((result.folder / "run.json").read_text(encoding="utf-8"))
     assert record["spec"] == SPEC
     assert record["spec_digest"] == result.spec.digest
-    assert record["counts"] == {"cases": 12, "failed": 0, "frequencies": 34}
+    assert record["counts"] == {"cases": 12, "draws": 0, "failed": 0, "frequencies": 34}
     assert set(record["versions"]) >= {"modepair", "ngspice", "PySpice", "numpy"}
     assert all(record["versions"].values())
     assert record["opamps"]["poor"]["gain_bandwidth"] == 1e6
