@@ -12,7 +12,7 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.markers import TICKDOWN
+from matplotlib.markers import TICKDOWN, MarkerStyle
 from matplotlib.ticker import FixedFormatter, FixedLocator, MultipleLocator, NullLocator
 from matplotlib.transforms import ScaledTranslation
 
@@ -211,7 +211,7 @@ def _draw_minor_ticks(panel: Axes, places: Sequence[float]) -> None:
         list(places),
         [0.0] * len(places),
         s=4.0,
-        marker=TICKDOWN,
+        marker=MarkerStyle(TICKDOWN),
         color=INK,
         linewidths=0.6,
         transform=panel.get_xaxis_transform(),

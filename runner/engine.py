@@ -210,7 +210,8 @@ class Engine:
         got, *columns = [self._vector(f"{name}.{vector}") for vector in ("frequency", *vectors)]
         self._command("destroy")
         self._holds_result = False
-        if frequency_hz is not self._asked_hz or not np.array_equal(got, self._came_back):
+        known = self._came_back
+        if known is None or frequency_hz is not self._asked_hz or not np.array_equal(got, known):
             _check_frequencies(got, frequency_hz)
             self._asked_hz, self._came_back = frequency_hz, got
         if any(column.shape != got.shape for column in columns):
