@@ -112,7 +112,9 @@ def short_names(paths: Sequence[str]) -> dict[str, str]:
     return names
 
 
-def case_texts(columns: Mapping[str, Sequence[str]], joint: str = ", ") -> list[str]:
+def case_texts(
+    columns: Mapping[str, Sequence[str]], joint: str = ", ", rows: Sequence[int] | None = None
+) -> list[str]:
     """Write one text per case from the axes that vary: ``quiet-bipolar, imbalance 10``.
 
     Parameters
@@ -121,19 +123,22 @@ def case_texts(columns: Mapping[str, Sequence[str]], joint: str = ", ") -> list[
         Path to one text per case, as from `axis_columns`.
     joint : str
         What stands between the axes.
+    rows : sequence of int, optional
+        The cases wanted, by their place; all where not given.
 
     Returns
     -------
     list of str
-        One text per case. A value that starts with a digit, a sign or a point carries its axis's name. Empty
+        One text per case wanted. A value that starts with a digit, a sign or a point carries its axis's name. Empty
         texts where no axis varies.
     """
     vary, _ = varying(columns)
     count = len(next(iter(columns.values()))) if columns else 0
+    wanted = range(count) if rows is None else rows
     names = short_names(list(columns))
-    texts: list[list[str]] = [[] for _ in range(count)]
+    texts: list[list[str]] = [[] for _ in wanted]
     for path, values in vary.items():
-        for text, value in zip(texts, values, strict=True):
+        for text, value in zip(texts, [values[row] for row in wanted], strict=True):
             named = value[:1].isdigit() or value[:1] in "+-.−"
             text.append(f"{names[path].replace('_', ' ')} {value}" if named else value)
     return [joint.join(text) for text in texts]

@@ -137,7 +137,10 @@ def summary_text(summary: Summary) -> str:
     done = cases[is_done]
     columns = axis_columns(cases, summary.axes)
     vary, fixed = varying(columns)
-    names_of_case = dict(zip(cases["case"].tolist(), case_texts(columns) or [""] * len(cases), strict=True))
+    # Names of the cases that the page names, and not of all: there may be hundreds of thousands.
+    places = np.flatnonzero(~is_done)[:ROWS_OF_MANY].tolist() + _lowest_place(cases, is_done)
+    names = (case_texts(columns, rows=places) if columns else []) or [""] * len(places)
+    names_of_case = dict(zip(cases["case"].iloc[places].tolist(), names, strict=True))
     many = len(done) > MOST_ROWS
     shown = done.nsmallest(ROWS_OF_MANY, "cmrr_db_lowest") if many else done
     header, rules, rows = _table(summary, shown, list(vary))
@@ -207,6 +210,13 @@ def _one_line(header: str) -> str:
     """Join a console header: ``band-, width`` to one word, the unit after a comma."""
     *name, unit = header.replace("-\n", "").split("\n")
     return f"{' '.join(name)}, {unit}" if unit else " ".join(name)
+
+
+def _lowest_place(cases: pd.DataFrame, is_done: pd.Series[bool]) -> list[int]:
+    """Place of the finished case with the lowest CMRR, if any is finished."""
+    if not is_done.any():
+        return []
+    return [int(cases["cmrr_db_lowest"].where(is_done, np.inf).to_numpy().argmin())]
 
 
 def _lowest(done: pd.DataFrame, names_of_case: Mapping[int, str]) -> str:

@@ -132,7 +132,7 @@ def write_pages(
     spec = sweep.spec
     plots = {}
     if results.kept is not None:
-        rows = results.cases.set_index("case", drop=False).loc[results.kept_case]
+        rows = results.cases[results.cases["case"].isin(results.kept_case)]
         labels = axis_columns(rows, sweep.axes)
         case = results.kept_case.tolist()
         title = spec.title

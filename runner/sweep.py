@@ -185,7 +185,7 @@ def run(
             draw=draw or 0,
         )
         results = replace(results, cases=judged.cases)
-        results.cases.to_csv(folder.path("cases.csv"), index=False)
+        results.cases.to_csv(folder.path("cases.csv"), index=False, chunksize=500)
         if len(judged.verdicts):
             judged.verdicts.to_csv(folder.path("verdicts.csv"), index=False)
         worst = None
