@@ -114,8 +114,8 @@ def _taken(values: float | Values, rows: Rows) -> Values:
 
 
 def _commands(element: Element) -> tuple[str, ...]:
-    # Of the forms that set a gain, this is the one that ngspice reads fastest, by an eighth.
-    form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{} = "
+    # Of the forms that ngspice knows these are the ones it reads fastest, by a tenth; spaces cost time.
+    form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{}="
     return tuple(form.format(element.name.lower(), copy) for copy in COPIES)
 
 

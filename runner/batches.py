@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from modepair.circuits.deck import GAIN_NODES, Bias, Deck
 from modepair.circuits.elements import GROUND
+from modepair.runner.alterations import Alterations
 from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
 from modepair.runner.errors import EngineDeadError, SimulationError
@@ -81,15 +82,6 @@ def _unusable(batch: Batch) -> dict[int, str]:
             f"element {name} would be {value:g}; it must be a finite number above zero"
         )
     return reasons
-
-
-def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> list[str]:
-    """Commands that set what differs, one text for each element with all its copies."""
-    indices = np.flatnonzero(old != new)
-    return [
-        ";".join([command + value for command in deck.commands[index]])
-        for index, value in zip(indices.tolist(), map(repr, new[indices].tolist()), strict=True)
-    ]
 
 
 def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
@@ -179,6 +171,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
     }
     pins = list(dict.fromkeys(node.lower() for bias in deck.biases for node in bias.driven if node != GROUND))
     vectors = (*batch.vectors, *(pin for pin in pins if pin not in batch.vectors))
+    alterations = Alterations(deck)
     loaded: npt.NDArray[np.float64] | None = None
     for index, (position, values) in enumerate(zip(batch.position.tolist(), batch.values, strict=True)):
         if position in failures:
@@ -187,7 +180,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
             if loaded is None:
                 simulator.load(deck.text, nonlinear=deck.nonlinear)
                 loaded = deck.values
-            simulator.alter(_alterations(deck, loaded, values))
+            simulator.alter(alterations.between(loaded, values))
             loaded = values
             check_biases(simulator, deck.biases)
             solved = analyses.solve(simulator, vectors)
