@@ -15,7 +15,14 @@ from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
 from modepair.runner.errors import EngineDeadError, SimulationError
 
-__all__ = ["Batch", "Solved", "check_biases", "solve_batch"]
+__all__ = ["BATCH_CASES", "DRAWS_OF_BATCH", "Batch", "Solved", "check_biases", "solve_batch"]
+
+BATCH_CASES = 128
+"""Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
+deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
+
+DRAWS_OF_BATCH = 128
+"""Draws in a batch, cut the same way for the same reason."""
 
 
 @dataclass(frozen=True)
