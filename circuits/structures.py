@@ -12,7 +12,7 @@ from modepair.circuits.bench import gain_netlist, imported_mounting
 from modepair.circuits.deck import Bias, Deck
 from modepair.circuits.elements import GROUND, Card, Element, Values
 from modepair.circuits.imported import ImportedModel, Models, model_texts, supply_nodes
-from modepair.circuits.netlist import COPIES, netlist
+from modepair.circuits.netlist import ALTERABLE, COPIES, netlist
 from modepair.circuits.sources import source_elements
 from modepair.circuits.stages import stage_cards
 
@@ -60,11 +60,17 @@ class Structure:
         cards, biases = stage_cards(self.topology, here, plus, minus, self.models)
         return (*network, *cards), biases
 
-    def _netlist(self, rows: Rows) -> str:
+    def _netlist(self, rows: Rows, *, alterable: bool = False) -> str:
         cards, biases = self._circuit(rows)
         used = self.models.values()
         watched = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
-        return netlist(cards, models=model_texts(used), supplies=supply_nodes(used), watched=watched)
+        return netlist(
+            cards,
+            models=model_texts(used),
+            supplies=supply_nodes(used),
+            watched=watched,
+            alterable=alterable,
+        )
 
     def elements(self, rows: Rows) -> tuple[Element, ...]:
         """Elements of some of the cases, without what imported models hold.
@@ -105,7 +111,8 @@ class Structure:
             replace(bias.in_copies(*COPIES), reference=references[bias.instance])
             for bias in self._circuit(row)[1]
         )
-        return Deck(self._netlist(row), commands, values, biases, bool(self.models))
+        names = tuple(element.name for element in elements)
+        return Deck(self._netlist(row, alterable=True), names, commands, values, biases, bool(self.models))
 
 
 def _taken(values: float | Values, rows: Rows) -> Values:
@@ -114,9 +121,12 @@ def _taken(values: float | Values, rows: Rows) -> Values:
 
 
 def _commands(element: Element) -> tuple[str, ...]:
-    # Of the forms that ngspice knows these are the ones it reads fastest, by a tenth; spaces cost time.
+    # Of the forms that ngspice knows these are the ones it reads fastest; spaces cost time too.
+    name = element.name.lower()
+    if element.kind in ALTERABLE:
+        return (f"altermod @{name}[{ALTERABLE[element.kind]}]=",)
     form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{}="
-    return tuple(form.format(element.name.lower(), copy) for copy in COPIES)
+    return tuple(form.format(name, copy) for copy in COPIES)
 
 
 def structures(

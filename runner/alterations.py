@@ -6,7 +6,8 @@ can be, and what they have in common from case to case is put together once. Lig
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
@@ -20,6 +21,14 @@ LONGEST_VALUE = len("-1.2345678901234567e-300")
 """Characters of a double with 17 digits, by which it reads back to the same one."""
 
 
+@dataclass(frozen=True)
+class _Pattern:
+    """Which elements differ: which of their values each command takes, and lines to fill in with some of these."""
+
+    given: tuple[int, ...]
+    lines: tuple[tuple[str, slice], ...]
+
+
 class Alterations:
     """Writes the lines for the cases of one deck.
 
@@ -31,9 +40,8 @@ class Alterations:
 
     def __init__(self, deck: Deck) -> None:
         self._commands = deck.commands
-        # By the elements that differ: lines to fill in, each with the first and the last of its values. Most batches
-        # know one such pattern or a few.
-        self._patterns: dict[bytes, list[tuple[str, slice]]] = {}
+        # By the elements that differ. Most batches know one such pattern or a few.
+        self._patterns: dict[bytes, _Pattern] = {}
 
     def between(self, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> list[str]:
         """Write what turns one case into another.
@@ -49,31 +57,28 @@ class Alterations:
             Lines of at most `LINE_LENGTH` characters, each with several commands; none where nothing differs.
         """
         differs = old != new
-        pattern = differs.tobytes()
-        if pattern not in self._patterns:
-            self._patterns[pattern] = list(self._lines(differs))
-        lines = self._patterns[pattern]
-        if not lines:
-            return []
+        key = differs.tobytes()
+        pattern = self._patterns.get(key) or self._patterns.setdefault(key, self._pattern(differs))
         values = new[differs].tolist()
         words = ("%.17g " * len(values) % tuple(values)).split()
-        # Every element stands in each copy of the circuit.
-        copies = len(self._commands[0])
-        repeated = tuple(word for word in words for _ in range(copies))
-        return [line % repeated[part] for line, part in lines]
+        given = tuple([words[index] for index in pattern.given])
+        return [line % given[part] for line, part in pattern.lines]
 
-    def _lines(self, differs: npt.NDArray[np.bool_]) -> Iterator[tuple[str, slice]]:
-        """Yield lines with a gap for each value, and which values go there."""
-        commands = [command for index in np.flatnonzero(differs) for command in self._commands[index]]
+    def _pattern(self, differs: npt.NDArray[np.bool_]) -> _Pattern:
+        several = [self._commands[index] for index in np.flatnonzero(differs)]
+        commands = [command for commands in several for command in commands]
+        given = tuple(index for index, commands in enumerate(several) for _ in commands)
+        lines: list[tuple[str, slice]] = []
         start, length = 0, 0
         for position, command in enumerate(commands):
             needed = len(command) + LONGEST_VALUE + 1
             if length + needed > LINE_LENGTH:
-                yield _line(commands[start:position]), slice(start, position)
+                lines.append((_line(commands[start:position]), slice(start, position)))
                 start, length = position, 0
             length += needed
         if commands:
-            yield _line(commands[start:]), slice(start, len(commands))
+            lines.append((_line(commands[start:]), slice(start, len(commands))))
+        return _Pattern(given, tuple(lines))
 
 
 def _line(commands: Sequence[str]) -> str:
