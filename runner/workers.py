@@ -55,7 +55,8 @@ class _Workers(SpawnContext):
             if process.is_alive():
                 process.kill()
         for process in self.started:
-            process.join(5.0)
+            if process.pid is not None:
+                process.join(5.0)
 
 
 def _leave_with_parent(home: str) -> None:
@@ -100,12 +101,26 @@ def _main_module_hidden() -> Iterator[None]:
 
 @contextmanager
 def _undisturbed() -> Iterator[None]:
-    """Hold back Ctrl-C and the like for a moment; a worker started meanwhile never sees Ctrl-C."""
+    """Hold back Ctrl-C and the like for a moment; a worker started meanwhile never sees Ctrl-C.
+
+    The mask goes to the worker. It holds for this thread alone, and a signal that another thread takes would be handled
+    here all the same, so the handlers wait too.
+    """
+    came: list[int] = []
+    handlers = {}
+    if threading.current_thread() is threading.main_thread():
+        handlers = {number: handler for number in STOPPING if callable(handler := signal.getsignal(number))}
     held = signal.pthread_sigmask(signal.SIG_BLOCK, STOPPING)
     try:
+        for number in handlers:
+            signal.signal(number, lambda number, frame: came.append(number))
         yield
     finally:
+        for number, handler in handlers.items():
+            signal.signal(number, handler)
         signal.pthread_sigmask(signal.SIG_SETMASK, held)
+        if came:
+            signal.raise_signal(came[0])
 
 
 @contextmanager

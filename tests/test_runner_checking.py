@@ -23,7 +23,12 @@ EXAMPLES = Path(__file__).parent.parent / "sweeps" / "examples"
 
 
 def modepair(*arguments: object, cwd: Path) -> subprocess.CompletedProcess[str]:
-    command = [sys.executable, "-c", "from modepair.runner.cli.app import main; main()", *map(str, arguments)]
+    command = [
+        sys.executable,
+        "-c",
+        "from modepair.runner.cli.start import main; main()",
+        *map(str, arguments),
+    ]
     return subprocess.run(command, capture_output=True, text=True, cwd=cwd, timeout=120, check=False)
 
 

@@ -13,7 +13,7 @@ import pytest
 
 from tests.test_malformed_specs import MALFORMED
 
-COMMAND = [sys.executable, "-c", "from modepair.runner.cli.app import main; main()"]
+COMMAND = [sys.executable, "-c", "from modepair.runner.cli.start import main; main()"]
 SPEC = """\
 title: A difference stage
 stage:

@@ -17,7 +17,6 @@ from modepair.runner.cli.opamp import opamp_command
 from modepair.runner.cli.options import SIMULATION_FAILED, USAGE
 from modepair.runner.cli.run import run_command
 from modepair.runner.cli.schema import schema_command
-from modepair.runner.cli.stopping import StoppedError, stop_in_order
 from modepair.runner.cli.tighten import tighten_command
 
 __all__ = ["app", "main"]
@@ -41,14 +40,6 @@ app.command("schema")(schema_command)
 
 def main() -> None:
     """Run the command line and turn every known error into its message and exit status."""
-    try:
-        stop_in_order()
-        _run()
-    except StoppedError as stopped:
-        _fail(f"modepair: {stopped}", stopped.status)
-
-
-def _run() -> None:
     from modepair.sweeps import ModepairError, SpecError
 
     try:

@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 import gc
-import sys
 
-from modepair.runner.cli.stopping import StoppedError, stop_in_order
+from modepair.runner.cli.stopping import stopping_in_order
 
 __all__ = ["main"]
 
@@ -14,10 +13,7 @@ def main() -> None:
     """Import the command line and run it."""
     # Imports make many objects and hardly any garbage: looking for it takes a tenth of a short run.
     gc.set_threshold(100_000, 20, 20)
-    try:
-        stop_in_order()
+    with stopping_in_order():
         from modepair.runner.cli.app import main as run
-    except StoppedError as stopped:
-        print(f"modepair: {stopped}", file=sys.stderr)
-        sys.exit(stopped.status)
-    run()
+
+        run()
