@@ -13,7 +13,8 @@ from modepair.reports.pairs import FLOOR_VOLTS, ModePair
 
 if TYPE_CHECKING:
     from modepair.reports.axis_labels import axis_columns
-    from modepair.reports.plots import plot_cmrr, plot_gains, write_plot
+    from modepair.reports.plot_files import write_plot
+    from modepair.reports.plots import plot_cmrr, plot_gains
     from modepair.reports.summary import Summary, cautions, summary_text
     from modepair.reports.tables import console_for, print_cases
 
@@ -42,7 +43,7 @@ _LATER = {
     "plot_gains": "plots",
     "print_cases": "tables",
     "summary_text": "summary",
-    "write_plot": "plots",
+    "write_plot": "plot_files",
 }
 
 

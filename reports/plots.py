@@ -1,12 +1,11 @@
-"""Curves over frequency, with a label at each curve, as PNG and SVG.
+"""Curves over frequency, with a label at each curve.
 
-Nothing here touches pyplot or its global state; the same arrays give the same bytes.
+Nothing here touches pyplot or its global state; the same arrays give the same picture.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -23,11 +22,10 @@ from modepair.reports.panels import (
     INK,
     draw_floor,
     draw_mask,
-    frequency_axis,
     in_our_look,
-    level_axis,
     make_panels,
 )
+from modepair.reports.scales import frequency_axis, level_axis
 
 MOST_CURVES = 40
 """Cases beyond which their spread is drawn instead of each curve."""
@@ -235,28 +233,6 @@ def plot_gains(
             )
     write_labels(panels[0][1], ends)
     return figure
-
-
-@in_our_look
-def write_plot(figure: Figure, stem: Path) -> tuple[Path, Path]:
-    """Write a figure as PNG and SVG.
-
-    Parameters
-    ----------
-    figure : matplotlib.figure.Figure
-        As from `plot_cmrr` and `plot_gains`.
-    stem : Path
-        Path without a suffix.
-
-    Returns
-    -------
-    tuple of Path
-        The PNG and the SVG file. The same curves give the same bytes: no date, no random identifiers.
-    """
-    png, svg = stem.with_name(f"{stem.name}.png"), stem.with_name(f"{stem.name}.svg")
-    figure.savefig(png, metadata={"Software": "modepair"}, pil_kwargs={"compress_level": 3})
-    figure.savefig(svg, metadata={"Date": None, "Creator": "modepair"})
-    return png, svg
 
 
 def _names_and_styles(

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import io
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
@@ -15,6 +14,7 @@ from modepair.reports.comparison import scores
 from modepair.reports.interactive import PageCurve, PageOverlay
 from modepair.reports.pairs import FloatArray, ModePair
 from modepair.reports.palette import curve_styles
+from modepair.reports.plot_files import svg_text
 from modepair.reports.plots import plot_cmrr
 from modepair.runner.comparing import Compared, candidate_axes, run_names, target_of
 from modepair.runner.reading import curves_of, nominal_pairs
@@ -290,9 +290,7 @@ def _still(run: Run, pairs: Mapping[int, ModePair], title: str) -> str:
         mask=mask,
         measured=run.spec.measurements,
     )
-    buffer = io.StringIO()
-    drawing.savefig(buffer, format="svg", metadata={"Date": None, "Creator": "modepair"})
-    return buffer.getvalue()
+    return svg_text(drawing)
 
 
 def _baseline_overlays(baseline: Baseline) -> list[PageOverlay]:

@@ -1,8 +1,7 @@
-"""Plots: what is drawn, that labels do not overlap, that files are the same each time."""
+"""Plots: what is drawn, that labels do not overlap."""
 
 import itertools
 import sys
-from xml.etree import ElementTree
 
 import numpy as np
 import pytest
@@ -12,7 +11,7 @@ from matplotlib.transforms import Bbox
 
 from modepair.reports.axis_labels import axis_columns
 from modepair.reports.pairs import ModePair
-from modepair.reports.plots import MOST_CURVES, plot_cmrr, plot_gains, write_plot
+from modepair.reports.plots import MOST_CURVES, plot_cmrr, plot_gains
 from modepair.sweeps.measured import Measurement
 from tests.synthetic_cases import Made, one_pole_cases
 
@@ -28,7 +27,7 @@ def with_gid(figure: Figure, start: str) -> list:
 
 
 def shown_texts(figure: Figure) -> list[Text]:
-    """Every text that is drawn; matplotlib keeps tick labels outside the view but does not draw them."""
+    """Every text that is drawn; matplotlib keeps its own tick labels outside the view but does not draw them."""
     figure.canvas.draw()
     outside = set()
     for axes in figure.axes:
@@ -90,10 +89,9 @@ def test_labels_stand_in_the_order_of_their_curves():
 def test_frequency_ticks():
     made = one_pole_cases(2, 1)
     figure = plot_cmrr(made.pair, labels_of(made))
-    figure.canvas.draw()
-    ticks = [t.get_text() for t in figure.axes[0].get_xticklabels()]
+    ticks = [t.get_text() for t in with_gid(figure, "frequency") if t.get_gid() == "frequency"]
     assert ticks == ["1 Hz", "10 Hz", "100 Hz", "1 kHz", "10 kHz", "100 kHz", "1 MHz"]
-    assert figure.axes[0].get_xlabel() == "frequency"
+    assert [t.get_text() for t in with_gid(figure, "frequency-name")] == ["frequency"]
     assert [t.get_text() for t in with_gid(figure, "level-name")] == ["CMRR (dB)"]
 
 
@@ -105,8 +103,7 @@ def test_ticks_of_a_narrow_band():
     made = one_pole_cases(2, 1)
     band = cut(made.pair, slice(45, 60))
     figure = plot_cmrr(band, labels_of(made))
-    figure.canvas.draw()
-    ticks = [t.get_text() for t in figure.axes[0].get_xticklabels()]
+    ticks = [t.get_text() for t in with_gid(figure, "frequency") if t.get_gid() == "frequency"]
     assert ticks == ["200 Hz", "500 Hz"]
 
 
@@ -235,19 +232,6 @@ def test_texts_are_not_taken_for_mathematics():
     figure = plot_cmrr(made.pair, labels, title="5 $ or $6_x")
     figure.canvas.draw()
     assert {"a $x_1$", "b $\\frac$", "5 $ or $6_x"} <= {t.get_text() for t in figure.findobj(Text)}
-
-
-def test_files_are_the_same_each_time(tmp_path):
-    made = one_pole_cases(2, 2, perfect=(3,))
-    for name in ("one", "two"):
-        files = write_plot(plot_cmrr(made.pair, labels_of(made), title="Silo"), tmp_path / f"{name}.v1")
-        assert [f.name for f in files] == [f"{name}.v1.png", f"{name}.v1.svg"]
-    for suffix in ("png", "svg"):
-        assert (tmp_path / f"one.v1.{suffix}").read_bytes() == (tmp_path / f"two.v1.{suffix}").read_bytes()
-    root = ElementTree.parse(tmp_path / "one.v1.svg").getroot()
-    assert root.tag.endswith("svg")
-    assert "date" not in (tmp_path / "one.v1.svg").read_text().lower().split("<style")[0]
-    assert (tmp_path / "one.v1.png").read_bytes().startswith(b"\x89PNG")
 
 
 def test_the_users_settings_do_not_leak_in_or_out():
