@@ -6,7 +6,7 @@ Nothing here touches pyplot or its global state; the same arrays give the same p
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from matplotlib.axes import Axes
@@ -14,7 +14,6 @@ from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
 from modepair.reports.axis_labels import case_texts, varying
-from modepair.reports.differences import Measured
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.pairs import FLOOR_VOLTS, BoolArray, FloatArray, ModePair
 from modepair.reports.palette import HUES, CurveStyle, curve_styles, mix
@@ -26,6 +25,9 @@ from modepair.reports.panels import (
     make_panels,
 )
 from modepair.reports.scales import frequency_axis, level_axis
+
+if TYPE_CHECKING:
+    from modepair.reports.differences import Measured
 
 MOST_CURVES = 40
 """Cases beyond which their spread is drawn instead of each curve."""

@@ -17,6 +17,7 @@ from typing import TYPE_CHECKING
 from modepair.circuits import candidates
 from modepair.runner.allowances import TIME_LIMIT_S
 from modepair.runner.analyses import plan_analyses
+from modepair.runner.curve_plots import draughting
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
@@ -146,6 +147,8 @@ def run(
         run_folder(target, resume=resume) as folder,
         worker_pool() as local,
         BatchSolver(executors or local, workers, time_limit_s or TIME_LIMIT_S) as solver,
+        # Boards are drawn here, and matplotlib is imported for them.
+        draughting(None if executors or draws else local) as drawing,
     ):
         solver.warm()
         # What follows takes a while to import, in which the workers start.
@@ -162,7 +165,7 @@ def run(
         drawn = plan_draws(sweep, Streams(spec.tolerance)) if spec.tolerance and draws else ()
         ordered: Iterator[Plan] = merge(plans, drawn, key=lambda plan: int(plan.position[0]))
         kinds = _kinds(sweep)
-        # The plots are needed last and take longest to import: it is done while the workers solve.
+        # The pages are needed last and take long to import: it is done while the workers solve.
         Thread(target=import_module, args=("modepair.runner.pages",), daemon=True).start()
         with Journal(folder, run_key(sweep, plans, analyses, draws, draw or 0)) as journal:
             batches = journal.batches(ordered)
@@ -208,6 +211,7 @@ def run(
             results,
             origin,
             judged,
+            drawing,
             measured_section(measured, spec, results.cases),
             worst,
             warnings,

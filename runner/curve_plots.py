@@ -1,0 +1,165 @@
+"""The plots of a run's curves, drawn in a process of their own.
+
+Matplotlib takes longer to import and to draw than a small sweep takes to solve. A process beside the others has it
+ready by the time the curves are there, and draws while tables and summary are written.
+"""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Iterator, Mapping, Sequence
+from concurrent.futures import BrokenExecutor, Future
+from contextlib import contextmanager
+from dataclasses import dataclass
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+from modepair.runner.workers import ExecutorFactory, submit
+
+if TYPE_CHECKING:
+    from concurrent.futures import Executor
+
+    from modepair.reports import ModePair
+    from modepair.reports.differences import Measured
+
+__all__ = ["CurvePlots", "Draughting", "draughting"]
+
+CMRR, GAINS = "cmrr", "gains"
+CAPTIONS = {"CMRR over frequency": CMRR, "Differential and common-mode gain over frequency": GAINS}
+"""What each plot shows, and the stem of its files."""
+
+
+@dataclass(frozen=True)
+class CurvePlots:
+    """What the plots show, as for `modepair.reports.plot_cmrr`.
+
+    Parameters
+    ----------
+    pair : ModePair
+        Gains of the cases to draw, shape (n, F).
+    labels : mapping of str to sequence of str
+        Axis path to one text per case.
+    title : str
+        Text above the panels.
+    case : sequence of int
+        Case numbers.
+    total : int
+        Number of cases of the sweep.
+    mask : sequence of (float, float)
+        Least CMRR asked for.
+    measured : sequence of Measured
+        Measurements to lay over the curves.
+    """
+
+    pair: ModePair
+    labels: Mapping[str, Sequence[str]]
+    title: str
+    case: Sequence[int]
+    total: int
+    mask: Sequence[tuple[float, float]] = ()
+    measured: Sequence[Measured] = ()
+
+    def write(self, folder: Path) -> None:
+        """Draw both plots and write them into a folder, each as PNG and SVG."""
+        from modepair.reports import plot_cmrr, plot_gains, write_plot
+
+        pair, labels, title, case, total = self.pair, self.labels, self.title, self.case, self.total
+        figure = plot_cmrr(
+            pair, labels, title=title, case=case, total=total, mask=self.mask, measured=self.measured
+        )
+        write_plot(figure, folder / CMRR)
+        write_plot(plot_gains(pair, labels, title=title, case=case, total=total), folder / GAINS)
+
+
+class Draughting:
+    """Draws plots: beside this process where there is an executor for it, else in this process.
+
+    Parameters
+    ----------
+    executor : Executor, optional
+        Has one worker.
+    """
+
+    def __init__(self, executor: Executor | None = None) -> None:
+        self._executor = executor
+        if executor is not None:
+            submit(executor, _make_ready)
+
+    def begin(self, plots: CurvePlots, folder: Path) -> Drawing:
+        """Begin to draw plots into a folder.
+
+        Parameters
+        ----------
+        plots : CurvePlots
+            What to draw.
+        folder : Path
+            Where to, absolute.
+
+        Returns
+        -------
+        Drawing
+            To wait for.
+        """
+        begun = submit(self._executor, plots.write, folder) if self._executor is not None else None
+        return Drawing(plots, folder, begun)
+
+
+@dataclass(frozen=True)
+class Drawing:
+    """Plots that are being drawn; made by `Draughting.begin`."""
+
+    plots: CurvePlots
+    folder: Path
+    begun: Future[None] | None
+
+    def finish(self) -> None:
+        """Wait until the files are there.
+
+        Raises
+        ------
+        OSError
+            If they cannot be written.
+        """
+        try:
+            if self.begun is not None:
+                return self.begun.result()
+        except BrokenExecutor:
+            # The process is gone, for want of memory perhaps; this one is as good.
+            pass
+        self.plots.write(self.folder)
+
+
+def _make_ready() -> None:
+    """Import what plots need, and read the font."""
+    from modepair.reports import plot_files, plots  # noqa: F401
+    from modepair.reports.end_labels import text_width
+
+    text_width("0", 9.0)
+
+
+@contextmanager
+def draughting(executors: ExecutorFactory | None) -> Iterator[Draughting]:
+    """Give what draws plots, in a process beside this one where that saves time.
+
+    Parameters
+    ----------
+    executors : callable, optional
+        Makes an executor of so many workers on this machine; plots are drawn in this process where absent, and where
+        there is one processor, or matplotlib is here already.
+
+    Yields
+    ------
+    Draughting
+        Its process ends with the block.
+    """
+    if executors is None or (os.cpu_count() or 1) == 1 or "matplotlib.figure" in sys.modules:
+        yield Draughting()
+        return
+    executor = executors(1)
+    done = False
+    try:
+        yield Draughting(executor)
+        done = True
+    finally:
+        executor.shutdown(wait=done, cancel_futures=True)
