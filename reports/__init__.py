@@ -13,6 +13,7 @@ from modepair.reports.pairs import FLOOR_VOLTS, ModePair
 
 if TYPE_CHECKING:
     from modepair.reports.axis_labels import axis_columns
+    from modepair.reports.case_curves import CaseCurves
     from modepair.reports.plot_files import write_plot
     from modepair.reports.plots import plot_cmrr, plot_gains
     from modepair.reports.summary import Summary, cautions, summary_text
@@ -20,6 +21,7 @@ if TYPE_CHECKING:
 
 __all__ = [
     "FLOOR_VOLTS",
+    "CaseCurves",
     "ModePair",
     "Summary",
     "axis_columns",
@@ -35,6 +37,7 @@ __all__ = [
 ]
 
 _LATER = {
+    "CaseCurves": "case_curves",
     "Summary": "summary",
     "axis_columns": "axis_labels",
     "cautions": "summary",

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Sequence
 from concurrent.futures import BrokenExecutor, Future
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -20,7 +20,7 @@ from modepair.runner.workers import ExecutorFactory, submit
 if TYPE_CHECKING:
     from concurrent.futures import Executor
 
-    from modepair.reports import ModePair
+    from modepair.reports.case_curves import CaseCurves
     from modepair.reports.differences import Measured
 
 __all__ = ["CurvePlots", "Draughting", "draughting"]
@@ -32,31 +32,19 @@ CAPTIONS = {"CMRR over frequency": CMRR, "Differential and common-mode gain over
 
 @dataclass(frozen=True)
 class CurvePlots:
-    """What the plots show, as for `modepair.reports.plot_cmrr`.
+    """What the plots show.
 
     Parameters
     ----------
-    pair : ModePair
-        Gains of the cases to draw, shape (n, F).
-    labels : mapping of str to sequence of str
-        Axis path to one text per case.
-    title : str
-        Text above the panels.
-    case : sequence of int
-        Case numbers.
-    total : int
-        Number of cases of the sweep.
+    curves : CaseCurves
+        Gains of the cases to draw.
     mask : sequence of (float, float)
-        Least CMRR asked for.
+        Least CMRR asked for, as for `modepair.reports.plot_cmrr`.
     measured : sequence of Measured
         Measurements to lay over the curves.
     """
 
-    pair: ModePair
-    labels: Mapping[str, Sequence[str]]
-    title: str
-    case: Sequence[int]
-    total: int
+    curves: CaseCurves
     mask: Sequence[tuple[float, float]] = ()
     measured: Sequence[Measured] = ()
 
@@ -64,12 +52,8 @@ class CurvePlots:
         """Draw both plots and write them into a folder, each as PNG and SVG."""
         from modepair.reports import plot_cmrr, plot_gains, write_plot
 
-        pair, labels, title, case, total = self.pair, self.labels, self.title, self.case, self.total
-        figure = plot_cmrr(
-            pair, labels, title=title, case=case, total=total, mask=self.mask, measured=self.measured
-        )
-        write_plot(figure, folder / CMRR)
-        write_plot(plot_gains(pair, labels, title=title, case=case, total=total), folder / GAINS)
+        write_plot(plot_cmrr(self.curves, mask=self.mask, measured=self.measured), folder / CMRR)
+        write_plot(plot_gains(self.curves), folder / GAINS)
 
 
 class Draughting:

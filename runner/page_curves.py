@@ -10,6 +10,7 @@ import numpy as np
 import pandas as pd
 
 from modepair.reports.axis_labels import axis_columns, case_texts, short_names, varying
+from modepair.reports.case_curves import CaseCurves
 from modepair.reports.comparison import scores
 from modepair.reports.interactive import PageCurve, PageOverlay
 from modepair.reports.pairs import FloatArray, ModePair
@@ -283,10 +284,7 @@ def _still(run: Run, pairs: Mapping[int, ModePair], title: str) -> str:
     )
     mask = run.spec.limits.cmrr.corners if run.spec.limits and run.spec.limits.cmrr else ()
     drawing = plot_cmrr(
-        stacked,
-        axis_columns(rows, run.spec.axes),
-        title=title,
-        case=numbers,
+        CaseCurves(stacked, axis_columns(rows, run.spec.axes), title, numbers),
         mask=mask,
         measured=run.spec.measurements,
     )

@@ -9,6 +9,7 @@ from pathlib import Path
 import pandas as pd
 
 from modepair.reports import Summary, axis_columns, summary_text
+from modepair.reports.case_curves import CaseCurves
 from modepair.reports.judged_sections import interference_section, verdict_section
 from modepair.reports.yields import Yield, draws_needed
 from modepair.runner.curve_plots import CAPTIONS, CurvePlots, Draughting, Drawing
@@ -166,16 +167,10 @@ def _curves(folder: RunFolder, sweep: Sweep, results: Results, drawing: Draughti
         return None
     spec = sweep.spec
     rows = results.cases[results.cases["case"].isin(results.kept_case)]
-    plots = CurvePlots(
-        results.kept,
-        axis_columns(rows, sweep.axes),
-        title=spec.title,
-        case=results.kept_case.tolist(),
-        total=sweep.count,
-        mask=spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else (),
-        measured=spec.measurements,
-    )
-    return drawing.begin(plots, folder.building)
+    case = results.kept_case.tolist()
+    curves = CaseCurves(results.kept, axis_columns(rows, sweep.axes), spec.title, case, sweep.count)
+    mask = spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else ()
+    return drawing.begin(CurvePlots(curves, mask, spec.measurements), folder.building)
 
 
 def _verdict(sweep: Sweep, results: Results, judged: Judged) -> dict[str, str]:

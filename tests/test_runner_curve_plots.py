@@ -7,6 +7,7 @@ import sys
 import pytest
 
 from modepair.reports.axis_labels import axis_columns
+from modepair.reports.case_curves import CaseCurves
 from modepair.runner.curve_plots import CAPTIONS, CurvePlots, Draughting, draughting
 from modepair.runner.workers import submit, worker_pool
 from tests.synthetic_cases import one_pole_cases
@@ -16,7 +17,7 @@ FILES = {f"{stem}.{suffix}" for stem in CAPTIONS.values() for suffix in ("png", 
 
 def curve_plots() -> CurvePlots:
     made = one_pole_cases(2, 2)
-    return CurvePlots(made.pair, axis_columns(made.cases, made.axes), "Silo", [1, 2, 3, 4], 4, [(1.0, 60.0)])
+    return CurvePlots(CaseCurves(made.pair, axis_columns(made.cases, made.axes), "Silo"), [(1.0, 60.0)])
 
 
 def bytes_of(folder) -> dict[str, bytes]:
