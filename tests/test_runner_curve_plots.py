@@ -3,11 +3,13 @@
 import os
 import signal
 import sys
+from contextlib import contextmanager
 
 import pytest
 
 from modepair.reports.axis_labels import axis_columns
 from modepair.reports.case_curves import CaseCurves
+from modepair.runner import curve_plots
 from modepair.runner.curve_plots import CAPTIONS, CurvePlots, Draughting, draughting
 from modepair.runner.workers import submit, worker_pool
 from tests.synthetic_cases import one_pole_cases
@@ -15,7 +17,7 @@ from tests.synthetic_cases import one_pole_cases
 FILES = {f"{stem}.{suffix}" for stem in CAPTIONS.values() for suffix in ("png", "svg")}
 
 
-def curve_plots() -> CurvePlots:
+def silo_plots() -> CurvePlots:
     made = one_pole_cases(2, 2)
     return CurvePlots(CaseCurves(made.pair, axis_columns(made.cases, made.axes), "Silo"), [(1.0, 60.0)])
 
@@ -28,9 +30,9 @@ def test_both_processes_draw_the_same_files(tmp_path):
     here, there = tmp_path / "here", tmp_path / "there"
     for folder in (here, there):
         folder.mkdir()
-    Draughting().begin(curve_plots(), here).finish()
+    Draughting().begin(silo_plots(), here).finish()
     with worker_pool() as executors, executors(1) as executor:
-        Draughting(executor).begin(curve_plots(), there).finish()
+        Draughting(executor).begin(silo_plots(), there).finish()
     assert bytes_of(here).keys() == FILES
     assert bytes_of(here) == bytes_of(there)
 
@@ -39,13 +41,13 @@ def test_the_plots_are_there_though_their_process_dies(tmp_path):
     with worker_pool() as executors, executors(1) as executor:
         drawing = Draughting(executor)
         os.kill(submit(executor, os.getpid).result(), signal.SIGKILL)
-        drawing.begin(curve_plots(), tmp_path).finish()
+        drawing.begin(silo_plots(), tmp_path).finish()
     assert bytes_of(tmp_path).keys() == FILES
 
 
 def test_a_file_that_cannot_be_written_is_told(tmp_path):
     with worker_pool() as executors, executors(1) as executor:
-        drawing = Draughting(executor).begin(curve_plots(), tmp_path / "gone")
+        drawing = Draughting(executor).begin(silo_plots(), tmp_path / "gone")
         with pytest.raises(FileNotFoundError, match="gone"):
             drawing.finish()
 
@@ -56,18 +58,19 @@ def test_a_process_is_started_only_where_it_saves_time(monkeypatch, processors, 
     if not imported:
         monkeypatch.delitem(sys.modules, "matplotlib.figure", raising=False)
     started = []
-    with worker_pool() as executors:
 
-        def counted(jobs):
-            started.append(jobs)
-            return executors(jobs)
+    @contextmanager
+    def counted_pool():
+        with worker_pool() as executors:
+            yield lambda jobs: started.append(jobs) or executors(jobs)
 
-        with draughting(counted):
-            pass
+    monkeypatch.setattr(curve_plots, "worker_pool", counted_pool)
+    with draughting():
+        pass
     assert started == [1] * beside
 
 
-def test_without_executors_it_draws_here(tmp_path):
-    with draughting(None) as drawing:
-        drawing.begin(curve_plots(), tmp_path).finish()
+def test_it_can_be_kept_from_starting_one(tmp_path):
+    with draughting(beside=False) as drawing:
+        drawing.begin(silo_plots(), tmp_path).finish()
     assert bytes_of(tmp_path).keys() == FILES
