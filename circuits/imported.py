@@ -5,12 +5,15 @@ from __future__ import annotations
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from modepair.circuits.deck import Bias
 from modepair.circuits.elements import GROUND, Instance
-from modepair.circuits.screening import ScreenedModel, screen
 from modepair.sweeps import Fault, Opamp, SpecError
 from modepair.sweeps.words import listed, suggestion
+
+if TYPE_CHECKING:
+    from modepair.circuits.screening import ScreenedModel
 
 __all__ = ["ImportedModel", "Models", "imported_models", "model_texts", "models_of", "supply_nodes"]
 
@@ -123,6 +126,9 @@ def _screen(path: Path, root: Path, prefix: str) -> ScreenedModel:
                 return model
         except OSError:
             pass
+    # Not at the top: most sweeps import no models, and the reader of models takes as long to import as a spec's.
+    from modepair.circuits.screening import screen
+
     model = screen(path, root, prefix=prefix)
     _screened[key] = (_signature(model.files), model)
     return model

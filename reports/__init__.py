@@ -13,12 +13,15 @@ from modepair.reports.pairs import FLOOR_VOLTS, ModePair
 
 if TYPE_CHECKING:
     from modepair.reports.axis_labels import axis_columns
-    from modepair.reports.plots import plot_cmrr, plot_gains, write_plot
+    from modepair.reports.case_curves import CaseCurves
+    from modepair.reports.plot_files import write_plot
+    from modepair.reports.plots import plot_cmrr, plot_gains
     from modepair.reports.summary import Summary, cautions, summary_text
     from modepair.reports.tables import console_for, print_cases
 
 __all__ = [
     "FLOOR_VOLTS",
+    "CaseCurves",
     "ModePair",
     "Summary",
     "axis_columns",
@@ -34,6 +37,7 @@ __all__ = [
 ]
 
 _LATER = {
+    "CaseCurves": "case_curves",
     "Summary": "summary",
     "axis_columns": "axis_labels",
     "cautions": "summary",
@@ -42,7 +46,7 @@ _LATER = {
     "plot_gains": "plots",
     "print_cases": "tables",
     "summary_text": "summary",
-    "write_plot": "plots",
+    "write_plot": "plot_files",
 }
 
 

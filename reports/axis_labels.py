@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from typing import Any, Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
-import pandas as pd
+if TYPE_CHECKING:
+    import pandas as pd
 
 LABEL_TOLERANCE = 1e-9
 """Relative distance within which a number read from cases.csv is the axis value that the spec wrote."""

@@ -13,7 +13,8 @@ from modepair.reports.end_labels import EndLabel, label_height, label_room, writ
 from modepair.reports.model_warnings import FREE_OF_ERROR_DB
 from modepair.reports.pairs import FloatArray
 from modepair.reports.palette import HUES
-from modepair.reports.panels import frequency_axis, in_our_look, level_axis, make_panels
+from modepair.reports.panels import in_our_look, make_panels
+from modepair.reports.scales import frequency_axis, level_axis
 from modepair.sweeps import render
 
 __all__ = ["plot_bench"]

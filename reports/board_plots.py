@@ -18,12 +18,11 @@ from modepair.reports.panels import (
     HEADING_LINE,
     INK,
     draw_mask,
-    frequency_axis,
     in_our_look,
-    level_axis,
     make_panels,
     write_heading,
 )
+from modepair.reports.scales import frequency_axis, level_axis
 
 __all__ = ["MOST_CASES", "BoardCurves", "plot_boards"]
 

@@ -21,12 +21,12 @@ from modepair.reports.panels import (
     FAINT,
     HEADING_LINE,
     INK,
-    frequency_axis,
     in_our_look,
     make_panels,
     write_heading,
 )
 from modepair.reports.readings import decibel_text, frequency_text, ratio_text
+from modepair.reports.scales import frequency_axis
 
 __all__ = ["MOST_CAUSES", "MOST_SHARES", "SpotContributions", "plot_budget_shares", "plot_budget_spots"]
 

@@ -4,19 +4,20 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import cache, lru_cache
 
 import numpy as np
 from matplotlib.axes import Axes
-from matplotlib.backends.backend_agg import FigureCanvasAgg
-from matplotlib.figure import Figure
+from matplotlib.backends.backend_agg import RendererAgg
+from matplotlib.collections import LineCollection
 from matplotlib.font_manager import FontProperties
-from matplotlib.lines import Line2D
 
 from modepair.reports.panels import FAINT
 from modepair.reports.placement import spread
 
 # Inches.
 _SAMPLE, _TEXT_GAP = 0.3, 0.07
+_RULER_DPI = 100.0
 
 
 @dataclass(frozen=True)
@@ -56,6 +57,12 @@ def _label_size(ends: Sequence[EndLabel]) -> float:
     return 8.5 if len(ends) <= 16 else 7.0
 
 
+@cache
+def _ruler() -> RendererAgg:
+    return RendererAgg(1, 1, _RULER_DPI)  # type: ignore[no-untyped-call]
+
+
+@lru_cache(4096)
 def text_width(text: str, size: float) -> float:
     """Measure a line of text.
 
@@ -71,20 +78,15 @@ def text_width(text: str, size: float) -> float:
     float
         Inches.
     """
-    renderer = FigureCanvasAgg(Figure(dpi=100)).get_renderer()  # type: ignore[no-untyped-call]
     font = FontProperties(family="DejaVu Sans", size=size)
-    return float(renderer.get_text_width_height_descent(text, font, False)[0]) / 100
+    width = _ruler().get_text_width_height_descent(text, font, False)[0]  # type: ignore[no-untyped-call]
+    return float(width) / _RULER_DPI
 
 
-def _label_extent(ends: Sequence[EndLabel]) -> list[tuple[float, float]]:
-    """Width and height of each label in inches."""
+def _label_heights(ends: Sequence[EndLabel]) -> list[float]:
+    """Height of each label in inches."""
     size = _label_size(ends)
-    extents = []
-    for end in ends:
-        lines = end.text.split("\n")
-        width = max(text_width(line, size) for line in lines)
-        extents.append((width, len(lines) * size * 1.3 / 72))
-    return extents
+    return [(end.text.count("\n") + 1) * size * 1.3 / 72 for end in ends]
 
 
 def label_room(ends: Sequence[EndLabel]) -> float:
@@ -102,7 +104,9 @@ def label_room(ends: Sequence[EndLabel]) -> float:
     """
     if not ends:
         return 0.2
-    return _leader(ends) + _SAMPLE + _TEXT_GAP + max(width for width, _ in _label_extent(ends)) + 0.05
+    size = _label_size(ends)
+    widest = max(text_width(line, size) for end in ends for line in end.text.split("\n"))
+    return _leader(ends) + _SAMPLE + _TEXT_GAP + widest + 0.05
 
 
 def label_height(ends: Sequence[EndLabel]) -> float:
@@ -118,7 +122,7 @@ def label_height(ends: Sequence[EndLabel]) -> float:
     float
         Inches.
     """
-    return sum(height for _, height in _label_extent(ends)) * 1.02 if ends else 0.0
+    return sum(_label_heights(ends)) * 1.02
 
 
 def write_labels(panel: Axes, ends: Sequence[EndLabel]) -> None:
@@ -148,30 +152,36 @@ def write_labels(panel: Axes, ends: Sequence[EndLabel]) -> None:
     right = place.x1 * total_width
     ordered = sorted(ends, key=lambda end: (end.level, end.order))
     at = [bottom + height * float(np.clip((end.level - low) / (high - low), 0.0, 1.0)) for end in ordered]
-    heights = [extent[1] for extent in _label_extent(ordered)]
+    heights = _label_heights(ordered)
     slack = max(0.0, sum(heights) - height)
     centres = spread(at, heights, bottom - slack / 2, bottom + height + slack / 2)
-    for end, start, centre in zip(ordered, at, centres, strict=True):
-        knee = right + _leader(ends)
-        leader = [(right, start), (right + 0.04, start), (knee, centre)]
-        figure.add_artist(
-            Line2D(
-                [x / total_width for x, _ in leader],
-                [y / total_height for _, y in leader],
-                color=end.colour if end.width < 6 else FAINT,
-                linewidth=0.6,
-            )
+    knee = right + _leader(ends)
+    inches = figure.dpi_scale_trans
+    # Two artists for all labels: one of their own for each takes several times as long to draw.
+    figure.add_artist(
+        LineCollection(
+            [
+                [(right, start), (right + 0.04, start), (knee, centre)]
+                for start, centre in zip(at, centres, strict=True)
+            ],
+            colors=[end.colour if end.width < 6 else FAINT for end in ordered],
+            linewidths=0.6,
+            transform=inches,
+            gid="leaders",
         )
-        sample = Line2D(
-            [knee / total_width, (knee + _SAMPLE) / total_width],
-            [centre / total_height] * 2,
-            color=end.colour,
-            linewidth=end.width,
-            solid_capstyle="butt",
+    )
+    figure.add_artist(
+        LineCollection(
+            [[(knee, centre), (knee + _SAMPLE, centre)] for centre in centres],
+            colors=[end.colour for end in ordered],
+            linewidths=[end.width for end in ordered],
+            linestyles=[(0.0, end.dashes or None) for end in ordered],
+            capstyle="butt",
+            transform=inches,
+            gid="samples",
         )
-        if end.dashes:
-            sample.set_dashes(end.dashes)
-        figure.add_artist(sample)
+    )
+    for end, centre in zip(ordered, centres, strict=True):
         figure.text(
             (knee + _SAMPLE + _TEXT_GAP) / total_width,
             centre / total_height,

@@ -7,13 +7,16 @@ at least the value given, and CMRR's corner at most the value given.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
 import numpy.typing as npt
-import pandas as pd
 
 from modepair.reports.pairs import BoolArray, FloatArray, ModePair
 from modepair.reports.readings import frequency_text
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 HALF_POWER_DB = 10.0 * float(np.log10(2.0))
 """The '3 dB' of a bandwidth or a corner: half the power, 3.0103 dB, so that a single pole reads its own
@@ -171,6 +174,8 @@ def figures(pair: ModePair, spots_hz: Sequence[float]) -> pd.DataFrame:
     columns["cmrr_lowest_at_hz"] = frequency_hz[lowest]
     bounds = np.column_stack([at_floor[:, spot_index], corner_is_bound, at_floor[rows, lowest]])
     columns["above_floor"] = _names_of(bounds, spots_hz)
+    import pandas as pd
+
     return pd.DataFrame(columns)
 
 

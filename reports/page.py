@@ -4,18 +4,19 @@ from __future__ import annotations
 
 import base64
 import json
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cache
 from typing import Any
 
 import numpy as np
 import pandas as pd
-from jinja2 import Environment, PackageLoader, StrictUndefined, Template
+from jinja2 import Template
 from markupsafe import Markup
 
 from modepair.reports.comparison import Comparison
 from modepair.reports.interactive import MOST_POINTS, PageCurve, PageOverlay, curves_item
+from modepair.reports.page_templates import page_template
 from modepair.reports.palette import CurveStyle
 from modepair.reports.ranking import finding, ranking_columns, remarks
 from modepair.reports.readings import frequency_text
@@ -173,25 +174,8 @@ def _bokeh() -> Markup:
 
 @cache
 def _template() -> Template:
-    environment = Environment(
-        loader=PackageLoader("modepair.reports", "templates"),
-        autoescape=True,
-        undefined=StrictUndefined,
-        trim_blocks=True,
-        lstrip_blocks=True,
-    )
-    environment.filters["frequency"] = frequency_text
-    environment.filters["swatch"] = _swatch
-    environment.globals["raw"] = lambda name: Markup(_source(name))
-    return environment.get_template("report.html.j2")
-
-
-@cache
-def _source(name: str) -> str:
-    """Text of the page's own style or script."""
-    from importlib.resources import files
-
-    return files("modepair.reports").joinpath("templates", name).read_text(encoding="utf-8")
+    filters: dict[str, Callable[..., Any]] = {"frequency": frequency_text, "swatch": _swatch}
+    return page_template("report.html.j2", html=True, filters=filters)
 
 
 def _swatch(style: CurveStyle | None) -> Markup:

@@ -12,11 +12,13 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 import numpy.typing as npt
-import pandas as pd
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 FloatArray = npt.NDArray[np.float64]
 ComplexArray = npt.NDArray[np.complex128]
@@ -145,6 +147,8 @@ class ModePair:
         """
         if self.common_gain.ndim != 1:
             raise ValueError(f"to_frame takes a single case, of the shape (F,), not {self.common_gain.shape}")
+        import pandas as pd
+
         return pd.DataFrame(
             {
                 "frequency_hz": self.frequency_hz,

@@ -1,4 +1,4 @@
-"""Panels of a plot: their look, their place in inches, their axes, and the zones that lie behind curves."""
+"""Panels of a plot: their look, their place in inches, their headings, and the zones that lie behind curves."""
 
 from __future__ import annotations
 
@@ -12,12 +12,9 @@ import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
-from matplotlib.markers import TICKDOWN, MarkerStyle
-from matplotlib.ticker import FixedFormatter, FixedLocator, MultipleLocator, NullLocator
-from matplotlib.transforms import ScaledTranslation
+from matplotlib.transforms import ScaledTranslation, Transform
 
 from modepair.reports.pairs import FloatArray
-from modepair.reports.readings import frequency_text
 
 P = ParamSpec("P")
 R = TypeVar("R")
@@ -26,7 +23,8 @@ INK = "#22262b"
 FAINT = "#dcdfe2"
 _ZONE = "#efece6"
 _LOOK: dict[str, Any] = {
-    "font.family": "DejaVu Sans",
+    "font.family": "sans-serif",
+    "font.sans-serif": ["DejaVu Sans", "Verdana"],
     "font.size": 9.0,
     "text.color": INK,
     "axes.edgecolor": INK,
@@ -42,9 +40,9 @@ _LOOK: dict[str, Any] = {
     "xtick.major.size": 4.0,
     "hatch.linewidth": 0.5,
     "svg.hashsalt": "modepair",
-    "svg.fonttype": "path",
-    "figure.dpi": 100.0,
-    "savefig.dpi": 140.0,
+    "svg.fonttype": "none",
+    "text.hinting": "no_hinting",
+    "figure.dpi": 140.0,
 }
 
 # Inches.
@@ -164,100 +162,6 @@ def make_panels(
     return figure, panels
 
 
-def frequency_axis(panel: Axes, frequency_hz: FloatArray, named: bool = True, sparse: bool = False) -> None:
-    """Give a panel its frequency axis: logarithmic, ticks such as 10 Hz and 1 kHz.
-
-    Parameters
-    ----------
-    panel : Axes
-        The panel.
-    frequency_hz : ndarray, shape (F,)
-        Solved frequencies in Hz, ascending; the axis spans them.
-    named : bool
-        Whether to write ``frequency`` below.
-    sparse : bool
-        Whether to label every second decade of many.
-    """
-    low, high = float(frequency_hz[0]), float(frequency_hz[-1])
-    if low == high:
-        low, high = low / 2, high * 2
-    panel.set_xscale("log")
-    panel.set_xlim(low, high)
-    decades = np.arange(np.floor(np.log10(low)), np.ceil(np.log10(high)) + 1)
-    steps = np.array([1.0, 2.0, 5.0]) if np.log10(high / low) < 2 else np.array([1.0])
-    near = 1 + 1e-9
-    major = [t for d in decades for t in 10.0**d * steps if low / near <= t <= high * near]
-    minor = [t for d in decades for t in 10.0**d * np.arange(1, 10) if low <= t <= high]
-    if frequency_hz.size == 1:
-        major, minor = [float(frequency_hz[0])], []
-    elif len(major) < 2:
-        major = sorted({low, *major, high})
-    every = 2 if sparse and len(major) > 6 else 1
-    panel.xaxis.set_major_locator(FixedLocator(major))
-    panel.xaxis.set_major_formatter(
-        FixedFormatter([frequency_text(t) if i % every == 0 else "" for i, t in enumerate(major)])
-    )
-    panel.xaxis.set_minor_locator(NullLocator())
-    _draw_minor_ticks(panel, minor)
-    panel.grid(True, which="major", axis="x")
-    panel.set_axisbelow(True)
-    if named:
-        panel.set_xlabel("frequency", loc="right")
-
-
-def _draw_minor_ticks(panel: Axes, places: Sequence[float]) -> None:
-    """Draw minor ticks as one artist: matplotlib's own are three each, and cost half of a picture's time."""
-    panel.scatter(
-        list(places),
-        [0.0] * len(places),
-        s=4.0,
-        marker=MarkerStyle(TICKDOWN),
-        color=INK,
-        linewidths=0.6,
-        transform=panel.get_xaxis_transform(),
-        clip_on=False,
-    )
-
-
-def level_axis(panel: Axes, levels: Sequence[FloatArray], name: str, steps: Sequence[float]) -> None:
-    """Give a panel its vertical axis, with its name and unit written above it.
-
-    Parameters
-    ----------
-    panel : Axes
-        The panel.
-    levels : sequence of ndarray
-        What must be in view; values that are not finite do not count.
-    name : str
-        Name with unit, such as ``CMRR (dB)``.
-    steps : sequence of float
-        Tick distances allowed, ascending.
-    """
-    known = np.concatenate([level[np.isfinite(level)] for level in levels])
-    low, high = (float(known.min()), float(known.max())) if known.size else (0.0, 0.0)
-    least = steps[0] * 2
-    if high - low < least:
-        low, high = (low + high - least) / 2, (low + high + least) / 2
-    step = next((s for s in steps if (high - low) / s <= 9), steps[-1])
-    margin = 0.04 * (high - low)
-    panel.set_ylim(low - margin, high + margin)
-    panel.yaxis.set_major_locator(MultipleLocator(step))
-    panel.tick_params(axis="y", length=0)
-    panel.spines["left"].set_visible(False)
-    panel.grid(True, which="major", axis="y")
-    panel.text(
-        0.0,
-        1.0,
-        name,
-        transform=_above(panel),
-        ha="left",
-        va="bottom",
-        color=INK,
-        parse_math=False,
-        gid="level-name",
-    )
-
-
 def write_heading(
     panel: Axes, heading: str, notes: Sequence[str] = (), at: float = 0.32, shift: float = -0.42
 ) -> None:
@@ -283,7 +187,7 @@ def write_heading(
             0.0,
             1.0,
             line,
-            transform=_above(panel, shift, at + place * HEADING_LINE),
+            transform=above_left(panel, shift, at + place * HEADING_LINE),
             ha="left",
             va="bottom",
             fontweight=weight,
@@ -293,9 +197,30 @@ def write_heading(
         )
 
 
-def _above(panel: Axes, right: float = -0.42, up: float = 0.07) -> Any:
+def above_left(panel: Axes, right: float = -0.42, up: float = 0.07) -> Transform:
+    """Give the place from which texts above a panel start.
+
+    Parameters
+    ----------
+    panel : Axes
+        A panel.
+    right, up : float
+        Inches from its upper left corner.
+
+    Returns
+    -------
+    matplotlib.transforms.Transform
+        Takes (0, 1) there.
+
+    Raises
+    ------
+    ValueError
+        Where the panel belongs to no figure.
+    """
     figure = panel.get_figure(root=True)
-    return panel.transAxes + ScaledTranslation(right, up, figure.dpi_scale_trans)  # type: ignore[union-attr]
+    if figure is None:
+        raise ValueError("the panel must belong to a figure")
+    return panel.transAxes + ScaledTranslation(right, up, figure.dpi_scale_trans)
 
 
 def draw_floor(panel: Axes, frequency_hz: FloatArray, floor_db: FloatArray, text: str, up: bool) -> None:

@@ -1,33 +1,33 @@
-"""Curves over frequency, with a label at each curve, as PNG and SVG.
+"""Curves over frequency, with a label at each curve.
 
-Nothing here touches pyplot or its global state; the same arrays give the same bytes.
+Nothing here touches pyplot or its global state; the same arrays give the same picture.
 """
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from pathlib import Path
-from typing import Any
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 
-from modepair.reports.axis_labels import case_texts, varying
-from modepair.reports.differences import Measured
+from modepair.reports.case_curves import CaseCurves
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.pairs import FLOOR_VOLTS, BoolArray, FloatArray, ModePair
-from modepair.reports.palette import HUES, CurveStyle, curve_styles, mix
+from modepair.reports.palette import HUES, CurveStyle, mix
 from modepair.reports.panels import (
     INK,
     draw_floor,
     draw_mask,
-    frequency_axis,
     in_our_look,
-    level_axis,
     make_panels,
 )
+from modepair.reports.scales import frequency_axis, level_axis
+
+if TYPE_CHECKING:
+    from modepair.reports.differences import Measured
 
 MOST_CURVES = 40
 """Cases beyond which their spread is drawn instead of each curve."""
@@ -41,13 +41,8 @@ _PHASE_STEPS_DEG = (15, 45, 90, 180)
 
 @in_our_look
 def plot_cmrr(
-    pair: ModePair,
-    labels: Mapping[str, Sequence[str]],
+    curves: CaseCurves,
     *,
-    title: str = "",
-    case: Sequence[int] | None = None,
-    total: int | None = None,
-    rank_db: Sequence[float] | None = None,
     mask: Sequence[tuple[float, float]] = (),
     baseline: ModePair | None = None,
     measured: Sequence[Measured] = (),
@@ -56,19 +51,8 @@ def plot_cmrr(
 
     Parameters
     ----------
-    pair : ModePair
-        Gains of the shape (n, F), n at least 1.
-    labels : mapping of str to sequence of str
-        Axis path to one text per case, as from `modepair.reports.axis_labels.axis_columns`.
-    title : str
-        Text above the panel.
-    case : sequence of int, optional
-        Case numbers, 1 to n where not given; they name the lowest and the highest of many cases.
-    total : int, optional
-        Number of cases of which the pair holds a choice, where it does not hold all.
-    rank_db : sequence of float, optional
-        What makes a case the lowest or the highest of many, in dB; where not given, its lowest CMRR.
-        A case above the numerical floor is never the highest unless all are.
+    curves : CaseCurves
+        What to draw.
     mask : sequence of (float, float)
         Least CMRR asked for: corners as frequency in Hz, ascending, and level in dB; straight between them
         over log f.
@@ -81,20 +65,9 @@ def plot_cmrr(
     -------
     matplotlib.figure.Figure
         Curves of up to `MOST_CURVES` cases, each labelled; of more the spread, the lowest and the highest.
-
-    Raises
-    ------
-    ValueError
-        Where the pair is not two-dimensional or the labels do not match it in number.
     """
-    texts, styles = _names_and_styles(pair, labels)
-    level_db = pair.cmrr_db
-    extremes = _extremes(pair, rank_db)
-    numbers = list(case) if case is not None else list(range(1, len(level_db) + 1))
-    if len(level_db) <= MOST_CURVES:
-        ends = _curve_ends(level_db, texts, styles, _always(pair.above_floor))
-    else:
-        ends = _spread_ends(level_db, pair, extremes, texts, numbers, total)
+    pair, level_db = curves.pair, curves.pair.cmrr_db
+    ends = _ends(curves, level_db)
     if baseline is not None:
         ends.append(
             EndLabel(float(np.median(np.atleast_2d(baseline.cmrr_db)[:, -1])), "baseline", "#cdd0d4", width=4)
@@ -109,7 +82,7 @@ def plot_cmrr(
     ]
     touching = pair.above_floor.any(axis=1)
     floor_db = pair.floor_db[touching].min(axis=0) if touching.any() else None
-    figure, ((panel,),) = make_panels(1, 1, label_room(ends), max(4.0, label_height(ends)), 6.6, title)
+    figure, ((panel,),) = make_panels(1, 1, label_room(ends), max(4.0, label_height(ends)), 6.6, curves.title)
 
     shown = [level_db]
     if floor_db is not None:
@@ -134,7 +107,7 @@ def plot_cmrr(
         )
         for row in rows:
             panel.plot(baseline.frequency_hz, row, color="#cdd0d4", linewidth=4, zorder=1.5, gid="baseline")
-    _draw(panel, pair.frequency_hz, level_db, styles, pair.above_floor, extremes)
+    _draw(panel, curves, level_db, pair.above_floor)
     for index, (_, at_hz, level) in enumerate(points):
         panel.plot(
             at_hz,
@@ -162,53 +135,25 @@ def _within(measured: Measured, frequency_hz: FloatArray) -> tuple[str, FloatArr
 
 
 @in_our_look
-def plot_gains(
-    pair: ModePair,
-    labels: Mapping[str, Sequence[str]],
-    *,
-    title: str = "",
-    case: Sequence[int] | None = None,
-    total: int | None = None,
-    rank_db: Sequence[float] | None = None,
-) -> Figure:
+def plot_gains(curves: CaseCurves) -> Figure:
     """Draw differential and common-mode gain, magnitude above phase.
 
     Parameters
     ----------
-    pair : ModePair
-        Gains of the shape (n, F), n at least 1.
-    labels : mapping of str to sequence of str
-        Axis path to one text per case, as from `modepair.reports.axis_labels.axis_columns`.
-    title : str
-        Text above the panels.
-    case : sequence of int, optional
-        Case numbers, 1 to n where not given.
-    total : int, optional
-        As for `plot_cmrr`.
-    rank_db : sequence of float, optional
-        As for `plot_cmrr`: the cases with the lowest and highest CMRR of many are drawn and labelled.
+    curves : CaseCurves
+        What to draw; of many cases those with the lowest and the highest CMRR are drawn and labelled.
 
     Returns
     -------
     matplotlib.figure.Figure
         Four panels over one frequency axis: A_dm at the left, A_cm at the right with a label at each curve;
         magnitude in dB, phase in degrees, unwrapped. A_cm below the numerical floor has no phase.
-
-    Raises
-    ------
-    ValueError
-        Where the pair is not two-dimensional or the labels do not match it in number.
     """
-    texts, styles = _names_and_styles(pair, labels)
-    numbers = list(case) if case is not None else list(range(1, len(styles) + 1))
+    pair = curves.pair
     common_db = 20.0 * np.log10(np.maximum(np.abs(pair.common_gain), FLOOR_VOLTS))
-    extremes = _extremes(pair, rank_db)
-    if len(styles) <= MOST_CURVES:
-        ends = _curve_ends(common_db, texts, styles, _always(pair.above_floor), "below the floor")
-    else:
-        ends = _spread_ends(common_db, pair, extremes, texts, numbers, total, " CMRR")
+    ends = _ends(curves, common_db, "below the floor", " CMRR")
     height = max(2.9, label_height(ends))
-    figure, panels = make_panels(2, 2, label_room(ends), height, 4.3, title, lower_height=2.2)
+    figure, panels = make_panels(2, 2, label_room(ends), height, 4.3, curves.title, lower_height=2.2)
     touching = bool(pair.above_floor.any())
     nowhere = np.zeros_like(pair.above_floor)
     sides = (
@@ -227,65 +172,14 @@ def plot_gains(
         if floored:
             floor_db = np.full(pair.frequency_hz.shape, 20.0 * np.log10(FLOOR_VOLTS))
             draw_floor(upper, pair.frequency_hz, floor_db, "below the numerical floor", up=False)
-        _draw(upper, pair.frequency_hz, gain_db, styles, at_floor, extremes)
-        _draw(lower, pair.frequency_hz, phase_deg, styles, nowhere, extremes)
+        _draw(upper, curves, gain_db, at_floor)
+        _draw(lower, curves, phase_deg, nowhere)
         if at_floor.all():
             lower.text(
                 0.5, 0.5, "below the numerical floor: no phase", transform=lower.transAxes, ha="center"
             )
     write_labels(panels[0][1], ends)
     return figure
-
-
-@in_our_look
-def write_plot(figure: Figure, stem: Path) -> tuple[Path, Path]:
-    """Write a figure as PNG and SVG.
-
-    Parameters
-    ----------
-    figure : matplotlib.figure.Figure
-        As from `plot_cmrr` and `plot_gains`.
-    stem : Path
-        Path without a suffix.
-
-    Returns
-    -------
-    tuple of Path
-        The PNG and the SVG file. The same curves give the same bytes: no date, no random identifiers.
-    """
-    png, svg = stem.with_name(f"{stem.name}.png"), stem.with_name(f"{stem.name}.svg")
-    figure.savefig(png, metadata={"Software": "modepair"}, pil_kwargs={"compress_level": 3})
-    figure.savefig(svg, metadata={"Date": None, "Creator": "modepair"})
-    return png, svg
-
-
-def _names_and_styles(
-    pair: ModePair, labels: Mapping[str, Sequence[str]]
-) -> tuple[list[str], list[CurveStyle]]:
-    if pair.common_gain.ndim != 2 or not len(pair.common_gain):
-        raise ValueError(
-            f"plots take gains of the shape (n, F) with n at least 1, not {pair.common_gain.shape}"
-        )
-    count = len(pair.common_gain)
-    for path, column in labels.items():
-        if len(column) != count:
-            raise ValueError(f"labels of {path} must be one per case, {count}, not {len(column)}")
-    vary, _ = varying(labels)
-    keys = list(zip(*vary.values(), strict=True)) if vary else [()] * count
-    return case_texts(labels) or [""] * count, curve_styles(keys)
-
-
-def _always(at_floor: BoolArray) -> BoolArray:
-    rows: BoolArray = np.asarray(at_floor.all(axis=1))
-    return rows
-
-
-def _extremes(pair: ModePair, rank_db: Sequence[float] | None) -> tuple[int, int]:
-    """Rows of the lowest and the highest case; one that touches the floor is the highest only if all do."""
-    rank = np.asarray(pair.cmrr_db.min(axis=1) if rank_db is None else rank_db, dtype=np.float64)
-    at_floor = pair.above_floor.any(axis=1)
-    known = np.where(at_floor, -np.inf, rank) if not at_floor.all() else rank
-    return int(np.argmin(rank)), int(np.argmax(known))
 
 
 def _phase_deg(gain: Any, hidden: BoolArray) -> FloatArray:
@@ -298,20 +192,14 @@ def _phase_deg(gain: Any, hidden: BoolArray) -> FloatArray:
     return result
 
 
-def _draw(
-    panel: Axes,
-    frequency_hz: FloatArray,
-    level: FloatArray,
-    styles: Sequence[CurveStyle],
-    at_floor: BoolArray,
-    extremes: tuple[int, int],
-) -> None:
+def _draw(panel: Axes, curves: CaseCurves, level: FloatArray, at_floor: BoolArray) -> None:
+    frequency_hz = curves.pair.frequency_hz
     marker = "o" if frequency_hz.size == 1 else ""
     if len(level) > MOST_CURVES:
-        _draw_spread(panel, frequency_hz, level, extremes)
+        _draw_spread(panel, frequency_hz, level, curves.extremes)
         return
     width = 1.6 if len(level) <= 12 else 1.1
-    for row, style in enumerate(styles):
+    for row, style in enumerate(curves.styles):
         line = Line2D(
             frequency_hz,
             np.where(at_floor[row], np.nan, level[row]),
@@ -347,35 +235,27 @@ def _draw_spread(panel: Axes, frequency_hz: FloatArray, level: FloatArray, extre
         panel.add_line(line)
 
 
-def _curve_ends(
-    level: FloatArray,
-    texts: Sequence[str],
-    styles: Sequence[CurveStyle],
-    bounded: BoolArray,
-    note: str = "above the floor",
+def _ends(
+    curves: CaseCurves, level: FloatArray, bounded: str = "above the floor", of: str = ""
 ) -> list[EndLabel]:
+    """Label curves, or the spread of many; `bounded` says of a level that it is a bound, `of` what is ranked."""
+    if len(level) > MOST_CURVES:
+        return _spread_ends(curves, level, of)
+    always: BoolArray = np.asarray(curves.pair.above_floor.all(axis=1))
     ends = []
-    for row, (text, style) in enumerate(zip(texts, styles, strict=True)):
-        if bounded[row]:
-            text = f"{text} ({note})" if text else note
+    for row, (text, style) in enumerate(zip(curves.texts, curves.styles, strict=True)):
+        if always[row]:
+            text = f"{text} ({bounded})" if text else bounded
         if text:
             order = tuple(np.round(level[row, ::-1], 2).tolist())
             ends.append(EndLabel(float(level[row, -1]), text, style.colour, style.dashes, order=order))
     return ends
 
 
-def _spread_ends(
-    level: FloatArray,
-    pair: ModePair,
-    extremes: tuple[int, int],
-    texts: Sequence[str],
-    case: Sequence[int],
-    total: int | None,
-    of: str = "",
-) -> list[EndLabel]:
-    count = len(level)
+def _spread_ends(curves: CaseCurves, level: FloatArray, of: str) -> list[EndLabel]:
+    count, total = curves.count, curves.total
     drawn = f"all {count} cases" if total in (None, count) else f"{count} of {total} cases"
-    touching = pair.above_floor.any(axis=1)
+    touching = curves.pair.above_floor.any(axis=1)
     known = " below the floor" if touching.any() and not touching.all() else ""
     q50, q95 = np.quantile(level[:, -1], [0.5, 0.95])
     ends = [
@@ -383,7 +263,10 @@ def _spread_ends(
         EndLabel(float((q50 + q95) / 2), "5 % to 95 % of them", _MOST, width=8),
         EndLabel(float(q50), "median", _MEDIAN, width=1.8),
     ]
-    for row, style, name in zip(extremes, _EXTREMES, (f"lowest{of}", f"highest{of}{known}"), strict=True):
-        text = f"{name}: case {case[row]}" + (f"\n{texts[row]}" if texts[row] else "")
+    for row, style, name in zip(
+        curves.extremes, _EXTREMES, (f"lowest{of}", f"highest{of}{known}"), strict=True
+    ):
+        named = f"\n{curves.texts[row]}" if curves.texts[row] else ""
+        text = f"{name}: case {curves.numbers[row]}{named}"
         ends.append(EndLabel(float(level[row, -1]), text, style.colour, style.dashes))
     return ends

@@ -2,52 +2,15 @@
 
 from __future__ import annotations
 
-import re
 from collections.abc import Mapping
-from dataclasses import dataclass, field
-from itertools import pairwise
-from typing import Literal
 
 import numpy as np
-import schemdraw
 import schemdraw.elements as elm
 
-from modepair.sweeps.parts import PARTS, TOPOLOGIES, Value
-from modepair.sweeps.quantities import render
+from modepair.reports.sketch import INPUT_OFFSET, OPAMP_REACH, Sketch
+from modepair.sweeps.parts import TOPOLOGIES, Value
 
-INK = "#22262b"
-QUIET = "#5d646c"
-
-_NAME_SIZE = 11.0
-_OPAMP_REACH = 2.165
-_INPUT_OFFSET = 0.625
-"""Height of an op-amp's inputs from its axis, as schemdraw draws it."""
-
-Point = tuple[float, float]
-
-
-def value_text(name: str, value: Value) -> str:
-    """Write the value of a part: ``10 kΩ``; of a part that varies, its values or their range.
-
-    Parameters
-    ----------
-    name : str
-        The part's name.
-    value : float or ndarray, shape (n,)
-        SI value, or one per case.
-
-    Returns
-    -------
-    str
-        With its unit.
-    """
-    unit = PARTS[name].kind.unit
-    values = np.unique(np.atleast_1d(value))
-    if values.size > 3:
-        return f"{render(float(values[0]), unit, digits=4)} to {render(float(values[-1]), unit, digits=4)}"
-    texts = [render(one, unit, digits=5) for one in values.tolist()]
-    short = [text.removesuffix(f" {unit}") for text in texts[:-1]]
-    return ", ".join([*short, texts[-1]])
+__all__ = ["part_values", "schematic_svg"]
 
 
 def part_values(blocks: list[Mapping[str, Value]]) -> dict[str, Value]:
@@ -75,77 +38,6 @@ def part_values(blocks: list[Mapping[str, Value]]) -> dict[str, Value]:
     return found
 
 
-@dataclass
-class _Sketch:
-    """A drawing in the making, in schemdraw's units."""
-
-    parts: Mapping[str, Value]
-    opamps: Mapping[str, str]
-    drawing: schemdraw.Drawing = field(init=False)
-
-    def __post_init__(self) -> None:
-        self.drawing = schemdraw.Drawing(canvas="svg", show=False)
-        self.drawing.config(unit=2, fontsize=_NAME_SIZE, color=INK, lw=1.3, inches_per_unit=0.47)
-
-    def has(self, *names: str) -> bool:
-        return any(name in self.parts for name in names)
-
-    def wire(self, *points: Point) -> None:
-        for start, end in pairwise(points):
-            if start != end:
-                self.drawing.add(elm.Line().at(start).to(end))
-
-    def dot(self, *points: Point) -> None:
-        for point in points:
-            self.drawing.add(elm.Dot(radius=0.06).at(point))
-
-    def text(self, point: Point, text: str, halign: Literal["left", "center", "right"] = "center") -> None:
-        label = elm.Label().at(point).theta(0)
-        self.drawing.add(label.label(text, halign=halign, valign="center", ofst=0, fontsize=_NAME_SIZE))
-
-    def ground(self, point: Point) -> None:
-        self.drawing.add(elm.Ground().at(point).theta(0))
-
-    def part(self, name: str, start: Point, end: Point, side: str = "above") -> None:
-        """Draw a part between two points, or a wire where it is not there."""
-        if name not in self.parts:
-            self.wire(start, end)
-            return
-        element = elm.Capacitor() if name.startswith("C") else elm.ResistorIEC()  # type: ignore[no-untyped-call]
-        self.drawing.add(element.at(start).to(end))
-        middle = ((start[0] + end[0]) / 2, (start[1] + end[1]) / 2)
-        text = f"{name}\n{value_text(name, self.parts[name])}"
-        reach = 0.42 if name.startswith("C") else 0.36
-        if start[1] == end[1]:
-            away = reach + 0.4
-            self.text((middle[0], middle[1] + (-away if side == "below" else away)), text)
-        else:
-            self.text((middle[0] + reach, middle[1]), text, halign="left")
-
-    def opamp(self, name: str, centre: Point, plus_above: bool) -> tuple[Point, Point, Point]:
-        """Draw an op-amp whose inputs are at x; return its plus input, its minus input and its output."""
-        element = elm.Opamp(leads=False)
-        if plus_above:
-            element.flip()
-        self.drawing.add(element.at(centre).anchor("center").theta(0))
-        left, right = centre[0] - _OPAMP_REACH / 2, centre[0] + _OPAMP_REACH / 2
-        up, down = centre[1] + _INPUT_OFFSET, centre[1] - _INPUT_OFFSET
-        plus, minus = ((left, up), (left, down)) if plus_above else ((left, down), (left, up))
-        self.text((centre[0] - 0.08, centre[1]), name)
-        return plus, minus, (right, centre[1])
-
-    def svg(self, caption: str) -> str:
-        text = self.drawing.get_imagedata("svg").decode("utf-8")
-        text = re.sub(r"<\?xml.*?\?>\s*|<!DOCTYPE.*?>\s*", "", text, flags=re.DOTALL)
-        # Bare sizes in points would let the page stretch it: keep the view box, give up the fixed size.
-        width = re.search(r'width="([0-9.]+)pt"', text)
-        text = re.sub(r'(<svg[^>]*?) height="[^"]*"', r"\1", text, count=1)
-        text = re.sub(r'(<svg[^>]*?) width="[^"]*"', r"\1", text, count=1)
-        size = f'style="max-width:{float(width[1]):.0f}pt" ' if width else ""
-        label = caption.replace("&", "&amp;").replace("<", "&lt;").replace('"', "&quot;")
-        return text.replace("<svg ", f'<svg {size}role="img" aria-label="{label}" ', 1)
-
-
 def schematic_svg(topology: str, parts: Mapping[str, Value], opamps: Mapping[str, str]) -> str:
     """Draw a stage and its source network.
 
@@ -170,14 +62,14 @@ def schematic_svg(topology: str, parts: Mapping[str, Value], opamps: Mapping[str
     """
     if topology not in TOPOLOGIES:
         raise ValueError(f"topology must be one of {', '.join(TOPOLOGIES)}, not {topology!r}")
-    sketch = _Sketch(parts, opamps)
+    sketch = Sketch(parts, opamps)
     height = _RAILS[topology] + (1.2 if sketch.has("CF1", "CF2") else 0.0)
     x = _draw_source(sketch, height)
     _STAGES[topology](sketch, x, height)
     return sketch.svg(f"Schematic of the {topology} stage behind its source network")
 
 
-def _draw_source(sketch: _Sketch, height: float) -> float:
+def _draw_source(sketch: Sketch, height: float) -> float:
     """Draw the source between its rails, the minus leg above; return where the stage begins."""
     top, bottom = height, -height
     for end, name in ((top, "minus"), (bottom, "plus")):
@@ -198,7 +90,7 @@ def _draw_source(sketch: _Sketch, height: float) -> float:
     return x + 0.8
 
 
-def _series(sketch: _Sketch, x: float, height: float, minus: str, plus: str) -> float:
+def _series(sketch: Sketch, x: float, height: float, minus: str, plus: str) -> float:
     if not sketch.has(minus, plus):
         return x
     sketch.part(minus, (x, height), (x + 2.2, height))
@@ -206,7 +98,7 @@ def _series(sketch: _Sketch, x: float, height: float, minus: str, plus: str) -> 
     return x + 2.2
 
 
-def _imbalance(sketch: _Sketch, x: float, height: float) -> float:
+def _imbalance(sketch: Sketch, x: float, height: float) -> float:
     """Draw the imbalance in the plus leg, or in the minus leg where every value is negative."""
     values = np.atleast_1d(sketch.parts["RI"])
     only_minus = bool(np.all(values <= 0))
@@ -229,7 +121,7 @@ def _imbalance(sketch: _Sketch, x: float, height: float) -> float:
     return wide
 
 
-def _shunts(sketch: _Sketch, x: float, height: float, legs: tuple[str, str], between: str) -> float:
+def _shunts(sketch: Sketch, x: float, height: float, legs: tuple[str, str], between: str) -> float:
     """Draw what lies from each leg to ground, then what lies between the legs."""
     start = x
     if sketch.has(*legs):
@@ -251,44 +143,12 @@ def _shunts(sketch: _Sketch, x: float, height: float, legs: tuple[str, str], bet
     return x
 
 
-def _reference(sketch: _Sketch, point: Point) -> None:
-    """Draw what lies from the reference node down to ground."""
-    x, y = point
-    if sketch.has("RREF"):
-        sketch.text((x - 0.3, y + 0.05), "ref", halign="right")
-        sketch.dot(point)
-        sketch.part("RREF", point, (x, y - 1.7))
-        y -= 1.7
-    sketch.ground((x, y))
-
-
-def _output(sketch: _Sketch, x: float, y: float) -> None:
-    """Draw the output's terminal, and the load where there is one."""
-    end = x + 1.0
-    if sketch.has("RL"):
-        sketch.wire((x, y), (x + 0.7, y))
-        sketch.dot((x + 0.7, y))
-        sketch.part("RL", (x + 0.7, y), (x + 0.7, y - 2.0))
-        sketch.ground((x + 0.7, y - 2.0))
-        end = x + 2.2
-        sketch.wire((x + 0.7, y), (end, y))
-    else:
-        sketch.wire((x, y), (end, y))
-    sketch.drawing.add(elm.Dot(open=True, radius=0.08).at((end, y)))
-    sketch.text((end + 0.25, y), "out", halign="left")
-
-
-def _opamp_name(sketch: _Sketch, name: str, point: Point) -> None:
-    if sketch.opamps.get(name):
-        sketch.text(point, sketch.opamps[name])
-
-
-def _difference(sketch: _Sketch, x: float, height: float, opamp: str = "A1") -> None:
+def _difference(sketch: Sketch, x: float, height: float, opamp: str = "A1") -> None:
     """Draw R1 to R4 around an op-amp, from rails at plus and minus `height`."""
     node, inner = x + 2.4, x + 3.1
     sketch.part("R1", (x, height), (node, height))
     sketch.part("R3", (x, -height), (node, -height), "below")
-    plus, minus, out = sketch.opamp(opamp, (inner + _OPAMP_REACH / 2, 0), plus_above=False)
+    plus, minus, out = sketch.opamp(opamp, (inner + OPAMP_REACH / 2, 0), plus_above=False)
     sketch.wire((node, height), (node, minus[1]), minus)
     sketch.wire((node, -height), (node, plus[1]), plus)
     over = out[0] + 0.9
@@ -309,16 +169,16 @@ def _difference(sketch: _Sketch, x: float, height: float, opamp: str = "A1") -> 
         sketch.wire((node, -height), (beside, -height))
         sketch.part("C4", (beside, -height), (beside, low))
         sketch.wire((beside, low), (node, low))
-    _reference(sketch, (node, low))
-    _opamp_name(sketch, opamp, (inner + 1.1, -1.6))
-    _output(sketch, over, 0)
+    sketch.reference((node, low))
+    sketch.name_opamp(opamp, (inner + 1.1, -1.6))
+    sketch.output(over, 0)
 
 
-def _buffered_difference(sketch: _Sketch, x: float, height: float) -> None:
+def _buffered_difference(sketch: Sketch, x: float, height: float) -> None:
     inner = x + 0.4
     ends = []
     for name, end, sign in (("A2", height, 1), ("A1", -height, -1)):
-        centre = (inner + _OPAMP_REACH / 2, end + sign * _INPUT_OFFSET)
+        centre = (inner + OPAMP_REACH / 2, end + sign * INPUT_OFFSET)
         plus, minus, out = sketch.opamp(name, centre, plus_above=sign < 0)
         sketch.wire((x, end), plus)
         over, level = out[0] + 0.5, centre[1] + sign * 1.6
@@ -327,7 +187,7 @@ def _buffered_difference(sketch: _Sketch, x: float, height: float) -> None:
         )
         sketch.wire(out, (over, out[1]))
         sketch.dot((over, out[1]))
-        _opamp_name(sketch, name, (centre[0], end - sign * 0.95))
+        sketch.name_opamp(name, (centre[0], end - sign * 0.95))
         ends.append((over, out[1]))
     level = ends[0][1]
     stage = ends[0][0] + 0.3
@@ -336,14 +196,14 @@ def _buffered_difference(sketch: _Sketch, x: float, height: float) -> None:
     _difference(sketch, stage, level, "A3")
 
 
-def _three_opamp(sketch: _Sketch, x: float, height: float) -> None:
+def _three_opamp(sketch: Sketch, x: float, height: float) -> None:
     left, inner = x + 0.2, x + 1.1
-    over, level = inner + _OPAMP_REACH + 0.8, height - 2.05
+    over, level = inner + OPAMP_REACH + 0.8, height - 2.05
     for name, resistor, capacitor, end, sign in (
         ("A2", "RF2", "CF2", height, 1),
         ("A1", "RF1", "CF1", -height, -1),
     ):
-        centre = (inner + _OPAMP_REACH / 2, end - sign * _INPUT_OFFSET)
+        centre = (inner + OPAMP_REACH / 2, end - sign * INPUT_OFFSET)
         plus, minus, out = sketch.opamp(name, centre, plus_above=sign > 0)
         sketch.wire((x, end), plus)
         summing = (left + 0.3, sign * level)
@@ -357,21 +217,21 @@ def _three_opamp(sketch: _Sketch, x: float, height: float) -> None:
             sketch.wire(summing, (summing[0], inside))
             sketch.part(capacitor, (summing[0], inside), (over, inside), side)
             sketch.wire((over, inside), (over, sign * level))
-        _opamp_name(sketch, name, (centre[0] + 0.2, end + sign * 0.95))
+        sketch.name_opamp(name, (centre[0] + 0.2, end + sign * 0.95))
     if sketch.has("RG"):
         sketch.part("RG", (left + 0.3, level), (left + 0.3, -level))
     stage = over + 0.3
-    out_level = height - _INPUT_OFFSET
+    out_level = height - INPUT_OFFSET
     for sign in (1, -1):
         sketch.wire((over, sign * out_level), (stage, sign * out_level))
     _difference(sketch, stage, out_level, "A3")
 
 
-def _two_opamp(sketch: _Sketch, x: float, height: float) -> None:
+def _two_opamp(sketch: Sketch, x: float, height: float) -> None:
     reference, first = x + 0.9, x + 3.2
     inner = first + 0.6
     # A1 above the chain takes the minus leg; A2 below it takes the plus leg.
-    centre = (inner + _OPAMP_REACH / 2, height - _INPUT_OFFSET)
+    centre = (inner + OPAMP_REACH / 2, height - INPUT_OFFSET)
     plus, minus, out = sketch.opamp("A1", centre, plus_above=True)
     sketch.wire((x, height), plus)
     sketch.wire(minus, (first, minus[1]), (first, 0))
@@ -383,8 +243,8 @@ def _two_opamp(sketch: _Sketch, x: float, height: float) -> None:
         sketch.part("C2", (first, 1.1), (one, 1.1), "above")
     second = one + 2.4
     sketch.part("R3", (one, 0), (second, 0))
-    _reference(sketch, (reference, 0))
-    centre = (second + 0.6 + _OPAMP_REACH / 2, -height + _INPUT_OFFSET)
+    sketch.reference((reference, 0))
+    centre = (second + 0.6 + OPAMP_REACH / 2, -height + INPUT_OFFSET)
     plus, minus, out = sketch.opamp("A2", centre, plus_above=False)
     sketch.wire((x, -height), plus)
     sketch.wire((second, 0), (second, minus[1]), minus)
@@ -401,9 +261,9 @@ def _two_opamp(sketch: _Sketch, x: float, height: float) -> None:
         sketch.wire((first, 0), (first, level))
         sketch.part("RG", (first, level), (second, level), "below")
         sketch.dot((second, level))
-    _opamp_name(sketch, "A1", (inner + _OPAMP_REACH / 2, height + 0.95))
-    _opamp_name(sketch, "A2", (centre[0], -height - 0.95))
-    _output(sketch, over, out[1])
+    sketch.name_opamp("A1", (inner + OPAMP_REACH / 2, height + 0.95))
+    sketch.name_opamp("A2", (centre[0], -height - 0.95))
+    sketch.output(over, out[1])
 
 
 _RAILS = {"difference": 2.3, "buffered-difference": 2.6, "three-opamp": 4.4, "two-opamp": 4.2}

@@ -9,10 +9,11 @@ from functools import cache
 
 import numpy as np
 import pandas as pd
-from jinja2 import Environment, PackageLoader, StrictUndefined, Template
+from jinja2 import Template
 
 from modepair.reports.axis_labels import AxisValues, axis_columns, case_texts, short_names, varying
 from modepair.reports.markdown import escape_markdown
+from modepair.reports.page_templates import page_template
 from modepair.reports.readings import decibel_text, frequency_text
 from modepair.reports.tables import MOST_ROWS, ROWS_OF_MANY, figure_columns
 
@@ -236,11 +237,4 @@ def _link(file: str) -> str:
 
 @cache
 def _template() -> Template:
-    # The page is Markdown, not HTML: escape_markdown does what autoescape would do for HTML.
-    environment = Environment(
-        loader=PackageLoader("modepair.reports", "templates"),
-        autoescape=False,
-        undefined=StrictUndefined,
-        keep_trailing_newline=True,
-    )
-    return environment.get_template("summary.md.j2")
+    return page_template("summary.md.j2", html=False)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import io
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
@@ -11,10 +10,12 @@ import numpy as np
 import pandas as pd
 
 from modepair.reports.axis_labels import axis_columns, case_texts, short_names, varying
+from modepair.reports.case_curves import CaseCurves
 from modepair.reports.comparison import scores
 from modepair.reports.interactive import PageCurve, PageOverlay
 from modepair.reports.pairs import FloatArray, ModePair
 from modepair.reports.palette import curve_styles
+from modepair.reports.plot_files import svg_text
 from modepair.reports.plots import plot_cmrr
 from modepair.runner.comparing import Compared, candidate_axes, run_names, target_of
 from modepair.runner.reading import curves_of, nominal_pairs
@@ -283,16 +284,11 @@ def _still(run: Run, pairs: Mapping[int, ModePair], title: str) -> str:
     )
     mask = run.spec.limits.cmrr.corners if run.spec.limits and run.spec.limits.cmrr else ()
     drawing = plot_cmrr(
-        stacked,
-        axis_columns(rows, run.spec.axes),
-        title=title,
-        case=numbers,
+        CaseCurves(stacked, axis_columns(rows, run.spec.axes), title, numbers),
         mask=mask,
         measured=run.spec.measurements,
     )
-    buffer = io.StringIO()
-    drawing.savefig(buffer, format="svg", metadata={"Date": None, "Creator": "modepair"})
-    return buffer.getvalue()
+    return svg_text(drawing)
 
 
 def _baseline_overlays(baseline: Baseline) -> list[PageOverlay]:

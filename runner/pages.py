@@ -4,14 +4,15 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from functools import partial
 from pathlib import Path
 
 import pandas as pd
 
-from modepair.reports import Summary, axis_columns, plot_cmrr, plot_gains, summary_text, write_plot
+from modepair.reports import Summary, axis_columns, summary_text
+from modepair.reports.case_curves import CaseCurves
 from modepair.reports.judged_sections import interference_section, verdict_section
 from modepair.reports.yields import Yield, draws_needed
+from modepair.runner.curve_plots import CAPTIONS, CurvePlots, Draughting, Drawing
 from modepair.runner.folder import RunFolder
 from modepair.runner.judging import Judged
 from modepair.runner.results import Results
@@ -104,6 +105,7 @@ def write_pages(
     results: Results,
     provenance: dict[str, str],
     judged: Judged,
+    drawing: Draughting,
     measured: str = "",
     worst: pd.DataFrame | None = None,
     warnings: Sequence[str] = (),
@@ -122,6 +124,8 @@ def write_pages(
         What makes the run repeatable.
     judged : Judged
         Its verdicts.
+    drawing : Draughting
+        Draws its curves.
     measured : str
         The section on measurements, in Markdown; empty where there is none.
     worst : DataFrame, optional
@@ -130,19 +134,8 @@ def write_pages(
         What its op-amp models cannot show.
     """
     spec = sweep.spec
-    plots = {}
-    if results.kept is not None:
-        rows = results.cases[results.cases["case"].isin(results.kept_case)]
-        labels = axis_columns(rows, sweep.axes)
-        case = results.kept_case.tolist()
-        title = spec.title
-        mask = spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else ()
-        for caption, name, draw in (
-            ("CMRR over frequency", "cmrr", partial(plot_cmrr, mask=mask, measured=spec.measurements)),
-            ("Differential and common-mode gain over frequency", "gains", plot_gains),
-        ):
-            figure = draw(results.kept, labels, title=title, case=case, total=sweep.count)
-            plots[caption] = write_plot(figure, folder.path(name))[0].name
+    drawn = _curves(folder, sweep, results, drawing)
+    plots = {caption: f"{stem}.png" for caption, stem in CAPTIONS.items()} if drawn else {}
     if results.boards is not None:
         from modepair.runner.board_pages import plot_board_pages
 
@@ -164,6 +157,20 @@ def write_pages(
         | ({"Measured": measured} if measured else {}),
     )
     folder.write_text("summary.md", summary_text(summary))
+    if drawn:
+        drawn.finish()
+
+
+def _curves(folder: RunFolder, sweep: Sweep, results: Results, drawing: Draughting) -> Drawing | None:
+    """Begin to draw the curves; none where every case failed."""
+    if results.kept is None:
+        return None
+    spec = sweep.spec
+    rows = results.cases[results.cases["case"].isin(results.kept_case)]
+    case = results.kept_case.tolist()
+    curves = CaseCurves(results.kept, axis_columns(rows, sweep.axes), spec.title, case, sweep.count)
+    mask = spec.limits.cmrr.corners if spec.limits and spec.limits.cmrr else ()
+    return drawing.begin(CurvePlots(curves, mask, spec.measurements), folder.building)
 
 
 def _verdict(sweep: Sweep, results: Results, judged: Judged) -> dict[str, str]:

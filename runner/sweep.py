@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import time
 from collections.abc import Iterator, Sequence
+from contextlib import nullcontext
 from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from functools import cached_property
@@ -18,6 +19,7 @@ from modepair.circuits import candidates
 from modepair.runner.allowances import TIME_LIMIT_S
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.batches import BATCH_CASES, DRAWS_OF_BATCH
+from modepair.runner.curve_plots import Draughting, draughting
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
@@ -84,6 +86,7 @@ def run(
     time_limit_s: float | None = None,
     baseline: Baseline | None = None,
     page: bool = False,
+    drawing: Draughting | None = None,
 ) -> Run:
     """Run a sweep and write its run folder.
 
@@ -111,6 +114,8 @@ def run(
         Curves accepted earlier, to compare with.
     page : bool
         Whether to write `report.html` too, which takes about two seconds more; never of one draw.
+    drawing : Draughting, optional
+        Draws the curves, where it was started before; a process beside this one that is started here where absent.
 
     Returns
     -------
@@ -147,6 +152,7 @@ def run(
         run_folder(target, resume=resume) as folder,
         worker_pool() as local,
         BatchSolver(executors or local, workers, time_limit_s or TIME_LIMIT_S) as solver,
+        nullcontext(drawing) if drawing else draughting(beside=executors is None) as draughtsman,
     ):
         solver.warm()
         # What follows takes a while to import, in which the workers start.
@@ -163,8 +169,9 @@ def run(
         drawn = plan_draws(sweep, Streams(spec.tolerance)) if spec.tolerance and draws else ()
         ordered: Iterator[Plan] = merge(plans, drawn, key=lambda plan: int(plan.position[0]))
         kinds = _kinds(sweep)
-        # The plots are needed last and take longest to import: it is done while the workers solve.
-        Thread(target=import_module, args=("modepair.runner.pages",), daemon=True).start()
+        # The pages are needed last and take long to import: it is done while the workers solve.
+        pages = ["modepair.runner.pages", *(["modepair.runner.board_pages"] if draws else [])]
+        Thread(target=lambda: [import_module(name) for name in pages], daemon=True).start()
         with Journal(folder, run_key(sweep, plans, analyses, draws, draw or 0)) as journal:
             batches = journal.batches(ordered)
             solved = solver.solve(batches, analyses, lambda position: kinds[position // (draws + 1)])
@@ -209,6 +216,7 @@ def run(
             results,
             origin,
             judged,
+            draughtsman,
             measured_section(measured, spec, results.cases),
             worst,
             warnings,

@@ -22,8 +22,6 @@ from multiprocessing.context import SpawnContext, SpawnProcess
 from pathlib import Path
 from typing import Any, ParamSpec, TypeVar
 
-from modepair.runner.allowances import confine
-
 __all__ = ["ExecutorFactory", "submit", "worker_pool"]
 
 ExecutorFactory = Callable[[int], Executor]
@@ -70,6 +68,9 @@ def _leave_with_parent(home: str) -> None:
 
 def _start_worker(home: str) -> None:
     """Prepare a worker: its own empty directory, no reaction to Ctrl-C, limits."""
+    # Not at the top: what starts a worker early must not wait for the simulator's modules.
+    from modepair.runner.allowances import confine
+
     signal.signal(signal.SIGINT, signal.SIG_IGN)
     signal.pthread_sigmask(signal.SIG_UNBLOCK, STOPPING - {signal.SIGINT})
     threading.Thread(target=_leave_with_parent, args=(home,), daemon=True).start()

@@ -2,10 +2,15 @@
 
 import numpy as np
 import pytest
-from matplotlib.lines import Line2D
+from matplotlib.colors import to_hex
 
 from modepair.reports.end_labels import EndLabel, label_height, label_room, write_labels
 from modepair.reports.panels import in_our_look, make_panels
+
+
+def lines_of(figure, name):
+    (found,) = figure.findobj(lambda artist: artist.get_gid() == name)
+    return found
 
 
 @in_our_look
@@ -27,12 +32,11 @@ def test_a_label_with_room_stands_level_with_its_curve():
 def test_leaders_start_at_the_curves_and_end_at_the_labels():
     figure, panel = written([EndLabel(50.0, f"case {n}", "#000000", order=(n,)) for n in range(4)])
     box = panel.get_position()
-    lines = [line for line in figure.findobj(Line2D) if line.figure is figure and line.axes is None]
-    leaders = [line for line in lines if len(line.get_ydata()) == 3]
-    assert [line.get_ydata()[0] for line in leaders] == pytest.approx([box.y0 + box.height / 2] * 4)
-    assert [line.get_ydata()[-1] for line in leaders] == pytest.approx(
-        [t.get_position()[1] for t in figure.texts]
-    )
+    height = figure.get_size_inches()[1]
+    leaders = np.array(lines_of(figure, "leaders").get_segments())[..., 1] / height
+    assert leaders.shape == (4, 3)
+    assert leaders[:, 0] == pytest.approx([box.y0 + box.height / 2] * 4)
+    assert leaders[:, -1] == pytest.approx([t.get_position()[1] for t in figure.texts])
     assert [t.get_text() for t in figure.texts] == [f"case {n}" for n in range(4)]
     assert np.all(np.diff([t.get_position()[1] for t in figure.texts]) > 0)
 
@@ -44,10 +48,16 @@ def test_a_curve_out_of_view_is_named_at_the_edge():
 
 
 def test_samples_show_the_dashes():
-    figure, _ = written([EndLabel(50.0, "a", "#112233", (5.0, 2.0), width=2.0)])
-    (sample,) = [line for line in figure.findobj(Line2D) if line.get_linewidth() == 2.0 and line.axes is None]
-    assert sample.get_color() == "#112233"
-    assert sample.is_dashed()
+    figure, _ = written(
+        [EndLabel(50.0, "a", "#112233", (5.0, 2.0), width=2.0), EndLabel(60.0, "b", "#445566", width=4.0)]
+    )
+    samples = lines_of(figure, "samples")
+    assert [to_hex(colour) for colour in samples.get_colors()] == ["#112233", "#445566"]
+    assert list(samples.get_linewidths()) == [2.0, 4.0]
+    (_, dashed), (_, solid) = samples.get_linestyles()
+    # Lengths are in widths of the line.
+    assert dashed == pytest.approx([10.0, 4.0])
+    assert solid is None
 
 
 def test_room_grows_with_the_text():

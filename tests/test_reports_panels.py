@@ -1,61 +1,9 @@
-"""Panels: ticks, ranges and places."""
+"""Panels: places and look."""
 
 import numpy as np
 import pytest
 
-from modepair.reports.panels import frequency_axis, in_our_look, level_axis, make_panels
-
-
-def one_panel():
-    return make_panels(1, 1, room=1.0, height=3.0, width=5.0, title="")[1][0][0]
-
-
-def labels(axis):
-    return [text for text in axis.get_major_formatter().format_ticks(axis.get_majorticklocs()) if text]
-
-
-@pytest.mark.parametrize(
-    ("low", "high", "ticks"),
-    [
-        (1.0, 1e6, ["1 Hz", "10 Hz", "100 Hz", "1 kHz", "10 kHz", "100 kHz", "1 MHz"]),
-        (20.0, 20e3, ["100 Hz", "1 kHz", "10 kHz"]),
-        (40.0, 70.0, ["40 Hz", "50 Hz", "70 Hz"]),
-        (1e-3, 1e-1, ["1 mHz", "10 mHz", "100 mHz"]),
-        (55.0, 65.0, ["55 Hz", "65 Hz"]),
-        (15.0, 150.0, ["20 Hz", "50 Hz", "100 Hz"]),
-    ],
-)
-def test_frequency_ticks(low, high, ticks):
-    panel = one_panel()
-    frequency_axis(panel, np.geomspace(low, high, 11))
-    assert labels(panel.xaxis) == ticks
-    assert panel.get_xlim() == pytest.approx((low, high))
-
-
-def test_one_frequency_names_itself():
-    panel = one_panel()
-    frequency_axis(panel, np.array([60.0]))
-    assert labels(panel.xaxis) == ["60 Hz"]
-
-
-def test_sparse_labels_every_second_decade():
-    panel = one_panel()
-    frequency_axis(panel, np.geomspace(1, 1e6, 7), sparse=True)
-    assert labels(panel.xaxis) == ["1 Hz", "100 Hz", "10 kHz", "1 MHz"]
-
-
-@pytest.mark.parametrize(
-    "levels", [[0.0, 130.0], [99.9, 100.1], [80.0, 80.0], [-400.0, 300.0], [np.nan, 5.0], [np.nan]]
-)
-def test_levels_are_in_view_with_a_few_round_ticks(levels):
-    panel = one_panel()
-    level_axis(panel, [np.array(levels)], "CMRR (dB)", (1, 2, 5, 10, 20, 40))
-    low, high = panel.get_ylim()
-    known = [level for level in levels if np.isfinite(level)]
-    assert all(low < level < high for level in known)
-    ticks = [tick for tick in panel.yaxis.get_majorticklocs() if low <= tick <= high]
-    assert 2 <= len(ticks) <= 19
-    assert all(tick == round(tick) for tick in ticks)
+from modepair.reports.panels import above_left, in_our_look, make_panels
 
 
 def test_places_are_in_inches():
@@ -80,3 +28,13 @@ def test_settings_are_put_back_after_an_error():
     with pytest.raises(RuntimeError, match="stop"):
         draw()
     assert mpl.rcParams["svg.hashsalt"] == before
+
+
+def test_texts_above_a_panel_stand_in_inches_from_its_corner():
+    figure, ((panel,),) = make_panels(1, 1, room=1.0, height=3.0, width=5.0, title="")
+    corner = panel.transAxes.transform((0.0, 1.0))
+    moved = above_left(panel, 0.5, 0.25).transform((0.0, 1.0)) - corner
+    assert moved / figure.dpi == pytest.approx([0.5, 0.25])
+    panel.remove()
+    with pytest.raises(ValueError, match="the panel must belong to a figure"):
+        above_left(panel)

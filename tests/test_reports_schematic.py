@@ -7,7 +7,8 @@ from xml.etree import ElementTree as ET
 import numpy as np
 import pytest
 
-from modepair.reports.schematic import part_values, schematic_svg, value_text
+from modepair.reports.schematic import part_values, schematic_svg
+from modepair.reports.sketch import value_text
 from modepair.sweeps.parts import PARTS, TOPOLOGIES
 
 SOURCE = [name for name, part in PARTS.items() if part.section == "source"]

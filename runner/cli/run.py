@@ -50,9 +50,12 @@ def run_command(
     ] = False,
 ) -> None:
     """Run a sweep: curves, figures, plots and decks go to a run folder."""
-    from modepair.runner.sweep import run
+    # The plots' process takes longest to be ready: it starts before the rest is imported.
+    from modepair.runner.curve_plots import draughting
 
-    with progress_bar() as progress:
+    with draughting() as drawing, progress_bar() as progress:
+        from modepair.runner.sweep import run
+
         result = run(
             spec,
             output,
@@ -62,6 +65,7 @@ def run_command(
             page=page,
             resume=resume,
             time_limit_s=time_limit,
+            drawing=drawing,
         )
     if as_json:
         print(_as_json(result))
