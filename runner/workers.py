@@ -17,7 +17,7 @@ from concurrent.futures import Executor, Future, ProcessPoolExecutor
 from concurrent.futures.process import BrokenProcessPool
 from contextlib import contextmanager
 from multiprocessing import resource_tracker
-from multiprocessing.connection import wait
+from multiprocessing.connection import Connection, wait
 from multiprocessing.context import SpawnContext, SpawnProcess
 from pathlib import Path
 from typing import Any, ParamSpec, TypeVar
@@ -55,6 +55,22 @@ class _Workers(SpawnContext):
         for process in self.started:
             if process.pid is not None:
                 process.join(5.0)
+
+
+class _Pool(ProcessPoolExecutor):
+    """A process pool whose workers can be killed at any moment."""
+
+    def __init__(self, jobs: int, context: _Workers, home: str) -> None:
+        super().__init__(jobs, context, initializer=_start_worker, initargs=(home,))
+        self._results_end: Connection = vars(self._result_queue)["_writer"]
+
+    def let_go(self) -> None:
+        """Wait for no more results, once the workers are gone.
+
+        A thread may be reading a result whose sender was killed in the middle of it; it would wait for the rest as long
+        as this process can still write there itself, and keep the interpreter from ending.
+        """
+        self._results_end.close()
 
 
 def _leave_with_parent(home: str) -> None:
@@ -137,14 +153,18 @@ def worker_pool() -> Iterator[ExecutorFactory]:
     # It would let signals through in the middle of the start of the first worker.
     resource_tracker.ensure_running()
     context = _Workers()
+    pools: list[_Pool] = []
 
     def make(jobs: int) -> Executor:
-        return ProcessPoolExecutor(jobs, context, initializer=_start_worker, initargs=(home,))
+        pools.append(_Pool(jobs, context, home))
+        return pools[-1]
 
     try:
         yield make
     finally:
         context.end()
+        for pool in pools:
+            pool.let_go()
         shutil.rmtree(home, ignore_errors=True)
 
 

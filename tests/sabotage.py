@@ -43,3 +43,8 @@ def hopeless(batch: Batch, analyses: Analyses) -> Solved:
     if ((batch.position >= 8) & (batch.position < 16)).any():
         os.kill(os.getpid(), signal.SIGSEGV)
     return solve_batch(batch, analyses)
+
+
+def large() -> bytes:
+    """Give a result that takes a while to send."""
+    return bytes(1 << 29)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import os
 import signal
+import subprocess
 import sys
 from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, Future
@@ -153,3 +154,33 @@ def test_a_script_without_a_guard_does_not_run_again_in_its_workers(tmp_path: Pa
     done = subprocess.run([sys.executable, script], capture_output=True, text=True, timeout=60, check=True)
     assert done.stdout == "once\n"
     assert done.stderr == ""
+
+
+KILLED_IN_A_RESULT = """
+import os, signal
+from pathlib import Path
+from modepair.runner.workers import submit, worker_pool
+from tests.sabotage import large
+def read():
+    return int(Path("/proc/self/io").read_text().split()[1])
+with worker_pool() as make:
+    executor = make(1)
+    future = submit(executor, large)
+    (worker,) = executor._processes
+    start = read()
+    while read() < start + (1 << 24):
+        pass
+    os.kill(worker, signal.SIGKILL)
+    executor.shutdown(wait=False)
+    print("killed", future.done())
+"""
+
+
+@pytest.mark.skipif(sys.platform != "linux", reason="reads what a process has read from /proc")
+def test_a_worker_killed_in_the_middle_of_its_result_holds_nothing_up() -> None:
+    done = subprocess.run(
+        [sys.executable, "-c", KILLED_IN_A_RESULT], capture_output=True, text=True, check=False, timeout=30
+    )
+    assert done.stdout == "killed False\n"
+    assert done.stderr == ""
+    assert done.returncode == 0
