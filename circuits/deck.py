@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Collection
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -59,11 +60,12 @@ class Bias:
         """The nodes whose voltages are needed."""
         return self.plus, self.minus, self.out
 
-    def in_copies(self, common: str, differential: str) -> Bias:
-        """Return the same with the nodes of the two copies of the circuit, given their suffixes."""
-        plus, minus, out = (node if node == GROUND else f"{node}_{common}" for node in self.nodes)
+    def in_copies(self, common: str, differential: str, shared: Collection[str] = ()) -> Bias:
+        """Return the same with the nodes of the two copies of the circuit, given their suffixes and what they share."""
+        one = {GROUND, *shared}
+        plus, minus, out = (node if node in one else f"{node}_{common}" for node in self.nodes)
         positive, negative, output = (
-            node if node == GROUND else f"{node}_{differential}" for node in self.nodes
+            node if node in one else f"{node}_{differential}" for node in self.nodes
         )
         return replace(self, plus=plus, minus=minus, out=out, driven=(positive, negative, output))
 

@@ -59,7 +59,7 @@ def asked(sweep: Sweep) -> dict[str, str]:
         Such as "source" to "resistance 350 Ω, cable_capacitance 3 nF"; axes last.
     """
     spec = sweep.spec
-    kinds = settings(spec.candidates)
+    kinds = settings(spec.candidates, spec.vocabulary)
     varied = {axis.path for axis in sweep.axes}
     found: dict[str, list[str]] = {"stage": [], "parts": [], "source": []}
     if "stage.topology" not in varied:

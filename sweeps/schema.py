@@ -3,28 +3,31 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
-from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Field,
+    GetCoreSchemaHandler,
+    GetJsonSchemaHandler,
+    PrivateAttr,
+    ValidationInfo,
+)
 from pydantic_core import CoreSchema, core_schema
 
 from modepair.sweeps.document import Document
 from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, form_of, shown
 from modepair.sweeps.imported import PIN, SUBCIRCUIT, SUPPLY
-from modepair.sweeps.parts import (
-    INSTANCES,
-    OPAMP_PARAMETERS,
-    PARTS,
-    SOURCE_PART_KINDS,
-    STAGE_PART_KINDS,
-    TOPOLOGIES,
-)
-from modepair.sweeps.quantities import FREQUENCY, GAIN, NUMBER, Kind
+from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, SOURCE_PART_KINDS
+from modepair.sweeps.quantities import CAPACITANCE, FREQUENCY, GAIN, INDUCTANCE, NUMBER, RESISTANCE, Kind
+from modepair.sweeps.stage_circuits import INSTANCE_NAME, PORT
+from modepair.sweeps.vocabulary import BUILT_IN, STAGES, Vocabulary
 from modepair.sweeps.words import Choice, Name, Text, listed, suggestion
 
 SPOT_MATCH = 1e-9
@@ -63,6 +66,37 @@ class Reads:
         return self.leaf.json_schema()
 
 
+@dataclass(frozen=True)
+class ReadsInContext:
+    """Annotation that makes pydantic read a field by a `Leaf` that the spec's vocabulary decides.
+
+    The vocabulary is the context of the validation; without one it is that of a spec without an own circuit.
+
+    Parameters
+    ----------
+    leaf
+        Gives the leaf for a vocabulary.
+    """
+
+    leaf: Callable[[Vocabulary], Leaf]
+
+    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
+        def read(written: object, info: ValidationInfo) -> Any:
+            return self.leaf(vocabulary_of(info)).parse(written)
+
+        return core_schema.with_info_plain_validator_function(read)
+
+    def __get_pydantic_json_schema__(
+        self, schema: CoreSchema, handler: GetJsonSchemaHandler
+    ) -> dict[str, Any]:
+        return self.leaf(BUILT_IN).json_schema()
+
+
+def vocabulary_of(info: ValidationInfo) -> Vocabulary:
+    """Return the vocabulary that a validation was given."""
+    return info.context if isinstance(info.context, Vocabulary) else BUILT_IN
+
+
 @dataclass(frozen=True, eq=False)
 class ReadsMapping:
     """Annotation that makes pydantic read a mapping whose keys are known, each by its own leaf.
@@ -70,15 +104,18 @@ class ReadsMapping:
     Parameters
     ----------
     leaves
-        What each key takes.
+        What each key takes, for a vocabulary.
     noun
         What a key is, in the plural: ``parts``.
+    patterns
+        What keys take that are known to this vocabulary or another, by a pattern, for editors.
     """
 
-    leaves: Mapping[str, Leaf]
+    leaves: Callable[[Vocabulary], Mapping[str, Leaf]]
     noun: str
+    patterns: Mapping[str, Leaf] = field(default_factory=dict)
 
-    def parse(self, written: object) -> dict[str, Any]:
+    def parse(self, written: object, known: Mapping[str, Leaf]) -> dict[str, Any]:
         """Return the values by key; raise `SeveralRefusedError` for all that are refused."""
         if not isinstance(written, Mapping):
             raise RefusedError(form_of(written), f"a mapping of {self.noun}")
@@ -86,9 +123,9 @@ class ReadsMapping:
         refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
         for key, value in written.items():
             try:
-                if key not in self.leaves:
-                    raise UnknownKeyError(unknown(str(key), self.leaves, self.noun))
-                values[str(key)] = self.leaves[key].parse(value)
+                if key not in known:
+                    raise UnknownKeyError(unknown(str(key), known, self.noun))
+                values[str(key)] = known[key].parse(value)
             except RefusedError as refusal:
                 refusals.append(((str(key),), refusal))
         if refusals:
@@ -96,13 +133,21 @@ class ReadsMapping:
         return values
 
     def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
-        return core_schema.no_info_plain_validator_function(self.parse)
+        def read(written: object, info: ValidationInfo) -> dict[str, Any]:
+            return self.parse(written, self.leaves(vocabulary_of(info)))
+
+        return core_schema.with_info_plain_validator_function(read)
 
     def __get_pydantic_json_schema__(
         self, schema: CoreSchema, handler: GetJsonSchemaHandler
     ) -> dict[str, Any]:
-        properties = {key: leaf.json_schema() for key, leaf in self.leaves.items()}
-        return {"type": "object", "additionalProperties": False, "properties": properties}
+        found: dict[str, Any] = {"type": "object", "additionalProperties": False}
+        found["properties"] = {key: leaf.json_schema() for key, leaf in self.leaves(BUILT_IN).items()}
+        if self.patterns:
+            found["patternProperties"] = {
+                f"^{pattern}$": leaf.json_schema() for pattern, leaf in self.patterns.items()
+            }
+        return found
 
 
 class UnknownKeyError(RefusedError):
@@ -123,7 +168,15 @@ TITLE = Text(200)
 NOTE = Text(500)
 FILE_NAME = Text(500)
 CAUTION = Choice("a caution", ("medical", "mains", "safety"))
-TOPOLOGY = Choice("a topology", tuple(TOPOLOGIES))
+TOPOLOGY = Choice("a topology", STAGES)
+
+OWN_PART_PATTERNS: dict[str, Leaf] = {
+    "R(?!REF$)[A-Z0-9_]{1,31}": RESISTANCE,
+    "C[A-Z0-9_]{1,31}": CAPACITANCE.with_zero(),
+    "L[A-Z0-9_]{1,31}": INDUCTANCE,
+    **{f"{INSTANCE_NAME.pattern}\\.{name}": kind for name, kind in OPAMP_PARAMETERS.items()},
+}
+"""Names that an own circuit may have in `stage.parts`."""
 
 _SR = PARTS["RSP"].kind
 _CAP = PARTS["CCP"].kind
@@ -243,10 +296,19 @@ class Stage(Section):
     Parameters
     ----------
     topology
-        difference, buffered-difference, two-opamp or three-opamp. Where only an axis gives it, its
-        first value.
+        difference, buffered-difference, two-opamp, three-opamp, or netlist for an own circuit. Where only an
+        axis gives it, its first value.
+    file
+        The own circuit's SPICE file, in the spec's folder or below it.
+    subcircuit
+        Name of its subcircuit.
+    ports
+        What each of the subcircuit's ports is, in order.
+    supplies
+        Voltages of its ports that are supplies, the positive one first, V.
     parts
-        SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``.
+        SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``. Of an own circuit they
+        go before the values in its file.
     gain
         Ideal differential gain, a ratio; sets RG, or R2 and R4.
     opamp
@@ -260,13 +322,26 @@ class Stage(Section):
     """
 
     topology: Annotated[str, Reads(TOPOLOGY)]
-    parts: Annotated[dict[str, float], ReadsMapping(STAGE_PART_KINDS, "parts of the stage")] = Field(
-        default_factory=dict
-    )
+    file: Annotated[str, Reads(FILE_NAME)] | None = None
+    subcircuit: Annotated[str, Reads(SUBCIRCUIT)] | None = None
+    ports: tuple[Annotated[str, Reads(PORT)], ...] | None = None
+    supplies: tuple[Annotated[float, Reads(SUPPLY)], ...] | None = None
+    parts: Annotated[
+        dict[str, float],
+        ReadsMapping(lambda known: known.stage_part_kinds, "parts of the stage", OWN_PART_PATTERNS),
+    ] = Field(default_factory=dict)
     gain: GainValue | None = None
     opamp: OpampName | None = None
     opamps: (
-        Annotated[dict[str, str], ReadsMapping(dict.fromkeys(INSTANCES, OPAMP_NAME), "instances")] | None
+        Annotated[
+            dict[str, str],
+            ReadsMapping(
+                lambda known: dict.fromkeys(known.instances, OPAMP_NAME),
+                "instances",
+                {INSTANCE_NAME.pattern: OPAMP_NAME},
+            ),
+        ]
+        | None
     ) = None
     reference_resistance: ResistanceOrZero | None = None
     load: Annotated[float, Reads(PARTS["RL"].kind)] | None = None
@@ -320,8 +395,8 @@ class Source(Section):
     between_capacitance: Capacitance | None = None
     bias_resistance: Annotated[float, Reads(PARTS["RBP"].kind)] | None = None
     filter: Filter = Field(default_factory=Filter)
-    parts: Annotated[dict[str, float], ReadsMapping(SOURCE_PART_KINDS, "parts of the source")] = Field(
-        default_factory=dict
+    parts: Annotated[dict[str, float], ReadsMapping(lambda _: SOURCE_PART_KINDS, "parts of the source")] = (
+        Field(default_factory=dict)
     )
 
 

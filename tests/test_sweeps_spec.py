@@ -113,7 +113,7 @@ def test_the_schema_enumerates_parts_and_parameters() -> None:
     assert {f"A1.{parameter}" for parameter in OPAMP_PARAMETERS} <= set(stage["properties"])
     assert set(properties("Opamp")) == {*OPAMP_PARAMETERS, *MODEL_KEYS, "note", "unit_price"}
     assert properties("Stage")["topology"] == {
-        "enum": ["difference", "buffered-difference", "two-opamp", "three-opamp"],
+        "enum": ["difference", "buffered-difference", "two-opamp", "three-opamp", "netlist"],
         "title": "Topology",
     }
 
