@@ -26,7 +26,7 @@ LEAST_GAIN_SHARE = 0.1
 resistance halves its gain."""
 
 TELLING_GAIN = 100.0
-"""Gain on the bench below which the lowest frequency is too high to tell."""
+"""Gain on the bench below which a frequency is too high to tell."""
 
 
 @dataclass(frozen=True)
@@ -75,7 +75,7 @@ class Bias:
         Parameters
         ----------
         volts : tuple of complex
-            Voltages of its nodes in the differentially driven copy, at the lowest frequency.
+            Voltages of its nodes in one copy, at a frequency where its output moves.
         gain : float
             Size of its open-loop gain on the bench there, V/V.
         error : float

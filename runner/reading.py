@@ -167,9 +167,10 @@ def _circuit(record: dict[str, Any], folder: Path) -> StageCircuit | None:
     if kept is None:
         return None
     try:
-        values = tuple((str(name), float(value)) for name, value in kept.pop("values").items())
-        lists = {name: tuple(map(str, kept.pop(name))) for name in ("ports", "loose", "opamps")}
-        return StageCircuit(values=values, **lists, **{name: str(text) for name, text in kept.items()})
+        ports, loose, opamps = (tuple(map(str, kept[name])) for name in ("ports", "loose", "opamps"))
+        values = tuple((str(name), float(value)) for name, value in kept["values"].items())
+        file, subcircuit, digest = (str(kept[name]) for name in ("file", "subcircuit", "digest"))
+        return StageCircuit(file, subcircuit, ports, loose, opamps, values, digest)
     except (AttributeError, KeyError, TypeError, ValueError) as error:
         raise ReadingError(f"{folder / RUN_FILE}: circuit is no circuit; run the spec again") from error
 

@@ -13,8 +13,9 @@ from typing import Any
 from pydantic import BaseModel
 
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.leaves import Leaf, Reads, ReadsMapping, UnknownKeyError
 from modepair.sweeps.parts import OPAMP_PARAMETERS
-from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKeyError
+from modepair.sweeps.schema import Source, Stage
 from modepair.sweeps.stage_circuits import CIRCUIT_KEYS
 from modepair.sweeps.tolerances import ToleranceEntry
 from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary

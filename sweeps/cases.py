@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -13,6 +14,7 @@ from modepair.sweeps.axes import Axis
 from modepair.sweeps.faults import Fault, RefusedError, SpecError
 from modepair.sweeps.parts import Topology, Value, gain_refusals, parts_for_gain, resolve_parts
 from modepair.sweeps.spec import Spec
+from modepair.sweeps.stage_circuits import NETLIST
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -63,6 +65,14 @@ class Sweep:
     axes: tuple[Axis, ...]
     count: int
     blocks: tuple[Block, ...]
+
+    @cached_property
+    def own_circuit(self) -> NDArray[np.bool_]:
+        """Whether each case's stage is the spec's own circuit, shape (count,), by case number from 1."""
+        own = np.zeros(self.count, dtype=np.bool_)
+        for block in self.blocks:
+            own[block.case - 1] = block.topology == NETLIST
+        return own
 
     def frame(self) -> pd.DataFrame:
         """Return a table with one row per case: ``case``, then a column per axis (SI numbers, or names)."""

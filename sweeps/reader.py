@@ -24,10 +24,11 @@ from modepair.sweeps.faults import (
 )
 from modepair.sweeps.imported import SUBCIRCUIT, ineffective_faults
 from modepair.sweeps.interference import interference_faults
+from modepair.sweeps.leaves import Leaf, UnknownKeyError
 from modepair.sweeps.limits import limit_faults
 from modepair.sweeps.measured import Measurement, measured_faults, read_measurements
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
-from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Leaf, Opamp, UnknownKeyError
+from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp
 from modepair.sweeps.spec import CandidateFile, Spec
 from modepair.sweeps.stage_circuits import NETLIST, ReadCircuit, StageCircuit, read_ports, unread
 from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults

@@ -13,6 +13,7 @@ from modepair.sweeps.axes import Axis, settings
 from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.interference import Interference
+from modepair.sweeps.leaves import Reads, UnknownKeyError
 from modepair.sweeps.limits import Limits
 from modepair.sweeps.measured import Measured, Measurement
 from modepair.sweeps.schema import (
@@ -23,11 +24,9 @@ from modepair.sweeps.schema import (
     TITLE,
     Frequency,
     Opamp,
-    Reads,
     Section,
     Source,
     Stage,
-    UnknownKeyError,
 )
 from modepair.sweeps.stage_circuits import INSTANCE_NAME, StageCircuit
 from modepair.sweeps.tolerances import Tolerance

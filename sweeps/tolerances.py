@@ -10,9 +10,10 @@ from pydantic import Field, ValidationError
 
 from modepair.sweeps.document import Document, Location, join_path
 from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
+from modepair.sweeps.leaves import Reads, ReadsInContext
 from modepair.sweeps.parts import OPAMP_PARAMETERS, Topology
 from modepair.sweeps.quantities import COUNT, DECIBELS, FRACTION
-from modepair.sweeps.schema import Reads, ReadsInContext, Section
+from modepair.sweeps.schema import Section
 from modepair.sweeps.stage_circuits import INSTANCE_NAME, PART_NAME
 from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary
 from modepair.sweeps.words import Choice, listed, suggestion
