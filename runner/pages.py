@@ -78,6 +78,18 @@ def asked(sweep: Sweep) -> dict[str, str]:
         key = path.removeprefix(prefix)
         name = key if prefix.endswith("parts.") else key.replace("_", " ").replace(".", " ")
         found[SECTIONS[prefix]].append(f"{name} {_written(value, kinds[path])}")
+    if spec.circuit:
+        circuit = spec.circuit
+        found["circuit"] = [
+            f"subcircuit {circuit.subcircuit} of {circuit.file}",
+            f"sha256 {circuit.digest[:16]}",
+        ]
+        found["circuit"] += [f"supply {render(volts, 'V')}" for volts in spec.stage.supplies or ()]
+        found["parts in its file"] = [
+            f"{name} {_written(value, kinds[f'stage.parts.{name}'])}"
+            for name, value in circuit.values
+            if f"stage.parts.{name}" not in varied and name not in spec.stage.parts
+        ]
     texts = {section: ", ".join(items) for section, items in found.items() if items}
     for name in used:
         opamp = spec.candidates[name]
