@@ -15,6 +15,7 @@ from modepair.circuits.opamps import opamp_elements
 from modepair.circuits.screening import OpampPlace, PlacedPart, Remainder, ScreenedCircuit, screen_circuit
 from modepair.circuits.screening.places import Place
 from modepair.sweeps import OPAMP_PARAMETERS, PARTS, Fault, Spec, SpecError, StageCircuit
+from modepair.sweeps.faults import LONGEST_PATH, shown
 from modepair.sweeps.parts import kind_of
 from modepair.sweeps.quantities import render
 from modepair.sweeps.stage_circuits import INSTANCE_NAME, PART_NAME
@@ -23,6 +24,9 @@ __all__ = ["Amplifier", "OwnCircuit", "OwnStage", "own_stage", "read_circuit"]
 
 MOST_PARTS = 500
 """Parts and op-amps of an own circuit: what a stage never has, and a table can hold."""
+
+TAKEN = {"RREF": "the resistance at the reference", "RL": "the load"}
+"""Names in the stage's section that belong to what is outside the circuit."""
 
 REMAINDER = "_rest"
 """Name of the remainder's instance; an op-amp's begins with a letter."""
@@ -200,7 +204,7 @@ def read_circuit(folder: Path, file: str, subcircuit: str) -> OwnCircuit:
     """
     path = folder / file
     if "\0" in file or not path.is_file():
-        message = f"{file!r} is no file that can be read (looked for {path})"
+        message = f"{shown(file)} is no file that can be read (looked for {shown(str(path), LONGEST_PATH)})"
         raise SpecError([Fault("", 0, 0, "file", message)])
     screened = screen_circuit(path, folder, subcircuit)
     faults = list(_faults(screened))
@@ -242,11 +246,9 @@ def _faults(screened: ScreenedCircuit) -> Iterator[Fault]:
                 f"{part.name} cannot be the name of a part in a spec; rename it, with at most 32 letters, "
                 "digits and _",
             )
-        elif name in PARTS and (PARTS[name].section == "source" or name in ("RREF", "RL")):
-            whose = (
-                "the source network" if PARTS[name].section == "source" else "what is connected to the stage"
-            )
-            yield _fault(part.place, part.name, f"{name} is the name of a part of {whose}; rename it")
+        elif name in PARTS and (PARTS[name].section == "source" or name in TAKEN):
+            whose = TAKEN.get(name, "a part of the source network")
+            yield _fault(part.place, part.name, f"{name} is the name of {whose}; rename it")
         elif name in inner:
             yield _fault(
                 part.place,

@@ -22,6 +22,9 @@ from modepair.sweeps.quantities import Kind
 
 __all__ = ["asked", "board_claim", "write_pages"]
 
+FILE_PARTS = "parts in its file"
+"""Of an own circuit, what `asked` calls the values that the spec leaves as they are."""
+
 SECTIONS = {"stage.parts.": "parts", "stage.": "stage", "source.parts.": "source", "source.": "source"}
 
 
@@ -85,7 +88,7 @@ def asked(sweep: Sweep) -> dict[str, str]:
             f"sha256 {circuit.digest[:16]}",
         ]
         found["circuit"] += [f"supply {render(volts, 'V')}" for volts in spec.stage.supplies or ()]
-        found["parts in its file"] = [
+        found[FILE_PARTS] = [
             f"{name} {_written(value, kinds[f'stage.parts.{name}'])}"
             for name, value in circuit.values
             if f"stage.parts.{name}" not in varied and name not in spec.stage.parts

@@ -21,7 +21,7 @@ from modepair.runner.errors import OutputError
 from modepair.runner.folder import RunFolder
 from modepair.runner.measuring import measured_lines, measured_table
 from modepair.runner.page_curves import LOWEST_OF_MANY, MOST_CURVES, draw_curves, winner_of
-from modepair.runner.pages import asked
+from modepair.runner.pages import FILE_PARTS, asked
 from modepair.runner.reading import read_record
 from modepair.runner.sweep import Run
 from modepair.sweeps import Spec, expand
@@ -96,7 +96,8 @@ def page_of(
         spots_hz=specs[0].frequency.spots,
         schematics=drawings,
         circuits=circuits,
-        asked={name: text for name, text in told.items() if not name.startswith("op-amp ")},
+        # The values in a circuit's file stand in the table of its parts.
+        asked={name: text for name, text in told.items() if not name.startswith(("op-amp ", FILE_PARTS))},
         opamps={
             name.removeprefix("op-amp "): text for name, text in told.items() if name.startswith("op-amp ")
         },

@@ -135,6 +135,10 @@ def setting_at(path: str, known: Mapping[str, Leaf]) -> Leaf:
         With the nearest known path, when there is no such setting.
     """
     leaf = known.get(re.sub(r"\[[0-9]+\]", "[]", path))
+    if leaf is None and path.partition("stage.")[2] in CIRCUIT_KEYS:
+        raise UnknownKeyError(
+            f"{path} cannot vary, as a spec has one circuit; write a spec for each, and compare their runs"
+        )
     if leaf is None:
         near = (
             suggestion(path, known) or "; paths are such as stage.opamp, stage.parts.R1 or source.imbalance"
