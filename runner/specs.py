@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from modepair.circuits import candidates, read_circuit
-from modepair.sweeps import Spec, load_spec
+from modepair.circuits import candidates
+from modepair.sweeps import Spec, StageCircuit, load_spec
 
 __all__ = ["read_spec"]
 
@@ -27,4 +27,11 @@ def read_spec(path: str | Path) -> Spec:
     SpecError
         With every fault of the spec and of the files that it names.
     """
-    return load_spec(path, candidates(), read_circuit)
+    return load_spec(path, candidates(), _read_circuit)
+
+
+def _read_circuit(folder: Path, file: str, subcircuit: str) -> StageCircuit:
+    # Its import takes a tenth of a second, which a spec without a circuit need not wait for.
+    from modepair.circuits import read_circuit
+
+    return read_circuit(folder, file, subcircuit)

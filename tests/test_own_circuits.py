@@ -280,7 +280,7 @@ RN  n 0 1k
 def test_an_inductor_is_a_part(tmp_path: Path) -> None:
     """Closed form: H = 1/(1 + s R C + s^2 L C); the minus leg does nothing, so A_cm = H and A_dm = H/2."""
     text = small(
-        RLC, "plus, minus, output", frequency="{start: 1k, stop: 300k, points_per_decade: 20, spots: [50k]}"
+        "rlc", "plus, minus, output", frequency="{start: 1k, stop: 300k, points_per_decade: 20, spots: [50k]}"
     )
     path = spec_in(tmp_path, text + "vary: {stage.parts.L1: [10m, 22 mH]}\n", RLC)
     result = run(path, tmp_path / "out", jobs=1)
