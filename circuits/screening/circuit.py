@@ -186,8 +186,9 @@ class CircuitElaboration(Elaboration):
                 pass
         if not (self.parts or self.places or lines) and not self.findings.faults:
             raise CardError(place, f"subcircuit {subcircuit.name} is empty; write its elements")
-        if lines:
-            nodes = tuple(inside.mentioned)
+        nodes = tuple(inside.mentioned)
+        # What is connected to nothing but ground does nothing.
+        if lines and nodes:
             name = self.prefix + self._names.free(subcircuit.name)
             body = "\n".join((f".subckt {name} {' '.join(nodes)}", *lines, f".ends {name}"))
             text = "\n".join((*self.models, *self.subcircuits, body)) + "\n"
