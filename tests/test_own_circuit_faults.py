@@ -12,11 +12,13 @@ import shutil
 from pathlib import Path
 
 import pytest
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
 
 from modepair.circuits import candidates, read_circuit
 from modepair.circuits.own_circuits import MOST_PARTS
 from modepair.runner.specs import read_spec
-from modepair.sweeps import SpecError, load_spec
+from modepair.sweeps import SpecError, expand, load_spec
 from modepair.sweeps.stage_circuits import PORTS
 from tests.test_screening_hostile import EXPECTED, MODELS, SECRET
 
@@ -398,3 +400,66 @@ def test_a_spec_with_a_circuit_needs_a_reader_of_circuits(folder: Path) -> None:
 def test_the_corpus_is_the_one_of_the_screener() -> None:
     with (MODELS.parent / "expected.csv").open(newline="") as file:
         assert len(list(csv.DictReader(file))) == len(EXPECTED)
+
+
+LINES = """stage:
+  topology: netlist
+  file: a.cir
+  subcircuit: amp
+  ports: [plus, minus, reference, output]
+  opamps: {A1: fast-jfet, A2: zero-drift}
+  parts: {RGUARD: 3k, L1: 2m, A1.cmrr: 90 dB}
+frequency: {start: 1, stop: 10}
+vary:
+  stage.parts.CX: [1n, 2n]
+  stage.topology: [netlist]
+tolerance: {draws: 10, parts: [{of: [RIN, RGUARD], absolute: 1 %, matching: 0.1 %}]}
+""".splitlines(keepends=True)
+WORDS = [
+    "",
+    "{}",
+    "[]",
+    "[a, b]",
+    "{a: 1}",
+    "netlist",
+    "difference",
+    "amp",
+    "a.cir",
+    "/dev/zero",
+    "1e400",
+    "!!str x",
+    "é",
+]
+
+
+@settings(suppress_health_check=[HealthCheck.function_scoped_fixture], max_examples=150, deadline=None)
+@given(st.data())
+def test_a_spec_with_a_circuit_with_parts_broken_is_read_or_refused(
+    folder: Path, data: st.DataObject
+) -> None:
+    lines = list(LINES)
+    for _ in range(data.draw(st.integers(1, 3))):
+        index = data.draw(st.integers(0, len(lines) - 1))
+        change = data.draw(st.sampled_from(["drop", "value", "double", "cut", "key"]))
+        line = lines[index]
+        if change == "drop":
+            lines[index] = ""
+        elif change == "value":
+            lines[index] = f"{line.partition(':')[0]}: {data.draw(st.sampled_from(WORDS))}\n"
+        elif change == "double":
+            lines[index] = line + line
+        elif change == "cut":
+            lines[index] = line[: data.draw(st.integers(0, len(line)))] + "\n"
+        else:
+            lines[index] = line.replace(data.draw(st.sampled_from(list("RAaupCe:[{,1"))), "z", 1)
+    (folder / "a.cir").write_text(CIRCUIT)
+    (folder / "spec.yaml").write_text("".join(lines))
+    try:
+        spec = read_spec("spec.yaml")
+    except SpecError as error:
+        assert error.faults
+        assert all(fault.message.isprintable() and fault.line >= 1 for fault in error.faults), error
+        places = [(fault.line, fault.column) for fault in error.faults if fault.file == "spec.yaml"]
+        assert places == sorted(places)
+    else:
+        assert expand(spec).count >= 1
