@@ -6,6 +6,7 @@ import hashlib
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
+from typing import Protocol
 
 import numpy as np
 
@@ -31,8 +32,14 @@ TAKEN = {"RREF": "the resistance at the reference", "RL": "the load"}
 REMAINDER = "_rest"
 """Name of the remainder's instance; an op-amp's begins with a letter."""
 
-Amplifier = Callable[..., list[Card]]
-"""Puts an op-amp, by its instance's name, between its nodes: plus, minus, output; perhaps positive, negative supply."""
+
+class Amplifier(Protocol):
+    """Puts an op-amp, by its instance's name, between its nodes."""
+
+    def __call__(
+        self, name: str, plus: str, minus: str, out: str, positive: str = "", negative: str = ""
+    ) -> list[Card]:
+        """Return its cards; supplies are given where the circuit has nodes for them."""
 
 
 @dataclass(frozen=True)

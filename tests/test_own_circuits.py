@@ -10,7 +10,6 @@ import json
 import re
 import subprocess
 from collections.abc import Mapping
-from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
