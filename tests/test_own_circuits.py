@@ -588,3 +588,21 @@ def test_a_part_at_zero_farad_is_not_there(tmp_path: Path) -> None:
     summary = (tmp_path / "spec-out" / "summary.md").read_text()
     assert "| parts | CA 0 F |" in summary
     assert "| parts in its file | RA 1 kΩ, L1 10 mH, RN 1 kΩ |" in summary
+
+
+def test_the_own_circuit_in_the_readme_is_one(tmp_path: Path) -> None:
+    readme = (EXAMPLES.parent.parent / "README.md").read_text()
+    blocks = re.findall(r"^```yaml\n(.*?)^```", readme, re.MULTILINE | re.DOTALL)
+    (stage,) = [block for block in blocks if "topology: netlist\n" in block]
+    (tmp_path / "circuits").mkdir()
+    name = "circuits/telluric-input.cir"
+    (tmp_path / name).write_text((EXAMPLES / name).read_text())
+    (tmp_path / "spec.yaml").write_text(stage + f"frequency: {BAND}\n")
+    sweep = expand(read_spec(tmp_path / "spec.yaml"))
+    assert sweep.blocks[0].parts["RGUARD"] == 220
+    assert sweep.blocks[0].parts["A4.gain_bandwidth"] == 200e3
+    spice = re.search(r"^```spice\n(.*?)^```", readme, re.MULTILINE | re.DOTALL)
+    lines = [line for line in (spice[1] if spice else "").splitlines() if line != "..."]
+    file = re.sub(" +", " ", (EXAMPLES / name).read_text())
+    assert len(lines) == 4
+    assert all(re.sub(" +", " ", line) in file for line in lines)
