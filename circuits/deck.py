@@ -143,9 +143,10 @@ class Deck:
     ----------
     text : str
         The netlist, without analyses.
+    names : tuple of str
+        Names of the elements that can be altered; the first letter tells their kind.
     commands : tuple of tuple of str
-        For each element, in the order of its values, the start of the engine command that sets it in
-        each copy.
+        For each element the starts of the engine commands that set it in all copies.
     values : ndarray, shape (m,)
         The element values that the text holds.
     biases : tuple of Bias
@@ -155,6 +156,7 @@ class Deck:
     """
 
     text: str
+    names: tuple[str, ...]
     commands: tuple[tuple[str, ...], ...]
     values: npt.NDArray[np.float64]
     biases: tuple[Bias, ...] = ()

@@ -10,7 +10,7 @@ from PySpice.Spice.Netlist import Circuit
 from modepair.circuits.elements import GROUND, OUTPUT, Card, Element, Instance
 from modepair.circuits.sources import GENERATORS
 
-__all__ = ["COPIES", "DRIVES", "circuit", "netlist", "pair_of_drives", "standalone"]
+__all__ = ["ALTERABLE", "COPIES", "DRIVES", "circuit", "netlist", "pair_of_drives", "standalone"]
 
 COPIES = ("c", "d")
 """Suffixes of the two copies: common-mode drive, differential drive."""
@@ -27,14 +27,29 @@ NONLINEAR_OPTIONS = ".option pivrel=0.5"
 """A nonlinear circuit is linearised about its operating point, so it must have one."""
 
 
-def _add(built: Circuit, card: Card, row: int, copy: str, shared: Collection[str]) -> None:
+ALTERABLE: Mapping[str, str] = {"R": "rsh", "C": "cap"}
+"""Kinds of elements whose value can stand in a model, and its name there. In a deck that is loaded once and altered for
+each case, such an element has its value in a model of its name, which all copies share, so that one command sets it.
+A resistor is one square of its sheet resistance: a model's plain `r` is silently kept where it would fall to 1 mOhm."""
+
+
+def _add(
+    built: Circuit, card: Card, row: int, copy: str, shared: Collection[str], *, alterable: bool
+) -> None:
     nodes = [node if node in shared else f"{node}_{copy}" for node in card.nodes]
     if isinstance(card, Instance):
         built.X(f"{card.name}_{copy}", card.subcircuit, *nodes)
         return
     name = f"{card.name[1:]}_{copy}"
     value = float(card.values[row])
-    if card.kind == "R":
+    if alterable and card.kind in ALTERABLE:
+        if card.name not in built.model_names:
+            built.model(card.name, card.kind.lower(), **{ALTERABLE[card.kind]: value})
+        if card.kind == "R":
+            built.SemiconductorResistor(name, *nodes, model=card.name, length=1, width=1)
+        else:
+            built.SemiconductorCapacitor(name, *nodes, model=card.name)
+    elif card.kind == "R":
         built.R(name, *nodes, value)
     elif card.kind == "C":
         built.C(name, *nodes, value)
@@ -61,6 +76,7 @@ def circuit(
     models: str = "",
     supplies: Mapping[str, float] = {},
     nonlinear: bool = False,
+    alterable: bool = False,
 ) -> Circuit:
     """Build the PySpice circuit of one case, in several copies.
 
@@ -78,6 +94,8 @@ def circuit(
         Nodes that all copies share, and their DC voltages.
     nonlinear : bool
         Whether the circuit has an operating point.
+    alterable : bool
+        Whether the values of `ALTERABLE` elements stand in models.
 
     Returns
     -------
@@ -92,7 +110,7 @@ def circuit(
         built.V(node, node, GROUND, f"DC {volts!r}")
     for copy, cards in elements.items():
         for card in cards:
-            _add(built, card, row, copy, shared)
+            _add(built, card, row, copy, shared, alterable=alterable)
     return built
 
 
@@ -133,6 +151,7 @@ def netlist(
     nonlinear: bool = False,
     watched: Sequence[str] = (),
     drives: Mapping[str, tuple[float, float]] = DRIVES,
+    alterable: bool = False,
 ) -> str:
     """Write the netlist of one case, a copy for each drive.
 
@@ -150,6 +169,8 @@ def netlist(
         Further nodes whose voltages are wanted.
     drives : mapping of str to (float, float)
         As for `pair_of_drives`.
+    alterable : bool
+        Whether the values of `ALTERABLE` elements stand in models.
 
     Returns
     -------
@@ -162,7 +183,10 @@ def netlist(
     saved += [f"v({node}_{copy})" for copy in drives for node in own]
     saved += [f"v({node})" for node in watched if node in supplies]
     copies = pair_of_drives(cards, drives)
-    return str(circuit(copies, saved=saved, models=models, supplies=supplies, nonlinear=nonlinear))
+    built = circuit(
+        copies, saved=saved, models=models, supplies=supplies, nonlinear=nonlinear, alterable=alterable
+    )
+    return str(built)
 
 
 def standalone(text: str, analyses: Sequence[str], comment: str) -> str:

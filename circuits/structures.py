@@ -11,7 +11,7 @@ import numpy.typing as npt
 from modepair.circuits.bench import gain_netlist, imported_mounting
 from modepair.circuits.deck import Bias, Deck
 from modepair.circuits.elements import GROUND, Card, Element, Values
-from modepair.circuits.netlist import COPIES, netlist
+from modepair.circuits.netlist import ALTERABLE, COPIES, netlist
 from modepair.circuits.sources import source_elements
 from modepair.circuits.stages import BuiltStage, stage_cards
 
@@ -56,12 +56,17 @@ class Structure:
         cards, biases = stage_cards(self.stage, here, plus, minus)
         return (*network, *cards), biases
 
-    def _netlist(self, rows: Rows) -> str:
+    def _netlist(self, rows: Rows, *, alterable: bool = False) -> str:
         cards, biases = self._circuit(rows)
         watched = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
         stage = self.stage
         return netlist(
-            cards, models=stage.text, supplies=stage.supplies, nonlinear=stage.nonlinear, watched=watched
+            cards,
+            models=stage.text,
+            supplies=stage.supplies,
+            nonlinear=stage.nonlinear,
+            watched=watched,
+            alterable=alterable,
         )
 
     def elements(self, rows: Rows) -> tuple[Element, ...]:
@@ -105,7 +110,9 @@ class Structure:
             replace(bias.in_copies(*COPIES, self.stage.supplies), reference=references[bias.instance])
             for bias in self._circuit(row)[1]
         )
-        return Deck(self._netlist(row), commands, values, biases, self.stage.nonlinear)
+        names = tuple(element.name for element in elements)
+        text = self._netlist(row, alterable=True)
+        return Deck(text, names, commands, values, biases, self.stage.nonlinear)
 
 
 def _taken(values: float | Values, rows: Rows) -> Values:
@@ -114,9 +121,12 @@ def _taken(values: float | Values, rows: Rows) -> Values:
 
 
 def _commands(element: Element) -> tuple[str, ...]:
-    # Of the forms that set a gain, this is the one that ngspice reads fastest, by an eighth.
-    form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{} = "
-    return tuple(form.format(element.name.lower(), copy) for copy in COPIES)
+    # Of the forms that ngspice knows these are the ones it reads fastest; spaces cost time too.
+    name = element.name.lower()
+    if element.kind in ALTERABLE:
+        return (f"altermod @{name}[{ALTERABLE[element.kind]}]=",)
+    form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{}="
+    return tuple(form.format(name, copy) for copy in COPIES)
 
 
 def structures(stage: BuiltStage, parts: GivenParts, count: int) -> list[Structure]:

@@ -22,7 +22,7 @@ __all__ = ["CMRR_PERCENTS", "GAIN_PERCENTS", "DrawQuantiles"]
 CMRR_PERCENTS = (1, 5, 50, 95, 99)
 GAIN_PERCENTS = (1, 50, 99)
 
-BLOCK_VALUES = 2_000_000
+BLOCK_VALUES = 500_000
 """Numbers held at once while quantiles are worked out."""
 
 
@@ -61,6 +61,7 @@ class DrawQuantiles:
         self._file.seek(0)
         self._file.truncate()
         self.count = 0
+        self._parts: list[int] = []
         self.lowest_db = np.full(self.frequency_hz.size, np.inf)
         self.lowest_draw = np.zeros(self.frequency_hz.size, np.int64)
 
@@ -77,7 +78,9 @@ class DrawQuantiles:
         if not len(draw):
             return
         level_db = pair.cmrr_db
-        np.concatenate([level_db, np.abs(pair.differential_gain)], axis=1).tofile(self._file)
+        # Each frequency's numbers lie together, so that a few frequencies of all draws can be read without the rest.
+        np.concatenate([level_db.T, np.abs(pair.differential_gain).T]).tofile(self._file)
+        self._parts.append(len(draw))
         self.count += len(draw)
         row = level_db.argmin(axis=0)
         here = np.take_along_axis(level_db, row[np.newaxis], axis=0)[0]
@@ -123,18 +126,21 @@ class DrawQuantiles:
         result = np.empty((len(percents), points))
         width = max(1, min(points, BLOCK_VALUES // self.count))
         for start in range(0, points, width):
-            columns = slice(offset + start, offset + min(start + width, points))
-            block = self._columns(columns)
-            result[:, start : start + width] = np.percentile(block, percents, axis=0, method="inverted_cdf")
+            stop = min(start + width, points)
+            block = self._read(offset + start, offset + stop)
+            result[:, start:stop] = np.percentile(
+                block, percents, axis=1, method="inverted_cdf", overwrite_input=True
+            )
         return result
 
-    def _columns(self, columns: slice) -> FloatArray:
-        """Read some columns of all draws, a part of the file at a time."""
-        width = 2 * self.frequency_hz.size
-        rows = max(1, BLOCK_VALUES // width)
-        block = np.empty((self.count, columns.stop - columns.start))
-        self._file.seek(0)
-        for start in range(0, self.count, rows):
-            part = np.fromfile(self._file, np.float64, min(rows, self.count - start) * width)
-            block[start : start + rows] = part.reshape(-1, width)[:, columns]
+    def _read(self, start: int, stop: int) -> FloatArray:
+        """Read some rows of the numbers of all draws, shape (stop - start, draws)."""
+        block = np.empty((stop - start, self.count))
+        place = first = 0
+        for draws in self._parts:
+            self._file.seek((place + start * draws) * block.itemsize)
+            part = np.fromfile(self._file, np.float64, block.shape[0] * draws)
+            block[:, first : first + draws] = part.reshape(-1, draws)
+            place += 2 * self.frequency_hz.size * draws
+            first += draws
         return block

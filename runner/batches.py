@@ -10,11 +10,19 @@ import numpy.typing as npt
 
 from modepair.circuits.deck import GAIN_NODES, TELLING_GAIN, Bias, Deck
 from modepair.circuits.elements import GROUND
+from modepair.runner.alterations import Alterations
 from modepair.runner.analyses import Analyses
 from modepair.runner.engine import Engine, engine
 from modepair.runner.errors import EngineDeadError, SimulationError
 
-__all__ = ["Batch", "Solved", "check_biases", "solve_batch"]
+__all__ = ["BATCH_CASES", "DRAWS_OF_BATCH", "Batch", "Solved", "check_biases", "solve_batch"]
+
+BATCH_CASES = 128
+"""Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
+deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
+
+DRAWS_OF_BATCH = 128
+"""Draws in a batch, cut the same way for the same reason."""
 
 
 @dataclass(frozen=True)
@@ -70,26 +78,17 @@ class Solved:
 
 def _unusable(batch: Batch) -> dict[int, str]:
     """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
-    names = [commands[0].split()[1].lstrip("@").rpartition("_")[0] for commands in batch.deck.commands]
-    passive = np.array([name[0] in "rcl" for name in names])
+    names = batch.deck.names
+    passive = np.array([name[0] in "RCL" for name in names])
     bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
     reasons = {}
     for row in np.flatnonzero(bad.any(axis=1)):
         column = int(bad[row].argmax())
-        name, value = names[column].upper(), batch.values[row, column]
+        name, value = names[column], batch.values[row, column]
         reasons[int(batch.position[row])] = (
             f"element {name} would be {value:g}; it must be a finite number above zero"
         )
     return reasons
-
-
-def _alterations(deck: Deck, old: npt.NDArray[np.float64], new: npt.NDArray[np.float64]) -> list[str]:
-    """Commands that set what differs, one text for each element with all its copies."""
-    indices = np.flatnonzero(old != new)
-    return [
-        ";".join([command + value for command in deck.commands[index]])
-        for index, value in zip(indices.tolist(), map(repr, new[indices].tolist()), strict=True)
-    ]
 
 
 def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
@@ -210,6 +209,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
     nodes = (node for bias in deck.biases for node in (*bias.driven, *bias.nodes))
     pins = list(dict.fromkeys(node.lower() for node in nodes if node != GROUND))
     vectors = (*batch.vectors, *(pin for pin in pins if pin not in batch.vectors))
+    alterations = Alterations(deck)
     loaded: npt.NDArray[np.float64] | None = None
     for index, (position, values) in enumerate(zip(batch.position.tolist(), batch.values, strict=True)):
         if position in failures:
@@ -218,7 +218,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
             if loaded is None:
                 simulator.load(deck.text, nonlinear=deck.nonlinear)
                 loaded = deck.values
-            simulator.alter(_alterations(deck, loaded, values))
+            simulator.alter(alterations.between(loaded, values))
             loaded = values
             check_biases(simulator, deck.biases)
             solved = analyses.solve(simulator, vectors)

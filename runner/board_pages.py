@@ -67,10 +67,10 @@ def plot_board_pages(folder: RunFolder, sweep: Sweep, results: Results) -> dict[
     if not spots_hz.size:
         return plots
     columns = spot_indices(boards.frequency_hz, spec.frequency.spots)
-    worst = min(shown, key=lambda one: float(one.table["cmrr_db_p1"].iloc[int(columns[0])]))
+    worst = boards.plotted[0]
     spots = BoardSpots(
         spots_hz,
-        np.concatenate(worst.rho),
+        np.concatenate(worst.rho).astype(np.complex128),
         nominal[worst.case].error_ratio[columns] if worst.case in nominal else None,
         mask.at(spots_hz) if mask else None,
         nominal[worst.case].floor_db[columns] if worst.case in nominal else None,

@@ -45,7 +45,7 @@ class CaseBoards:
     worst_gains : ndarray, shape (2, F)
         Its gains.
     rho : list of ndarray, each shape (n, S)
-        Error ratio at the spots, V/V.
+        Error ratio at the spots, V/V, in single precision; of the case that rejects least only.
     table : DataFrame
         Quantiles over frequency.
     """
@@ -57,7 +57,7 @@ class CaseBoards:
     worst_draw: int = 0
     worst_margin_db: float = np.inf
     worst_gains: npt.NDArray[np.complex128] | None = None
-    rho: list[npt.NDArray[np.complex128]] = field(default_factory=list)
+    rho: list[npt.NDArray[np.complex64]] = field(default_factory=list)
     table: pd.DataFrame = field(default_factory=pd.DataFrame)
 
 
@@ -78,7 +78,7 @@ class Boards:
     Attributes
     ----------
     plotted : list of CaseBoards
-        The cases to plot, with all they need; by case.
+        The cases to plot, with all they need; the one that rejects least goes first.
     """
 
     def __init__(
@@ -165,7 +165,7 @@ class Boards:
             current.worst_draw = int(draw[row])
             current.worst_gains = gains[row].copy()
         if len(self._columns):
-            current.rho.append(pair.error_ratio[:, self._columns])
+            current.rho.append(pair.error_ratio[:, self._columns].astype(np.complex64))
 
     def _finish(self, current: CaseBoards) -> None:
         current.table = self._quantiles.finish(current.case)
@@ -200,10 +200,10 @@ class Boards:
     def _keep_for_plots(self, current: CaseBoards) -> None:
         column = int(self._columns[0]) if len(self._columns) else 0
         self.plotted.append(current)
-        if len(self.plotted) > PLOTTED_CASES:
-            self.plotted.remove(
-                max(self.plotted, key=lambda one: float(one.table["cmrr_db_p1"].iloc[column]))
-            )
+        self.plotted.sort(key=lambda one: float(one.table["cmrr_db_p1"].iloc[column]))
+        del self.plotted[PLOTTED_CASES:]
+        for other in self.plotted[1:]:
+            other.rho = []
 
     def joined(self, cases: pd.DataFrame) -> pd.DataFrame:
         """Add the boards' figures to the table of cases; a case with failed draws has failed.

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import logging
 import os
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from ctypes.util import find_library
 from functools import cache
 from pathlib import Path
@@ -20,12 +20,12 @@ import numpy.typing as npt
 
 from modepair.runner.errors import EngineDeadError, EngineMissingError, SimulationError
 
-__all__ = ["Engine", "engine", "locate_library"]
+__all__ = ["LINE_LENGTH", "Engine", "engine", "locate_library"]
 
 LIBRARY_VARIABLE = "NGSPICE_LIBRARY_PATH"
 
-COMMAND_LENGTH = 1000
-"""Longest command ngspice takes is 1023 characters."""
+LINE_LENGTH = 1000
+"""Characters of a line of commands; the longest that ngspice takes has 1023."""
 
 COMMANDS_BEFORE_RELEASE = 400
 """ngspice keeps each command it is given, about a kilobyte a run, until told to let go."""
@@ -111,7 +111,7 @@ class Engine:
         self._shared.NUMBER_OF_EXEC_CALLS_TO_RELEASE_MEMORY = COMMANDS_BEFORE_RELEASE
         # The frequencies last asked for, and what came back for them and was right.
         self._asked_hz: npt.NDArray[np.float64] | None = None
-        self._came_back: npt.NDArray[np.complex128] | None = None
+        self._came_back = b""
         self._holds_result = False
         self._harmless: tuple[str, ...] = HARMLESS
 
@@ -151,29 +151,21 @@ class Engine:
             said = "; ".join(complaints) or "no circuit loaded"
             raise SimulationError(_explained(f"the netlist was refused: {said}"))
 
-    def alter(self, commands: Sequence[str]) -> None:
+    def alter(self, lines: Iterable[str]) -> None:
         """Set element values of the loaded circuit.
 
         Parameters
         ----------
-        commands : sequence of str
-            `alter` commands; they are sent many at a time.
+        lines : iterable of str
+            `alter` commands, several in a line with a semicolon between them; at most `LINE_LENGTH` characters each.
 
         Raises
         ------
         SimulationError
             If ngspice says anything.
         """
-        held: list[str] = []
-        length = 0
-        for command in commands:
-            length += len(command) + 1
-            if length > COMMAND_LENGTH:
-                self._command(";".join(held))
-                held, length = [], len(command) + 1
-            held.append(command)
-        if held:
-            self._command(";".join(held))
+        for line in lines:
+            self._command(line)
 
     def analyse(
         self, command: str, frequency_hz: npt.NDArray[np.float64], vectors: Sequence[str]
@@ -210,13 +202,12 @@ class Engine:
         got, *columns = [self._vector(f"{name}.{vector}") for vector in ("frequency", *vectors)]
         self._command("destroy")
         self._holds_result = False
-        known = self._came_back
-        if known is None or frequency_hz is not self._asked_hz or not np.array_equal(got, known):
-            _check_frequencies(got, frequency_hz)
+        if frequency_hz is not self._asked_hz or got != self._came_back:
+            _check_frequencies(np.frombuffer(got, np.complex128), frequency_hz)
             self._asked_hz, self._came_back = frequency_hz, got
-        if any(column.shape != got.shape for column in columns):
+        if any(len(column) != len(got) for column in columns):
             raise SimulationError("the analysis came back incomplete")
-        result = np.array(columns)
+        result = np.frombuffer(b"".join(columns), np.complex128).reshape(len(vectors), -1)
         if not np.isfinite(result).all():
             raise SimulationError("the analysis gave values that are not finite numbers")
         return result
@@ -259,13 +250,13 @@ class Engine:
             raise SimulationError("the operating point has voltages that are not finite numbers")
         return result
 
-    def _vector(self, name: str) -> npt.NDArray[np.complex128]:
+    def _vector(self, name: str) -> bytes:
         """Copy a complex vector out of the simulator; PySpice's own way costs ten times as much."""
         info = self._shared._ngspice_shared.ngGet_Vec_Info(name.encode("ascii"))
         if info == self._ffi.NULL or info.v_compdata == self._ffi.NULL:
             raise SimulationError(f"the analysis left no vector {name}")
-        buffer = self._ffi.buffer(info.v_compdata, info.v_length * 16)
-        return np.frombuffer(buffer, np.complex128).copy()
+        copied: bytes = self._ffi.buffer(info.v_compdata, info.v_length * 16)[:]
+        return copied
 
     def _command(self, command: str) -> None:
         try:

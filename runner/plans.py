@@ -10,11 +10,10 @@ import numpy as np
 import numpy.typing as npt
 
 from modepair.circuits import COPIES, OUTPUT, BuiltStage, Deck, Structure, built_stage, structures
-from modepair.runner.batches import Batch
+from modepair.runner.batches import BATCH_CASES, DRAWS_OF_BATCH, Batch
 from modepair.sweeps import Streams, Sweep, Variate, boards, variates
 
 __all__ = [
-    "BATCH_CASES",
     "BatchPlan",
     "DrawnCase",
     "Plan",
@@ -23,13 +22,6 @@ __all__ = [
     "plan_batches",
     "plan_draws",
 ]
-
-BATCH_CASES = 128
-"""Cases in a batch. The pivots of a solve depend, in the last digits, on the cases solved before on the same
-deck; so batches are cut the same way whatever the number of processes, and each begins with a fresh load."""
-
-DRAWS_OF_BATCH = 128
-"""Draws in a batch, cut the same way for the same reason."""
 
 VECTORS = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
 

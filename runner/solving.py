@@ -10,9 +10,9 @@ import numpy.typing as npt
 from modepair.circuits import BuiltStage, Deck, structures
 from modepair.reports import ModePair
 from modepair.runner.analyses import Analyses
-from modepair.runner.batches import Batch
+from modepair.runner.batches import BATCH_CASES, Batch
 from modepair.runner.errors import SimulationError
-from modepair.runner.plans import BATCH_CASES, VECTORS
+from modepair.runner.plans import VECTORS
 from modepair.runner.pool import BatchSolver
 
 __all__ = ["solve_rows"]

@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING
 
 from modepair.runner.allowances import TIME_LIMIT_S
 from modepair.runner.analyses import plan_analyses
+from modepair.runner.batches import BATCH_CASES, DRAWS_OF_BATCH
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
@@ -141,7 +142,7 @@ def run(
         sweep, name = board_sweep(nominal, draw), f"{name}-draw-{draw}"
     draws = int(spec.tolerance.draws) if spec.tolerance and draw is None else 0
     target = Path(output) if output is not None else Path("runs") / name
-    workers = min(jobs or os.cpu_count() or 1, sweep.count * (draws + 1))
+    workers = min(jobs or os.cpu_count() or 1, _least_batches(sweep, draws))
     with (
         run_folder(target, resume=resume) as folder,
         worker_pool() as local,
@@ -218,6 +219,12 @@ def run(
             write_report(folder, spec, results.cases, judged.verdicts, origin, baseline, warnings)
         folder.publish(run_record(sweep, results, started, time.perf_counter() - clock, warnings))
     return Run(folder.target, spec, results.cases, judged.verdicts, judged.changes, warnings)
+
+
+def _least_batches(sweep: Sweep, draws: int) -> int:
+    """Number of batches there are at least, and so of workers that have something to do."""
+    nominal = sum(-(-len(block.case) // BATCH_CASES) for block in sweep.blocks)
+    return nominal + sweep.count * -(-draws // DRAWS_OF_BATCH)
 
 
 def _kinds(sweep: Sweep) -> list[int]:

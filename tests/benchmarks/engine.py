@@ -13,10 +13,9 @@ import subprocess
 import sys
 import tempfile
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
+from functools import partial
 from pathlib import Path
-
-import numpy as np
 
 from modepair.circuits import COPIES, OUTPUT
 from modepair.circuits.netlist import DRIVES, circuit, pair_of_drives
@@ -24,8 +23,8 @@ from modepair.runner import run
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.decks import case_deck
 from modepair.runner.engine import engine
-from modepair.runner.plans import BatchPlan, plan_batches
-from modepair.sweeps import Sweep, expand, load_spec
+from modepair.runner.plans import BatchPlan, plan_batches, plan_draws
+from modepair.sweeps import Streams, Sweep, expand, load_spec
 
 SPEC = """\
 title: Benchmark
@@ -59,35 +58,64 @@ VARIED = {
     "source.parts.CCN": 3e-9,
 }
 
+BRIDGE = "{of: [R1, R2, R3, R4], absolute: 0.1 %, matching: 0.01 %, distribution: normal}"
+FEW = (
+    BRIDGE,
+    "{of: [RF1, RF2, RG, RL, RSP, RSN, RI], absolute: 1 %}",
+    "{of: [A1.cmrr, A2.cmrr, A3.cmrr], least: 100 dB}",
+    "{of: [A1.gain_bandwidth, A2.gain_bandwidth], absolute: 30 %}",
+)
+"""Every resistor of the stage and the source, every CMRR, two gain-bandwidths."""
+
+EVERY = {
+    "open_loop_gain": "absolute: 50 %",
+    "gain_bandwidth": "absolute: 30 %",
+    "phase_margin": "absolute: 10 %",
+    "cmrr": "least: 100 dB",
+    "cmrr_corner": "absolute: 30 %",
+    "input_resistance_differential": "absolute: 50 %",
+    "input_resistance_common": "absolute: 50 %",
+    "output_resistance": "absolute: 30 %",
+}
+MANY = (
+    BRIDGE,
+    "{of: [RF1, RF2, RG, RL, RSP, RSN, RI, RBP, RBN], absolute: 1 %}",
+    *(
+        f"{{of: [{', '.join(f'{opamp}.{name}' for opamp in ('A1', 'A2', 'A3'))}], {bound}}}"
+        for name, bound in EVERY.items()
+    ),
+)
+"""Every resistor there is, and every parameter of every op-amp but its input capacitances."""
+
 ROUNDS = 3
 
 
 def write_spec(folder: Path, cases: int, spots: str = "1k, 10k") -> Path:
-    """Write a spec of at least so many cases: nine axes, as even as the number allows."""
-    sizes = [1] * len(VARIED)
-    for index in itertools.cycle(range(len(sizes))):
-        if np.prod(sizes) >= cases:
-            break
-        sizes[index] += 1
+    """Write a spec of so many cases: an axis for each prime factor of the number, of which there are at most nine."""
+    sizes = prime_factors(cases)
     axes = "\n".join(
         f"  {path}: [{', '.join(repr(value * (1 + 1e-4 * step)) for step in range(size))}]"
-        for (path, value), size in zip(VARIED.items(), sizes, strict=True)
+        for (path, value), size in itertools.zip_longest(VARIED.items(), sizes, fillvalue=1)
     )
     path = folder / f"bench-{cases}.yaml"
     path.write_text(SPEC.format(axes=axes, spots=spots), encoding="utf-8")
     return path
 
 
-def write_drawn_spec(folder: Path, draws: int) -> Path:
-    """Write a spec of one case: every resistor, every CMRR, two gain-bandwidths drawn; 27 elements a drive."""
+def prime_factors(number: int) -> list[int]:
+    """Prime factors of a number, falling."""
+    factors = []
+    for divisor in range(2, number + 1):
+        while number % divisor == 0:
+            factors.append(divisor)
+            number //= divisor
+    return factors[::-1]
+
+
+def write_drawn_spec(folder: Path, draws: int, entries: Sequence[str]) -> Path:
+    """Write a spec of one case, with these entries of tolerances."""
     text = write_spec(folder, 1).read_text(encoding="utf-8")
     text = text[: text.index("vary:")] + text[text.index("opamps:") :]
-    entries = [
-        "{of: [R1, R2, R3, R4], absolute: 0.1 %, matching: 0.01 %, distribution: normal}",
-        "{of: [RF1, RF2, RG, RL, RSP, RSN, RI], absolute: 1 %}",
-        "{of: [A1.cmrr, A2.cmrr, A3.cmrr], least: 100 dB}",
-        "{of: [A1.gain_bandwidth, A2.gain_bandwidth], absolute: 30 %}",
-    ]
     text += f"tolerance:\n  draws: {draws}\n  seed: 7\n  parts:\n"
     text += "".join(f"    - {entry}\n" for entry in entries)
     path = folder / f"draws-{draws}.yaml"
@@ -218,32 +246,41 @@ def measure_cases(folder: Path) -> None:
 
 
 def measure_draws(folder: Path) -> None:
-    spec = write_drawn_spec(folder, 10_000)
-    sweep = expand(load_spec(spec))
-    plans = plan_batches(sweep)
-    bare, one, two = (
-        "bare ac of a loaded deck",
-        "modepair, 10,000 draws, one job",
-        "modepair, 10,000 draws, two jobs",
-    )
-    found = in_turn(
-        {
-            bare: lambda: bare_ac(sweep, plans),
-            one: lambda: modepair(spec, folder, 1, 10_000),
-            two: lambda: modepair(spec, folder, 2, 10_000),
-        },
-        ROUNDS,
-    )
-    print_rows(found, found[bare])
-    print(f"two jobs against one: {found[one] / found[two]:.2f} times")
+    for entries in (FEW, MANY):
+        spec = write_drawn_spec(folder, 10_000, entries)
+        sweep = expand(load_spec(spec))
+        plans = plan_batches(sweep)
+        altered = altered_elements(sweep)
+        bare, one, two = (
+            "bare ac of a loaded deck",
+            f"modepair, 10,000 draws, {altered} elements altered, one job",
+            f"modepair, 10,000 draws, {altered} elements altered, two jobs",
+        )
+        found = in_turn(
+            {
+                bare: partial(bare_ac, sweep, plans),
+                one: partial(modepair, spec, folder, 1, 10_000),
+                two: partial(modepair, spec, folder, 2, 10_000),
+            },
+            ROUNDS,
+        )
+        print_rows(found, found[bare])
+        print(f"two jobs against one: {found[one] / found[two]:.2f} times")
+
+
+def altered_elements(sweep: Sweep) -> int:
+    """Elements of each copy of the circuit that differ from one draw to the next."""
+    assert sweep.spec.tolerance is not None
+    values = next(iter(plan_draws(sweep, Streams(sweep.spec.tolerance)))).batch().values
+    return int((values[0] != values[1]).sum())
 
 
 def measure_memory(folder: Path) -> None:
     for label, spec in (
         ("1,000 cases", write_spec(folder, 1000)),
         ("20,000 cases", write_spec(folder, 20_000)),
-        ("10,000 draws", write_drawn_spec(folder, 10_000)),
-        ("100,000 draws", write_drawn_spec(folder, 100_000)),
+        ("10,000 draws", write_drawn_spec(folder, 10_000, FEW)),
+        ("100,000 draws", write_drawn_spec(folder, 100_000, FEW)),
     ):
         own, worker = peak_memory_mb(spec, folder)
         print(f"peak memory, {label}: {own:.0f} MB, its worker {worker:.0f} MB", flush=True)
