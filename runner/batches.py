@@ -71,7 +71,7 @@ class Solved:
 def _unusable(batch: Batch) -> dict[int, str]:
     """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
     names = [commands[0].split()[1].lstrip("@").rpartition("_")[0] for commands in batch.deck.commands]
-    passive = np.array([name[0] in "rcl" for name in names])
+    passive = np.array([name[0] in "rcl" for name in names], np.bool_)
     bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
     reasons = {}
     for row in np.flatnonzero(bad.any(axis=1)):
