@@ -86,7 +86,11 @@ class Structure:
 
     def values(self, rows: Rows) -> Values:
         """Element values of some of the cases: shape (j, m), a column per element of the deck."""
-        return np.stack([element.values for element in self.elements(rows)], axis=1)
+        elements = self.elements(rows)
+        if not elements:
+            # Such as a transformer between the generators and the output.
+            return np.empty((len(rows), 0))
+        return np.stack([element.values for element in elements], axis=1)
 
     def text(self, row: int) -> str:
         """Netlist of one case, without analyses."""

@@ -79,7 +79,7 @@ class Solved:
 def _unusable(batch: Batch) -> dict[int, str]:
     """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
     names = batch.deck.names
-    passive = np.array([name[0] in "RCL" for name in names])
+    passive = np.array([name[0] in "RCL" for name in names], np.bool_)
     bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
     reasons = {}
     for row in np.flatnonzero(bad.any(axis=1)):

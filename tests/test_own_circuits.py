@@ -291,6 +291,23 @@ def test_an_inductor_is_a_part(tmp_path: Path) -> None:
         np.testing.assert_allclose(pair.differential_gain, answer / 2, rtol=1e-9)
 
 
+TRANSFORMER = """* nothing that has a value of its own
+.subckt transformer p n out
+L1 p n 1
+L2 out 0 4
+K1 L1 L2 0.5
+.ends
+"""
+
+
+def test_a_circuit_may_have_no_part_at_all(tmp_path: Path) -> None:
+    """Closed form: A_dm = k sqrt(L2/L1) = 1, and no common mode passes, which is above the floor."""
+    text = small("transformer", "plus, minus, output")
+    result = run(spec_in(tmp_path, text, TRANSFORMER), tmp_path / "out", jobs=1)
+    assert result.cases["differential_gain"].tolist() == pytest.approx([1.0], rel=1e-9)
+    assert "lowest" in result.cases["above_floor"][0]
+
+
 PAIR = """* a transistor pair with a resistor for a tail: a circuit without an op-amp's place
 .model q0 npn(is=1e-15 bf=1e6)
 .subckt pair p n vcc vee out
