@@ -17,7 +17,6 @@ from typing import TYPE_CHECKING, Any
 import pytest
 
 if TYPE_CHECKING:
-    from modepair.runner.specs import read_spec
     from modepair.runner.sweep_results import SweepResults
     from modepair.sweeps import Spec, Sweep
 
@@ -93,6 +92,7 @@ class SweepFile(pytest.File):
         from modepair.reports.judgement import judged_quantities
         from modepair.runner.checking import find_baseline
         from modepair.runner.judging import accepted
+        from modepair.runner.specs import read_spec
         from modepair.sweeps import ModepairError, expand
 
         try:
