@@ -146,7 +146,14 @@ def _copy(
 def gain_netlist(mounting: Mounting) -> str:
     """Write a netlist that measures an op-amp's gains only, at `modepair.circuits.deck.GAIN_NODES`."""
     copies = {suffix: _copy(mounting, *DRIVES[suffix], 0.0, (0.0, 0.0)) for suffix in "dc"}
-    return str(circuit(copies, saved=[f"v({node})" for node in GAIN_NODES], models=mounting.models))
+    return str(
+        circuit(
+            copies,
+            saved=[f"v({node})" for node in GAIN_NODES],
+            models=mounting.models,
+            nonlinear=bool(mounting.models),
+        )
+    )
 
 
 def bench_netlist(mounting: Mounting) -> tuple[str, tuple[str, ...]]:
@@ -177,4 +184,4 @@ def bench_netlist(mounting: Mounting) -> tuple[str, tuple[str, ...]]:
         f"i({name.removesuffix('#branch')})" if name.endswith("#branch") else f"v({name})" for name in vectors
     ]
     saved += ["v(p_d)", "v(n_d)"] if mounting.models else []
-    return str(circuit(copies, saved=saved, models=mounting.models)), vectors
+    return str(circuit(copies, saved=saved, models=mounting.models, nonlinear=bool(mounting.models))), vectors

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Collection
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -25,7 +26,7 @@ LEAST_GAIN_SHARE = 0.1
 resistance halves its gain."""
 
 TELLING_GAIN = 100.0
-"""Gain on the bench below which the lowest frequency is too high to tell."""
+"""Gain on the bench below which a frequency is too high to tell."""
 
 
 @dataclass(frozen=True)
@@ -59,11 +60,12 @@ class Bias:
         """The nodes whose voltages are needed."""
         return self.plus, self.minus, self.out
 
-    def in_copies(self, common: str, differential: str) -> Bias:
-        """Return the same with the nodes of the two copies of the circuit, given their suffixes."""
-        plus, minus, out = (node if node == GROUND else f"{node}_{common}" for node in self.nodes)
+    def in_copies(self, common: str, differential: str, shared: Collection[str] = ()) -> Bias:
+        """Return the same with the nodes of the two copies of the circuit, given their suffixes and what they share."""
+        one = {GROUND, *shared}
+        plus, minus, out = (node if node in one else f"{node}_{common}" for node in self.nodes)
         positive, negative, output = (
-            node if node == GROUND else f"{node}_{differential}" for node in self.nodes
+            node if node in one else f"{node}_{differential}" for node in self.nodes
         )
         return replace(self, plus=plus, minus=minus, out=out, driven=(positive, negative, output))
 
@@ -73,7 +75,7 @@ class Bias:
         Parameters
         ----------
         volts : tuple of complex
-            Voltages of its nodes in the differentially driven copy, at the lowest frequency.
+            Voltages of its nodes in one copy, at a frequency where its output moves.
         gain : float
             Size of its open-loop gain on the bench there, V/V.
         error : float

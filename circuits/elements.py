@@ -9,13 +9,16 @@ from typing import Literal
 import numpy as np
 import numpy.typing as npt
 
-__all__ = ["GROUND", "Card", "Element", "Instance", "Kind", "Parts", "Values", "between"]
+__all__ = ["GROUND", "OUTPUT", "Card", "Element", "Instance", "Kind", "Parts", "Values", "between"]
 
 Values = npt.NDArray[np.float64]
 Parts = Mapping[str, Values]
 Kind = Literal["R", "C", "L", "G", "E", "V", "I"]
 
 GROUND = "0"
+
+OUTPUT = "out"
+"""Node of every stage's output."""
 
 
 @dataclass(frozen=True)
@@ -78,7 +81,7 @@ def between(parts: Parts, name: str, node_a: str, node_b: str) -> list[Element]:
     parts : mapping of str to ndarray, shape (n,)
         Part values in SI units; a part that is not there has no key.
     name : str
-        Part name; its first letter, R or C, tells what it is.
+        Part name; its first letter, R, C or L, tells what it is.
     node_a, node_b : str
         The nodes it joins.
 
@@ -89,5 +92,5 @@ def between(parts: Parts, name: str, node_a: str, node_b: str) -> list[Element]:
     """
     if name not in parts:
         return []
-    kind: Kind = "R" if name.startswith("R") else "C"
+    kind: Kind = "R" if name.startswith("R") else "L" if name.startswith("L") else "C"
     return [Element(name, kind, (node_a, node_b), parts[name])]

@@ -55,7 +55,8 @@ def imperfections(topology: str, parts: Mapping[str, float]) -> dict[str, dict[s
     Parameters
     ----------
     topology : str
-        Its stage.
+        Its stage. Of an own circuit only the source, the reference and the op-amps' CMRR are known to be one-sided:
+        which of its parts stand side by side is not.
     parts : mapping of str to float
         Part values in SI units; zero and a missing key mean that a part is not there.
 
@@ -84,7 +85,8 @@ def imperfections(topology: str, parts: Mapping[str, float]) -> dict[str, dict[s
     for plus, minus in LEG_PAIRS:
         if _differ(value(plus), value(minus)):
             found[f"{plus} against {minus}"] = {minus: value(plus)}
-    found |= _bridge(topology, parts)
+    if topology in SUBTRACTOR_OPAMP:
+        found |= _bridge(topology, parts)
     instances = sorted({name.split(".")[0] for name in parts if "." in name})
     for instance in instances:
         cmrr = value(f"{instance}.cmrr")

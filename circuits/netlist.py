@@ -7,9 +7,8 @@ from collections.abc import Collection, Mapping, Sequence
 import numpy as np
 from PySpice.Spice.Netlist import Circuit
 
-from modepair.circuits.elements import GROUND, Card, Element, Instance
+from modepair.circuits.elements import GROUND, OUTPUT, Card, Element, Instance
 from modepair.circuits.sources import GENERATORS
-from modepair.circuits.stages import OUTPUT
 
 __all__ = ["ALTERABLE", "COPIES", "DRIVES", "circuit", "netlist", "pair_of_drives", "standalone"]
 
@@ -25,7 +24,7 @@ far above ngspice's own 0.001: of random stages, the largest error at the output
 1e-9 to 3e-11 V per volt of drive, at no cost in time."""
 
 NONLINEAR_OPTIONS = ".option pivrel=0.5"
-"""A circuit with imported models is linearised about its operating point, so it must have one."""
+"""A nonlinear circuit is linearised about its operating point, so it must have one."""
 
 
 ALTERABLE: Mapping[str, str] = {"R": "rsh", "C": "cap"}
@@ -76,6 +75,7 @@ def circuit(
     saved: Sequence[str],
     models: str = "",
     supplies: Mapping[str, float] = {},
+    nonlinear: bool = False,
     alterable: bool = False,
 ) -> Circuit:
     """Build the PySpice circuit of one case, in several copies.
@@ -89,9 +89,11 @@ def circuit(
     saved : sequence of str
         What is kept of a solve, such as "v(out_c)".
     models : str
-        Definitions of the subcircuits that instances name; a circuit with any is nonlinear.
+        Definitions of the subcircuits that instances name.
     supplies : mapping of str to float
         Nodes that all copies share, and their DC voltages.
+    nonlinear : bool
+        Whether the circuit has an operating point.
     alterable : bool
         Whether the values of `ALTERABLE` elements stand in models.
 
@@ -101,7 +103,7 @@ def circuit(
         Without analyses.
     """
     built = Circuit("modepair")
-    options = NONLINEAR_OPTIONS if models else OPTIONS
+    options = NONLINEAR_OPTIONS if nonlinear else OPTIONS
     built.raw_spice = f"{options}\n.save {' '.join(saved)}\n{models}"
     shared = {GROUND, *supplies}
     for node, volts in supplies.items():
@@ -146,6 +148,7 @@ def netlist(
     *,
     models: str = "",
     supplies: Mapping[str, float] = {},
+    nonlinear: bool = False,
     watched: Sequence[str] = (),
     drives: Mapping[str, tuple[float, float]] = DRIVES,
     alterable: bool = False,
@@ -160,6 +163,8 @@ def netlist(
         Definitions of the subcircuits that instances name.
     supplies : mapping of str to float
         Nodes that both copies share, and their DC voltages.
+    nonlinear : bool
+        Whether the circuit has an operating point.
     watched : sequence of str
         Further nodes whose voltages are wanted.
     drives : mapping of str to (float, float)
@@ -174,9 +179,14 @@ def netlist(
         the same double.
     """
     saved = [f"v({OUTPUT}_{copy})" for copy in drives]
-    saved += [f"v({node}_{copy})" for copy in drives for node in watched if node != OUTPUT]
+    own = [node for node in watched if node != OUTPUT and node not in supplies]
+    saved += [f"v({node}_{copy})" for copy in drives for node in own]
+    saved += [f"v({node})" for node in watched if node in supplies]
     copies = pair_of_drives(cards, drives)
-    return str(circuit(copies, saved=saved, models=models, supplies=supplies, alterable=alterable))
+    built = circuit(
+        copies, saved=saved, models=models, supplies=supplies, nonlinear=nonlinear, alterable=alterable
+    )
+    return str(built)
 
 
 def standalone(text: str, analyses: Sequence[str], comment: str) -> str:

@@ -1,4 +1,4 @@
-"""The four stages: which part joins which nodes.
+"""Stages: which part joins which nodes in the four built-in ones, and what a stage is once its op-amps are chosen.
 
 To add a stage, write a function that returns its elements, enter it in `STAGES`, and give its parts to
 `modepair.sweeps.parts`.
@@ -6,20 +6,18 @@ To add a stage, write a function that returns its elements, enter it in `STAGES`
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Hashable
+from dataclasses import dataclass, field, replace
 
 from modepair.circuits.deck import Bias
-from modepair.circuits.elements import GROUND, Card, Parts, between
-from modepair.circuits.imported import ImportedModel
+from modepair.circuits.elements import GROUND, OUTPUT, Card, Parts, between
+from modepair.circuits.imported import ImportedModel, Models, model_texts, models_of, supply_nodes
 from modepair.circuits.opamps import opamp_elements
+from modepair.circuits.own_circuits import Amplifier, OwnStage, own_stage
+from modepair.sweeps import Block, Spec
+from modepair.sweeps.stage_circuits import NETLIST
 
-__all__ = ["OUTPUT", "STAGES", "stage_cards"]
-
-OUTPUT = "out"
-"""Node of every stage's output."""
-
-Amplifier = Callable[[str, str, str, str], list[Card]]
-"""Puts an op-amp, by its instance's name, between its nodes: plus, minus, output."""
+__all__ = ["STAGES", "BuiltStage", "built_stage", "stage_cards"]
 
 
 def _subtractor(
@@ -84,21 +82,85 @@ STAGES: dict[str, Callable[[Parts, Amplifier, str, str, str], list[Card]]] = {
 }
 
 
-def stage_cards(
-    topology: str, parts: Parts, plus: str, minus: str, models: Mapping[str, ImportedModel] = {}
-) -> tuple[list[Card], list[Bias]]:
+@dataclass(frozen=True)
+class BuiltStage:
+    """A stage with what is in its op-amps' places: all but the values of its parts.
+
+    Attributes
+    ----------
+    topology : str
+        A key of `STAGES`, or the topology of an own circuit.
+    models : mapping of str to ImportedModel
+        Imported op-amps by instance; an instance without one has a macromodel.
+    own : OwnStage or None
+        The own circuit.
+    """
+
+    topology: str
+    models: Models = field(default_factory=dict)
+    own: OwnStage | None = None
+
+    @property
+    def key(self) -> Hashable:
+        """What two stages have in common that are the same."""
+        return self.topology, frozenset(self.models.items()), self.own
+
+    @property
+    def text(self) -> str:
+        """Definitions of the subcircuits that its cards name."""
+        return model_texts(self.models.values()) + (self.own.text if self.own else "")
+
+    @property
+    def supplies(self) -> dict[str, float]:
+        """Nodes that carry supplies, and their voltages."""
+        return supply_nodes(self.models.values()) | (self.own.supplies if self.own else {})
+
+    @property
+    def nonlinear(self) -> bool:
+        """Whether it has an operating point."""
+        return bool(self.models) or (self.own is not None and self.own.nonlinear)
+
+    def placed(self, instance: str) -> ImportedModel:
+        """Return an instance's imported op-amp, with the supplies that it has in its place where they are known."""
+        model = self.models[instance]
+        rails = self.own.rails(instance) if self.own else None
+        return replace(model, supplies=rails) if rails and model.supplies else model
+
+
+def built_stage(spec: Spec, block: Block) -> BuiltStage:
+    """Build the stage of a block of cases.
+
+    Parameters
+    ----------
+    spec : Spec
+        The spec.
+    block : Block
+        Cases of it.
+
+    Returns
+    -------
+    BuiltStage
+
+    Raises
+    ------
+    SpecError
+        If the file of an imported op-amp cannot be used.
+    """
+    models = models_of(block.opamps, spec.candidates)
+    return BuiltStage(block.topology, models, own_stage(spec) if block.topology == NETLIST else None)
+
+
+def stage_cards(stage: BuiltStage, parts: Parts, plus: str, minus: str) -> tuple[list[Card], list[Bias]]:
     """Cards of a stage with its reference resistance and its load.
 
     Parameters
     ----------
-    topology : str
-        A key of `STAGES`.
+    stage : BuiltStage
+        The stage.
     parts : mapping of str to ndarray, shape (n,)
         Part values in SI units, op-amp parameters as "A1.gain_bandwidth".
     plus, minus : str
         The nodes of its inputs.
-    models : mapping of str to ImportedModel
-        Imported models by instance, in place of a macromodel.
 
     Returns
     -------
@@ -112,19 +174,29 @@ def stage_cards(
     ValueError
         If the topology is not known.
     """
-    if topology not in STAGES:
-        raise ValueError(f"topology must be one of {', '.join(STAGES)}, not {topology!r}")
     reference = "ref" if "RREF" in parts else GROUND
     biases: list[Bias] = []
 
-    def opamp(name: str, plus: str, minus: str, out: str) -> list[Card]:
-        if name not in models:
+    def opamp(
+        name: str, plus: str, minus: str, out: str, positive: str = "", negative: str = ""
+    ) -> list[Card]:
+        if name not in stage.models:
             return list(opamp_elements(name, plus, minus, out, parts))
-        biases.append(models[name].bias(name, plus, minus, out))
-        return [models[name].instance(name, plus, minus, out)]
+        model = stage.placed(name)
+        bias = model.bias(name, plus, minus, out)
+        if stage.own and stage.own.rails(name) == ():
+            bias = replace(bias, supplies=())
+        biases.append(bias)
+        return [model.instance(name, plus, minus, out, positive, negative)]
 
+    if stage.own:
+        inside = stage.own.cards(parts, opamp, plus, minus, reference, OUTPUT)
+    elif stage.topology in STAGES:
+        inside = STAGES[stage.topology](parts, opamp, plus, minus, reference)
+    else:
+        raise ValueError(f"topology must be one of {', '.join(STAGES)}, not {stage.topology!r}")
     cards = [
-        *STAGES[topology](parts, opamp, plus, minus, reference),
+        *inside,
         *between(parts, "RREF", reference, GROUND),
         *between(parts, "RL", OUTPUT, GROUND),
     ]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Hashable, Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 import numpy.typing as npt
@@ -11,10 +11,9 @@ import numpy.typing as npt
 from modepair.circuits.bench import gain_netlist, imported_mounting
 from modepair.circuits.deck import Bias, Deck
 from modepair.circuits.elements import GROUND, Card, Element, Values
-from modepair.circuits.imported import ImportedModel, Models, model_texts, supply_nodes
 from modepair.circuits.netlist import ALTERABLE, COPIES, netlist
 from modepair.circuits.sources import source_elements
-from modepair.circuits.stages import stage_cards
+from modepair.circuits.stages import BuiltStage, stage_cards
 
 __all__ = ["Structure", "structures"]
 
@@ -31,8 +30,8 @@ class Structure:
 
     Attributes
     ----------
-    topology : str
-        A key of `modepair.circuits.stages.STAGES`.
+    stage : BuiltStage
+        Their stage.
     present : frozenset of str
         The parts that are there.
     imbalanced_leg : {"P", "N"}
@@ -41,39 +40,37 @@ class Structure:
         Part values of all the cases handed in.
     rows : ndarray of int, shape (k,)
         Which of the n cases have this structure, ascending.
-    models : mapping of str to ImportedModel
-        Imported models by op-amp instance.
     """
 
-    topology: str
+    stage: BuiltStage
     present: frozenset[str]
     imbalanced_leg: str
     parts: GivenParts
     rows: Rows
-    models: Models = field(default_factory=dict)
 
     def _circuit(self, rows: Rows) -> tuple[tuple[Card, ...], list[Bias]]:
         here = {name: _taken(self.parts[name], rows) for name in self.parts if name in self.present}
         if "RI" in here:
             here["RI"] = np.abs(here["RI"])
         network, plus, minus = source_elements(here, self.imbalanced_leg)
-        cards, biases = stage_cards(self.topology, here, plus, minus, self.models)
+        cards, biases = stage_cards(self.stage, here, plus, minus)
         return (*network, *cards), biases
 
     def _netlist(self, rows: Rows, *, alterable: bool = False) -> str:
         cards, biases = self._circuit(rows)
-        used = self.models.values()
         watched = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
+        stage = self.stage
         return netlist(
             cards,
-            models=model_texts(used),
-            supplies=supply_nodes(used),
+            models=stage.text,
+            supplies=stage.supplies,
+            nonlinear=stage.nonlinear,
             watched=watched,
             alterable=alterable,
         )
 
     def elements(self, rows: Rows) -> tuple[Element, ...]:
-        """Elements of some of the cases, without what imported models hold.
+        """Elements of some of the cases, without what subcircuits hold.
 
         Parameters
         ----------
@@ -89,7 +86,11 @@ class Structure:
 
     def values(self, rows: Rows) -> Values:
         """Element values of some of the cases: shape (j, m), a column per element of the deck."""
-        return np.stack([element.values for element in self.elements(rows)], axis=1)
+        elements = self.elements(rows)
+        if not elements:
+            # Such as a transformer between the generators and the output.
+            return np.empty((len(rows), 0))
+        return np.stack([element.values for element in elements], axis=1)
 
     def text(self, row: int) -> str:
         """Netlist of one case, without analyses."""
@@ -98,7 +99,7 @@ class Structure:
     @property
     def key(self) -> Hashable:
         """What two structures have in common when one deck serves both."""
-        return self.topology, self.present, self.imbalanced_leg, frozenset(self.models.items())
+        return self.stage.key, self.present, self.imbalanced_leg
 
     def deck(self) -> Deck:
         """Write the deck, with the values of the structure's first case."""
@@ -106,13 +107,16 @@ class Structure:
         elements = self.elements(row)
         commands = tuple(_commands(element) for element in elements)
         values = np.array([element.values[0] for element in elements])
-        references = {name: gain_netlist(imported_mounting(model)) for name, model in self.models.items()}
+        references = {
+            name: gain_netlist(imported_mounting(self.stage.placed(name))) for name in self.stage.models
+        }
         biases = tuple(
-            replace(bias.in_copies(*COPIES), reference=references[bias.instance])
+            replace(bias.in_copies(*COPIES, self.stage.supplies), reference=references[bias.instance])
             for bias in self._circuit(row)[1]
         )
         names = tuple(element.name for element in elements)
-        return Deck(self._netlist(row, alterable=True), names, commands, values, biases, bool(self.models))
+        text = self._netlist(row, alterable=True)
+        return Deck(text, names, commands, values, biases, self.stage.nonlinear)
 
 
 def _taken(values: float | Values, rows: Rows) -> Values:
@@ -129,21 +133,17 @@ def _commands(element: Element) -> tuple[str, ...]:
     return tuple(form.format(name, copy) for copy in COPIES)
 
 
-def structures(
-    topology: str, parts: GivenParts, count: int, models: Mapping[str, ImportedModel] = {}
-) -> list[Structure]:
+def structures(stage: BuiltStage, parts: GivenParts, count: int) -> list[Structure]:
     """Split cases by structure.
 
     Parameters
     ----------
-    topology : str
-        A key of `modepair.circuits.stages.STAGES`.
+    stage : BuiltStage
+        Their stage, the same in all cases.
     parts : mapping of str to float or ndarray, shape (n,)
         Part values in SI units; a part that no case has needs no key.
     count : int
         Number of cases n.
-    models : mapping of str to ImportedModel
-        Imported models by op-amp instance, the same in all cases.
 
     Returns
     -------
@@ -161,12 +161,11 @@ def structures(
         sign = dict(zip(names, patterns[:, pattern].tolist(), strict=True))
         result.append(
             Structure(
-                topology,
+                stage,
                 frozenset(name for name in names if sign[name]),
                 "N" if sign.get("RI", 1) < 0 else "P",
                 parts,
                 np.flatnonzero(member.ravel() == pattern),
-                models,
             )
         )
     return result

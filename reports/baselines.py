@@ -225,6 +225,14 @@ def spec_settings(sweep: Sweep) -> dict[str, str]:
         if path.startswith("opamps.") and path.removeprefix("opamps.").rpartition(".")[0] not in used:
             continue
         found[path] = _canonical(value)
+    if spec.circuit:
+        circuit = spec.circuit
+        found["stage.circuit"] = f"{circuit.file} {circuit.subcircuit} sha256 {circuit.digest}"
+        found["stage.ports"] = ", ".join(spec.stage.ports or ())
+        if spec.stage.supplies:
+            found["stage.supplies"] = ", ".join(map(_canonical, spec.stage.supplies))
+        for name, nominal in circuit.values:
+            found.setdefault(f"stage.parts.{name}", _canonical(nominal))
     found = {path: text for path, text in found.items() if path not in varied}
     plan = spec.frequency
     found |= {

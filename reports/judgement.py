@@ -14,7 +14,7 @@ import numpy as np
 import numpy.typing as npt
 import pandas as pd
 
-from modepair.reports.figures import figures, spot_indices
+from modepair.reports.figures import passband, spot_indices
 from modepair.reports.interference import interference_figures, worst_errors
 from modepair.reports.pairs import BoolArray, FloatArray, ModePair
 from modepair.sweeps.interference import Interference
@@ -203,8 +203,8 @@ def _gain_margins(pair: ModePair, limit: GainLimit, gain: float) -> Margins:
     )  # fmt: skip
 
 
-def _bandwidth_margins(pair: ModePair, least_hz: float) -> Margins:
-    found = figures(pair, ())["bandwidth_hz"].to_numpy(np.float64)
+def _bandwidth_margins(pair: ModePair, least_hz: float, own_circuit: npt.ArrayLike) -> Margins:
+    found = passband(pair, own_circuit).upper_hz
     bound = np.isnan(found)
     value = np.where(bound, pair.frequency_hz[-1], found)
     return Margins(
@@ -219,6 +219,7 @@ def judge(
     *,
     gain: float | None = None,
     interference: Interference | None = None,
+    own_circuit: npt.ArrayLike = False,
 ) -> list[Margins]:
     """Judge cases against limits, but for the yield, which is counted over draws.
 
@@ -232,6 +233,8 @@ def judge(
         The stage's gain, where the limit of the gain does not say what it is to be.
     interference : Interference, optional
         What the limits of errors judge.
+    own_circuit : array_like of bool, shape (n,)
+        Whether the case is an own circuit, as for `modepair.reports.figures.passband`.
 
     Returns
     -------
@@ -252,7 +255,7 @@ def judge(
             raise ValueError("gain must be given, since limits.differential_gain has no of")
         judged.append(_gain_margins(pair, limits.differential_gain, target))
     if limits.bandwidth:
-        judged.append(_bandwidth_margins(pair, limits.bandwidth.least))
+        judged.append(_bandwidth_margins(pair, limits.bandwidth.least, own_circuit))
     if not (limits.output_error or limits.input_error):
         return judged
     if interference is None:

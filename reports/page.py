@@ -61,6 +61,8 @@ class Page:
         Spot frequencies in Hz.
     schematics : mapping of str to str
         Caption to SVG, which is trusted.
+    circuits : mapping of str to sequence of Column
+        Caption to the parts of a stage that is not drawn.
     asked : mapping of str to str
         What was asked, name to text.
     opamps : mapping of str to str
@@ -103,6 +105,7 @@ class Page:
     verdicts_note: str = ""
     spots_hz: Sequence[float] = ()
     schematics: Mapping[str, str] = field(default_factory=dict)
+    circuits: Mapping[str, Sequence[Column]] = field(default_factory=dict)
     opamps: Mapping[str, str] = field(default_factory=dict)
     budget: pd.DataFrame | None = None
     budget_note: str = ""
@@ -150,6 +153,7 @@ def page_html(page: Page) -> str:
         bokeh=_bokeh() if item else "",
         thinned=MOST_POINTS if thin else 0,
         schematics={name: Markup(svg) for name, svg in page.schematics.items()},
+        circuits=[(caption, _table(columns)) for caption, columns in page.circuits.items()],
         stills={name: base64.b64encode(svg.encode()).decode() for name, svg in page.stills.items()},
         dangers=[*page.warnings, *(CAUTIONS[flag] for flag in DANGERS if flag in page.caution_flags)],
         cautions=cautions(page.caution_flags),

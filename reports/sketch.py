@@ -12,7 +12,7 @@ import numpy as np
 import schemdraw
 import schemdraw.elements as elm
 
-from modepair.sweeps.parts import PARTS, Value
+from modepair.sweeps.parts import Value, kind_of
 from modepair.sweeps.quantities import render
 
 __all__ = ["INPUT_OFFSET", "OPAMP_REACH", "Point", "Sketch", "value_text"]
@@ -45,7 +45,7 @@ def value_text(name: str, value: Value) -> str:
     str
         With its unit.
     """
-    unit = PARTS[name].kind.unit
+    unit = kind_of(name).unit
     values = np.unique(np.atleast_1d(value))
     if values.size > 3:
         return f"{render(float(values[0]), unit, digits=4)} to {render(float(values[-1]), unit, digits=4)}"

@@ -70,10 +70,10 @@ def figure_columns(
     Returns
     -------
     list of Column
-        Gain, bandwidth, CMRR at each spot, CMRR's corner, lowest CMRR and its frequency (in the header where
-        it is one for all). What lies above the numerical floor reads ``> 240``; a bandwidth beyond the band
-        ``> 1 MHz``; a corner of which only an upper bound is known ``< 2 kHz``, and ``unknown`` where the
-        band holds no bound.
+        Gain, lower corner where some case has one, bandwidth, CMRR at each spot, CMRR's corner, lowest CMRR and its
+        frequency (in the header where it is one for all). What lies above the numerical floor reads ``> 240``; a
+        bandwidth beyond the band ``> 1 MHz``; a corner of which only an upper bound is known ``< 2 kHz``, and
+        ``unknown`` where the band holds no bound.
     """
     bounds = [set(text.split(", ")) if isinstance(text, str) else set() for text in cases["above_floor"]]
     beyond = f"> {frequency_text(band_hz[1])}"
@@ -90,6 +90,7 @@ def figure_columns(
     one_place = len(set(lowest_at)) == 1
     columns = [
         Column("gain\nV/V", [gain_text(x) for x in cases["differential_gain"]]),
+        *_lower_corners(cases),
         Column("band-\nwidth\n", [beyond if pd.isna(x) else _figure(x) for x in cases["bandwidth_hz"]]),
         *(Column(f"CMRR\n{spot_text(s)}\ndB", levels(spot_column(s), spot_text(s))) for s in spots_hz),
         Column(
@@ -101,6 +102,13 @@ def figure_columns(
         ),
     ]
     return columns if one_place else [*columns, Column("at\n", lowest_at)]
+
+
+def _lower_corners(cases: pd.DataFrame) -> list[Column]:
+    """The lower corner of the passband, where some case has one."""
+    if "lower_corner_hz" not in cases or cases["lower_corner_hz"].isna().all():
+        return []
+    return [Column("lower\ncorner\n", ["–" if pd.isna(x) else _figure(x) for x in cases["lower_corner_hz"]])]
 
 
 def _figure(frequency_hz: float) -> str:

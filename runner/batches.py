@@ -8,7 +8,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits.deck import GAIN_NODES, Bias, Deck
+from modepair.circuits.deck import GAIN_NODES, TELLING_GAIN, Bias, Deck
 from modepair.circuits.elements import GROUND
 from modepair.runner.alterations import Alterations
 from modepair.runner.analyses import Analyses
@@ -79,7 +79,7 @@ class Solved:
 def _unusable(batch: Batch) -> dict[int, str]:
     """Cases with values that ngspice must not see, since it would replace or misread them without a word."""
     names = batch.deck.names
-    passive = np.array([name[0] in "RC" for name in names])
+    passive = np.array([name[0] in "RCL" for name in names], np.bool_)
     bad = ~np.isfinite(batch.values) | (passive & (batch.values <= 0))
     reasons = {}
     for row in np.flatnonzero(bad.any(axis=1)):
@@ -122,27 +122,57 @@ def check_biases(simulator: Engine, biases: Sequence[Bias]) -> None:
             raise SimulationError(reason)
 
 
-def _own_gain(simulator: Engine, netlist: str, analyses: Analyses) -> tuple[float, float]:
-    """Size of a model's gain on the bench at the lowest frequency, and of its common-mode error; 0 if unknown."""
-    lowest_hz = float(analyses.frequency_hz[0])
+OwnGain = tuple[npt.NDArray[np.float64], npt.NDArray[np.float64]]
+"""Size of a model's gain on the bench over frequency, shape (F,), and of its common-mode error; 0 if unknown."""
+
+STILL_SHARE = 0.1
+"""Share of its movement in common mode below which an op-amp's output counts as still in differential mode."""
+
+STILL_VOLT = 1e-9
+"""Movement per volt of drive below which an output tells nothing but round-off."""
+
+
+def _own_gain(simulator: Engine, netlist: str, analyses: Analyses) -> OwnGain:
+    nothing = np.zeros(analyses.frequency_hz.size)
     try:
         simulator.load(netlist, nonlinear=True)
-        found = simulator.analyse(f"ac lin 1 {lowest_hz!r} {lowest_hz!r}", np.array([lowest_hz]), GAIN_NODES)
+        gain, common = np.abs(analyses.solve(simulator, GAIN_NODES))
     except EngineDeadError:
         raise
     except SimulationError:
-        return 0.0, 0.0
-    gain, common = np.abs(found[:, 0]).tolist()
-    return gain, common / gain if gain else 0.0
+        return nothing, nothing
+    return gain, np.divide(common, gain, out=np.zeros_like(gain), where=gain > 0)
 
 
 def _check_gains(
-    biases: Sequence[Bias], own_gains: Mapping[str, tuple[float, float]], volts: Mapping[str, complex]
+    biases: Sequence[Bias],
+    own_gains: Mapping[str, OwnGain],
+    volts: Mapping[str, npt.NDArray[np.complex128]],
 ) -> None:
-    """Refuse a solve in which an imported op-amp's gain has gone."""
+    """Refuse a solve in which an imported op-amp's gain has gone.
+
+    It is looked for in differential mode, and in common mode of an op-amp that has nothing to do otherwise, such as
+    one that drives a guard; at the lowest frequency at which its output moves by half of the most that it does, since
+    a capacitor in front may leave it still below.
+    """
     for bias in biases:
-        plus, minus, out = (0.0 if node == GROUND else volts[node.lower()] for node in bias.driven)
-        reason = bias.gain_fault((plus, minus, out), *own_gains[bias.reference])
+        gain, error = own_gains[bias.reference]
+        telling = gain >= TELLING_GAIN
+        if not telling.any():
+            continue
+        still = np.zeros_like(gain, dtype=np.complex128)
+        driven, common = (
+            [still if node == GROUND else volts[node.lower()] for node in nodes]
+            for nodes in (bias.driven, bias.nodes)
+        )
+        moved = [np.where(telling, np.abs(pins[2]), 0.0) for pins in (driven, common)]
+        most = [float(one.max()) for one in moved]
+        which = 1 if most[0] < STILL_SHARE * most[1] else 0
+        if most[which] < STILL_VOLT:
+            continue
+        place = int(np.argmax(moved[which] >= 0.5 * most[which]))
+        plus, minus, out = (complex(pin[place]) for pin in (driven, common)[which])
+        reason = bias.gain_fault((plus, minus, out), float(gain[place]), float(error[place]))
         if reason:
             raise SimulationError(reason)
 
@@ -176,7 +206,8 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
     own_gains = {
         text: _own_gain(simulator, text, analyses) for text in {bias.reference for bias in deck.biases}
     }
-    pins = list(dict.fromkeys(node.lower() for bias in deck.biases for node in bias.driven if node != GROUND))
+    nodes = (node for bias in deck.biases for node in (*bias.driven, *bias.nodes))
+    pins = list(dict.fromkeys(node.lower() for node in nodes if node != GROUND))
     vectors = (*batch.vectors, *(pin for pin in pins if pin not in batch.vectors))
     alterations = Alterations(deck)
     loaded: npt.NDArray[np.float64] | None = None
@@ -192,7 +223,7 @@ def solve_batch(batch: Batch, analyses: Analyses, simulator: Engine | None = Non
             check_biases(simulator, deck.biases)
             solved = analyses.solve(simulator, vectors)
             if deck.biases:
-                _check_gains(deck.biases, own_gains, dict(zip(vectors, solved[:, 0].tolist(), strict=True)))
+                _check_gains(deck.biases, own_gains, dict(zip(vectors, solved, strict=True)))
             gains[index] = solved[:2]
         except EngineDeadError:
             raise

@@ -17,8 +17,9 @@ from modepair.runner.engine import locate_library
 from modepair.runner.errors import SimulationError
 from modepair.runner.folder import run_folder
 from modepair.runner.record import versions
+from modepair.runner.specs import read_spec
 from modepair.runner.workers import worker_pool
-from modepair.sweeps import Opamp, load_spec, read_candidates
+from modepair.sweeps import Opamp, read_candidates
 
 __all__ = ["BenchRun", "bench", "known_opamps"]
 
@@ -60,7 +61,7 @@ def known_opamps(spec: Path | None = None, file: Path | None = None) -> dict[str
         If the file cannot be used.
     """
     if spec is not None:
-        return load_spec(spec, candidates()).candidates
+        return read_spec(spec).candidates
     return read_candidates(file) if file is not None else candidates()
 
 

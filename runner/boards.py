@@ -12,7 +12,7 @@ import pyarrow as pa
 import pyarrow.parquet as pq
 
 from modepair.reports import ModePair, spot_column
-from modepair.reports.figures import spot_indices
+from modepair.reports.figures import gain_index, spot_indices
 from modepair.reports.quantiles import DrawQuantiles
 from modepair.reports.yields import Yield
 from modepair.runner.batches import Solved
@@ -89,6 +89,7 @@ class Boards:
         self.frequency_hz = frequency_hz
         self.plotted: list[CaseBoards] = []
         self._mask_db = limits.cmrr.at(frequency_hz) if limits and limits.cmrr else None
+        self._own_circuit = sweep.own_circuit
         self._spots = sweep.spec.frequency.spots
         self._columns = spot_indices(frequency_hz, self._spots)
         self._quantiles = DrawQuantiles(frequency_hz, folder.path("draws.partial"))
@@ -179,8 +180,12 @@ class Boards:
                 name = spot_column(spot).removeprefix("cmrr_db_")
                 row |= {f"cmrr_db_p{p}_{name}": float(at[f"cmrr_db_p{p}"]) for p in (1, 50)}
                 row[f"cmrr_db_lowest_{name}"] = float(at["cmrr_db_lowest"])
-            row["differential_gain_p1"] = float(current.table["differential_gain_p1"].iloc[0])
-            row["differential_gain_p99"] = float(current.table["differential_gain_p99"].iloc[0])
+            gain_db = 20 * np.log10(current.table["differential_gain_p50"].to_numpy(np.float64))
+            place = int(gain_index(gain_db[np.newaxis], self._own_circuit[current.case - 1])[0])
+            row |= {
+                name: float(current.table[name].iloc[place])
+                for name in ("differential_gain_p1", "differential_gain_p99")
+            }
             row["worst_draw"] = current.worst_draw
         if self._mask_db is not None:
             found = Yield(current.passed, current.drawn + len(current.reasons))

@@ -8,13 +8,13 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from modepair.circuits import candidates
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.engine import locate_library
 from modepair.runner.errors import RequestError
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, worker_pool
-from modepair.sweeps import Spec, expand, load_spec
+from modepair.runner.specs import read_spec
+from modepair.sweeps import Spec, expand
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -86,7 +86,7 @@ def run_budget(
     """
     started = datetime.now(UTC)
     if not isinstance(spec, Spec):
-        spec = load_spec(spec, candidates())
+        spec = read_spec(spec)
     sweep = expand(spec)
     if not spec.frequency.spots:
         raise RequestError("a budget is worked out at spots, and the spec has none; give frequency.spots")

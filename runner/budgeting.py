@@ -129,9 +129,9 @@ class _Case:
         self.decks = decks
         self.defects = {
             name: ideal
-            for name, ideal in imperfections(drawn.topology, self.board({})).items()
+            for name, ideal in imperfections(drawn.stage.topology, self.board({})).items()
             # An imported model has no parameters that could be made ideal.
-            if not all(part.partition(".")[0] in drawn.models for part in ideal)
+            if not all(part.partition(".")[0] in drawn.stage.models for part in ideal)
         }
 
     def board(self, edges: Mapping[str, float], without: str = "") -> dict[str, float]:
@@ -155,12 +155,11 @@ class _Case:
     def solve(self, rows: Sequence[Mapping[str, Value]], analyses: Analyses) -> ModePair:
         return solve_rows(
             self.solver,
-            self.drawn.topology,
+            self.drawn.stage,
             _stacked(rows),
             len(rows),
             analyses,
             self.decks,
-            self.drawn.models,
         )
 
 

@@ -8,10 +8,10 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from modepair.circuits import candidates
 from modepair.runner.errors import AcceptError, NothingToJudgeError
+from modepair.runner.specs import read_spec
 from modepair.runner.sweep import Run, run
-from modepair.sweeps import Spec, load_spec
+from modepair.sweeps import Spec
 
 if TYPE_CHECKING:
     from modepair.reports.baselines import Baseline
@@ -113,7 +113,7 @@ def check(
     from modepair.reports.baselines import ALLOW_DB, baseline_path, read_baseline
 
     if not isinstance(spec, Spec):
-        spec = load_spec(spec, candidates())
+        spec = read_spec(spec)
     path = find_baseline(spec, baseline)
     if accept:
         path = path or baseline_path(spec.path)

@@ -67,7 +67,7 @@ def structure_decks(sweep: Sweep, plans: Iterable[BatchPlan], analyses: Analyses
         if plan.structure.key in seen:
             continue
         seen.add(plan.structure.key)
-        topology = plan.structure.topology
+        topology = plan.structure.stage.topology
         number = 1 + sum(name.startswith(f"{topology}-") for name in decks)
         decks[f"{topology}-{number}.cir"] = case_deck(sweep, [plan], analyses, int(plan.case[0]))
     return decks

@@ -40,6 +40,7 @@ LENGTHS = struct.Struct("<III")
 
 CHANGED = {
     "spec": "the spec has changed since it was begun",
+    "stage": "the stage's circuit file has changed since it was begun",
     "circuits": "the op-amp data have changed since it was begun",
     "draw": "it was begun with another --draw",
 }
@@ -66,7 +67,8 @@ def run_key(
     Returns
     -------
     dict of str to str
-        Digests of the spec and of all circuits with their values and tolerances; the draw; versions.
+        Digests of the spec, of the stage's own circuit if it has one, and of all circuits with their values and
+        tolerances; the draw; versions.
     """
     circuits = hashlib.sha256()
     for deck in dict.fromkeys(plan.deck.text for plan in plans):
@@ -78,7 +80,14 @@ def run_key(
                 circuits.update(name.encode() + np.asarray(value, np.float64).tobytes())
     circuits.update(repr([command for command, _, _ in analyses.commands]).encode())
     circuits.update(repr((draws, sweep.spec.tolerance)).encode())
-    return {"spec": sweep.spec.digest, "draw": str(draw), "circuits": circuits.hexdigest(), **versions("")}
+    own = sweep.spec.circuit
+    return {
+        "spec": sweep.spec.digest,
+        "stage": own.digest if own else "",
+        "draw": str(draw),
+        "circuits": circuits.hexdigest(),
+        **versions(""),
+    }
 
 
 class Journal:

@@ -130,7 +130,13 @@ def judge_run(
         if interference:
             errors.append(interference_figures(pair, interference).assign(case=case))
         if limits:
-            judged = judge(pair, limits, gain=spec.stage.gain, interference=interference)
+            judged = judge(
+                pair,
+                limits,
+                gain=spec.stage.gain,
+                interference=interference,
+                own_circuit=sweep.own_circuit[case - 1],
+            )
             verdicts += [margins.frame(case) for margins in judged]
         if baseline and comparison:
             for row, number in enumerate(case.tolist()):

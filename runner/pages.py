@@ -23,6 +23,9 @@ from modepair.sweeps.quantities import Kind
 
 __all__ = ["asked", "board_claim", "write_pages"]
 
+FILE_PARTS = "parts in its file"
+"""Of an own circuit, what `asked` calls the values that the spec leaves as they are."""
+
 SECTIONS = {"stage.parts.": "parts", "stage.": "stage", "source.parts.": "source", "source.": "source"}
 
 
@@ -60,7 +63,7 @@ def asked(sweep: Sweep) -> dict[str, str]:
         Such as "source" to "resistance 350 Ω, cable_capacitance 3 nF"; axes last.
     """
     spec = sweep.spec
-    kinds = settings(spec.candidates)
+    kinds = settings(spec.candidates, spec.vocabulary)
     varied = {axis.path for axis in sweep.axes}
     found: dict[str, list[str]] = {"stage": [], "parts": [], "source": []}
     if "stage.topology" not in varied:
@@ -79,6 +82,18 @@ def asked(sweep: Sweep) -> dict[str, str]:
         key = path.removeprefix(prefix)
         name = key if prefix.endswith("parts.") else key.replace("_", " ").replace(".", " ")
         found[SECTIONS[prefix]].append(f"{name} {_written(value, kinds[path])}")
+    if spec.circuit:
+        circuit = spec.circuit
+        found["circuit"] = [
+            f"subcircuit {circuit.subcircuit} of {circuit.file}",
+            f"sha256 {circuit.digest[:16]}",
+        ]
+        found["circuit"] += [f"supply {render(volts, 'V')}" for volts in spec.stage.supplies or ()]
+        found[FILE_PARTS] = [
+            f"{name} {_written(value, kinds[f'stage.parts.{name}'])}"
+            for name, value in circuit.values
+            if f"stage.parts.{name}" not in varied and name not in spec.stage.parts
+        ]
     texts = {section: ", ".join(items) for section, items in found.items() if items}
     for name in used:
         opamp = spec.candidates[name]

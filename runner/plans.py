@@ -9,7 +9,7 @@ from typing import Protocol
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import COPIES, OUTPUT, Deck, ImportedModel, Structure, models_of, structures
+from modepair.circuits import COPIES, OUTPUT, BuiltStage, Deck, Structure, built_stage, structures
 from modepair.runner.batches import BATCH_CASES, DRAWS_OF_BATCH, Batch
 from modepair.sweeps import Streams, Sweep, Variate, boards, variates
 
@@ -71,8 +71,7 @@ def plan_batches(sweep: Sweep, stride: int = 1) -> list[BatchPlan]:
     plans = []
     decks: dict[object, Deck] = {}
     for block in sweep.blocks:
-        models = models_of(block.opamps, sweep.spec.candidates)
-        for structure in structures(block.topology, block.parts, len(block.case), models):
+        for structure in structures(built_stage(sweep.spec, block), block.parts, len(block.case)):
             deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
             for start in range(0, len(structure.rows), BATCH_CASES):
                 rows = structure.rows[start : start + BATCH_CASES]
@@ -89,21 +88,18 @@ class DrawnCase:
     ----------
     case : int
         Its number.
-    topology : str
+    stage : BuiltStage
         Its stage.
     parts : mapping of str to float
         Its nominal part values.
     causes : tuple of Variate
         What varies.
-    models : mapping of str to ImportedModel
-        Its imported op-amps, by instance.
     """
 
     case: int
-    topology: str
+    stage: BuiltStage
     parts: Mapping[str, float]
     causes: tuple[Variate, ...]
-    models: Mapping[str, ImportedModel] = field(default_factory=dict)
 
 
 def drawn_case(sweep: Sweep, case: int) -> DrawnCase:
@@ -132,12 +128,8 @@ def drawn_case(sweep: Sweep, case: int) -> DrawnCase:
 
     parts = at_row(block.parts)
     tolerance = sweep.spec.tolerance
-    models = models_of(block.opamps, sweep.spec.candidates)
-    if tolerance is None:
-        return DrawnCase(case, block.topology, parts, (), models)
-    return DrawnCase(
-        case, block.topology, parts, variates(tolerance, at_row(block.tolerances), parts), models
-    )
+    causes = variates(tolerance, at_row(block.tolerances), parts) if tolerance else ()
+    return DrawnCase(case, built_stage(sweep.spec, block), parts, causes)
 
 
 @dataclass(frozen=True)
@@ -156,7 +148,7 @@ class DrawPlan:
         errors = self.streams.errors(self.drawn.causes, self.start, self.start + count)
         parts = boards(self.drawn.parts, self.drawn.causes, errors)
         # Tolerances below 100 % leave every part on its side of zero, so all boards of a case share a structure.
-        (structure,) = structures(self.drawn.topology, parts, count, self.drawn.models)
+        (structure,) = structures(self.drawn.stage, parts, count)
         deck = self.decks.get(structure.key) or self.decks.setdefault(structure.key, structure.deck())
         return Batch(self.position, deck, structure.values(structure.rows), VECTORS)
 

@@ -87,16 +87,16 @@ class SweepFile(pytest.File):
         pytest.Collector.CollectError
             Where the spec or its baseline cannot be read, with file and line.
         """
-        from modepair.circuits import candidates
         from modepair.reports.baselines import case_settings, read_baseline
         from modepair.reports.comparing_baselines import match_cases
         from modepair.reports.judgement import judged_quantities
         from modepair.runner.checking import find_baseline
         from modepair.runner.judging import accepted
-        from modepair.sweeps import ModepairError, expand, load_spec
+        from modepair.runner.specs import read_spec
+        from modepair.sweeps import ModepairError, expand
 
         try:
-            spec = load_spec(self._shown_path(), candidates())
+            spec = read_spec(self._shown_path())
             sweep = expand(spec)
             path = find_baseline(spec)
             baseline = read_baseline(path) if path else None

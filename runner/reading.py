@@ -11,7 +11,7 @@ from modepair.circuits import candidates
 from modepair.runner.errors import ReadingError
 from modepair.runner.folder import RUN_FILE
 from modepair.runner.sweep import Run
-from modepair.sweeps import Opamp, SpecError
+from modepair.sweeps import Opamp, SpecError, StageCircuit
 from modepair.sweeps.reader import restore_spec
 
 if TYPE_CHECKING:
@@ -154,11 +154,25 @@ def _spec_of(record: dict[str, Any], folder: Path) -> Spec:
         # The values are SI already; they were checked when the spec was read.
         known[name] = Opamp.model_construct(**values)
     try:
-        return restore_spec(record["spec"], record["spec_file"], known)
+        return restore_spec(record["spec"], record["spec_file"], known, circuit=_circuit(record, folder))
     except SpecError as error:
         raise ReadingError(
             f"{folder / RUN_FILE}: its spec cannot be read by this version of modepair; run the spec again\n{error}"
         ) from error
+
+
+def _circuit(record: dict[str, Any], folder: Path) -> StageCircuit | None:
+    """Read back the own circuit that a run was made of."""
+    kept = record.get("circuit")
+    if kept is None:
+        return None
+    try:
+        ports, loose, opamps = (tuple(map(str, kept[name])) for name in ("ports", "loose", "opamps"))
+        values = tuple((str(name), float(value)) for name, value in kept["values"].items())
+        file, subcircuit, digest = (str(kept[name]) for name in ("file", "subcircuit", "digest"))
+        return StageCircuit(file, subcircuit, ports, loose, opamps, values, digest)
+    except (AttributeError, KeyError, TypeError, ValueError) as error:
+        raise ReadingError(f"{folder / RUN_FILE}: circuit is no circuit; run the spec again") from error
 
 
 def _measurements(folder: Path, spec: Spec) -> tuple[Measurement, ...]:
@@ -174,7 +188,7 @@ def _measurements(folder: Path, spec: Spec) -> tuple[Measurement, ...]:
     path = folder / "measured.csv"
     try:
         table = pd.read_csv(path, dtype={"measurement": str}, keep_default_na=False, na_values=[""])
-        known = settings(spec.candidates)
+        known = settings(spec.candidates, spec.vocabulary)
         found = []
         for entry in spec.measured:
             rows = table[table["measurement"] == entry.title]

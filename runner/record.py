@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import platform
 from collections.abc import Sequence
+from dataclasses import fields
 from datetime import datetime
 from importlib.metadata import version
 from pathlib import Path
@@ -12,9 +13,9 @@ from typing import Any
 
 from modepair.circuits import imported_models
 from modepair.runner.results import Results
-from modepair.sweeps import Spec, Sweep
+from modepair.sweeps import Spec, StageCircuit, Sweep
 
-__all__ = ["provenance", "run_record", "versions"]
+__all__ = ["circuit_record", "provenance", "run_record", "versions"]
 
 
 def versions(engine: str) -> dict[str, str]:
@@ -44,6 +45,12 @@ def provenance(spec: Spec, engine: str, started: datetime) -> dict[str, str]:
     }
 
 
+def circuit_record(circuit: StageCircuit) -> dict[str, Any]:
+    """What a record keeps of an own circuit: enough to read the spec again without its file."""
+    kept = {field.name: getattr(circuit, field.name) for field in fields(StageCircuit)}
+    return {**kept, "values": dict(circuit.values)}
+
+
 def run_record(
     sweep: Sweep, results: Results, started: datetime, seconds: float, warnings: Sequence[str] = ()
 ) -> dict[str, Any]:
@@ -65,7 +72,7 @@ def run_record(
     Returns
     -------
     dict
-        Spec text and digest, op-amp data, versions, times, counts.
+        Spec text and digest, its own circuit, op-amp data, versions, times, counts.
     """
     spec = sweep.spec
     used = sorted({name for block in sweep.blocks for name in block.opamps.values()})
@@ -80,6 +87,7 @@ def run_record(
             name: hashlib.sha256(model.text.encode()).hexdigest()
             for name, model in imported_models(used, spec.candidates).items()
         },
+        **({"circuit": circuit_record(spec.circuit)} if spec.circuit else {}),
         "warnings": list(warnings),
         "axes": {axis.path: list(axis.labels) for axis in sweep.axes},
         "versions": versions(results.engine),

@@ -14,6 +14,7 @@ from modepair.reports.page import Page, page_html
 from modepair.reports.ranking import ranking_csv, ranking_markdown
 from modepair.reports.readings import decibel_text, frequency_text
 from modepair.reports.schematic import part_values, schematic_svg
+from modepair.reports.sketch import value_text
 from modepair.reports.tables import Column, figure_columns
 from modepair.reports.verdicts import case_names, failing, overall, shown_verdicts, verdict_columns
 from modepair.runner.comparing import Compared, candidate_axes, compare_runs, run_names
@@ -21,10 +22,11 @@ from modepair.runner.errors import OutputError
 from modepair.runner.folder import RunFolder
 from modepair.runner.measuring import measured_lines, measured_table
 from modepair.runner.page_curves import LOWEST_OF_MANY, MOST_CURVES, draw_curves, winner_of
-from modepair.runner.pages import asked
+from modepair.runner.pages import FILE_PARTS, asked
 from modepair.runner.reading import read_record
 from modepair.runner.sweep import Run
 from modepair.sweeps import Spec, expand
+from modepair.sweeps.stage_circuits import NETLIST
 
 if TYPE_CHECKING:
     from modepair.reports.baselines import Baseline
@@ -77,6 +79,7 @@ def page_of(
     title = runs[0].spec.title or Path(runs[0].spec.path).stem
     verdict_table, verdict_note = _verdicts(runs[0]) if len(runs) == 1 else ([], "")
     told = _asked(sweeps, names)
+    drawings, circuits = _stages(sweeps, names)
     bench = [(run, measured_table(run.folder / "curves.parquet", run.spec, run.cases)) for run in runs]
     return Page(
         title=title if len(runs) == 1 else f"{title} and {len(runs) - 1} more compared",
@@ -92,8 +95,10 @@ def page_of(
         verdicts=verdict_table,
         verdicts_note=verdict_note,
         spots_hz=specs[0].frequency.spots,
-        schematics=_schematics(sweeps, names),
-        asked={name: text for name, text in told.items() if not name.startswith("op-amp ")},
+        schematics=drawings,
+        circuits=circuits,
+        # The values in a circuit's file stand in the table of its parts.
+        asked={name: text for name, text in told.items() if not name.startswith(("op-amp ", FILE_PARTS))},
         opamps={
             name.removeprefix("op-amp "): text for name, text in told.items() if name.startswith("op-amp ")
         },
@@ -151,10 +156,14 @@ def _verdicts(run: Run) -> tuple[list[Column], str]:
     return verdict_columns(rows, case_names(run.cases, run.spec.axes)[0]), note
 
 
-def _schematics(sweeps: Sequence[Sweep], names: Sequence[str]) -> dict[str, str]:
-    """One drawing for each topology of each run."""
-    found = {}
+def _stages(
+    sweeps: Sequence[Sweep], names: Sequence[str]
+) -> tuple[dict[str, str], dict[str, Sequence[Column]]]:
+    """A drawing for each topology of each run; of an own circuit, which nobody can draw, a table of its parts."""
+    drawn: dict[str, str] = {}
+    listed: dict[str, Sequence[Column]] = {}
     for sweep, name in zip(sweeps, names, strict=True):
+        whose = f"{name}: " if len(sweeps) > 1 else ""
         for topology in sweep.spec.topologies:
             blocks = [block for block in sweep.blocks if block.topology == topology]
             opamps: dict[str, set[str]] = {}
@@ -165,10 +174,18 @@ def _schematics(sweeps: Sequence[Sweep], names: Sequence[str]) -> dict[str, str]
                 instance: next(iter(used)) if len(used) == 1 else f"{len(used)} candidates"
                 for instance, used in opamps.items()
             }
-            caption = f"{topology} stage and its source"
-            svg = schematic_svg(topology, part_values([block.parts for block in blocks]), shown)
-            found[f"{name}: {caption}" if len(sweeps) > 1 else caption] = svg
-    return found
+            parts = part_values([block.parts for block in blocks])
+            circuit = sweep.spec.circuit if topology == NETLIST else None
+            if circuit is None:
+                drawn[f"{whose}{topology} stage and its source"] = schematic_svg(topology, parts, shown)
+                continue
+            caption = f"{whose}subcircuit {circuit.subcircuit} of {circuit.file}, which is not drawn, and its source"
+            rows = {part: value_text(part, value) for part, value in parts.items()} | shown
+            listed[caption] = [
+                Column("part", list(rows), "left"),
+                Column("value", list(rows.values()), "left"),
+            ]
+    return drawn, listed
 
 
 def _asked(sweeps: Sequence[Sweep], names: Sequence[str]) -> dict[str, str]:

@@ -11,6 +11,7 @@ import numpy.typing as npt
 import pandas as pd
 
 from modepair.reports import ModePair, figures
+from modepair.reports.figures import in_order_of_figures
 from modepair.runner.batches import Solved
 from modepair.runner.boards import Boards
 from modepair.runner.collecting import in_order
@@ -156,11 +157,12 @@ def collect(
                         frequency_hz,
                         spec.frequency.spots,
                         keeper,
+                        sweep.own_circuit[case[nominal] - 1],
                     )
                 )
             if boards is not None:
                 boards.add(case[~nominal], draw[~nominal], chunk.gains[~nominal], good[~nominal], chunk)
-        cases = pd.concat(tables, ignore_index=True)
+        cases = in_order_of_figures(pd.concat(tables, ignore_index=True))
         if boards is not None:
             cases = boards.joined(cases)
     if "above_floor" in cases:
@@ -183,12 +185,13 @@ def _nominal_rows(
     frequency_hz: npt.NDArray[np.float64],
     spots_hz: tuple[float, ...],
     keeper: _Keeper,
+    own_circuit: npt.NDArray[np.bool_],
 ) -> pd.DataFrame:
     """Rows of the table of cases, with figures for those that did not fail."""
     table = pd.DataFrame({"case": case})
     good = np.array([number not in reasons for number in case.tolist()])
     if good.any():
-        found = figures(_pair(frequency_hz, gains[good]), spots_hz)
+        found = figures(_pair(frequency_hz, gains[good]), spots_hz, own_circuit[good])
         keeper.take(case[good], gains[good], found["cmrr_db_lowest"])
         table = table.join(found.set_axis(np.flatnonzero(good)))
     table["state"] = [

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import Deck, ImportedModel, structures
+from modepair.circuits import BuiltStage, Deck, structures
 from modepair.reports import ModePair
 from modepair.runner.analyses import Analyses
 from modepair.runner.batches import BATCH_CASES, Batch
@@ -22,20 +22,19 @@ Value = float | npt.NDArray[np.float64]
 
 def solve_rows(
     solver: BatchSolver,
-    topology: str,
+    stage: BuiltStage,
     parts: Mapping[str, Value],
     count: int,
     analyses: Analyses,
     decks: dict[object, Deck],
-    models: Mapping[str, ImportedModel] = {},
 ) -> ModePair:
-    """Solve circuits of one topology.
+    """Solve circuits of one stage.
 
     Parameters
     ----------
     solver : BatchSolver
         Where they are solved.
-    topology : str
+    stage : BuiltStage
         Their stage.
     parts : mapping of str to float or ndarray, shape (n,)
         Part values in SI units.
@@ -45,8 +44,6 @@ def solve_rows(
         What to run on each.
     decks : dict
         Decks by structure, kept from one call to the next.
-    models : mapping of str to ImportedModel
-        Imported op-amps by instance.
 
     Returns
     -------
@@ -60,7 +57,7 @@ def solve_rows(
     """
 
     def batches() -> Iterator[Batch]:
-        for structure in structures(topology, parts, count, models):
+        for structure in structures(stage, parts, count):
             deck = decks.get(structure.key) or decks.setdefault(structure.key, structure.deck())
             for start in range(0, len(structure.rows), BATCH_CASES):
                 rows = structure.rows[start : start + BATCH_CASES]

@@ -15,7 +15,6 @@ from pathlib import Path
 from threading import Thread
 from typing import TYPE_CHECKING
 
-from modepair.circuits import candidates
 from modepair.runner.allowances import TIME_LIMIT_S
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.batches import BATCH_CASES, DRAWS_OF_BATCH
@@ -23,7 +22,8 @@ from modepair.runner.curve_plots import Draughting, draughting
 from modepair.runner.engine import locate_library
 from modepair.runner.folder import run_folder
 from modepair.runner.pool import BatchSolver, ExecutorFactory, worker_pool
-from modepair.sweeps import Spec, Streams, Sweep, expand, load_spec
+from modepair.runner.specs import read_spec
+from modepair.sweeps import Spec, Streams, Sweep, expand
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -137,7 +137,7 @@ def run(
     started = datetime.now(UTC)
     clock = time.perf_counter()
     if not isinstance(spec, Spec):
-        spec = load_spec(spec, candidates())
+        spec = read_spec(spec)
     locate_library()
     nominal = sweep = expand(spec)
     name = Path(spec.path).stem

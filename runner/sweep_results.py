@@ -13,7 +13,6 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 import pandas as pd
 
-from modepair.circuits import candidates
 from modepair.reports import ModePair
 from modepair.reports.baselines import ROUNDED_TO, Baseline, case_settings, read_baseline
 from modepair.reports.comparing_baselines import match_cases
@@ -22,7 +21,8 @@ from modepair.reports.readings import frequency_text
 from modepair.reports.verdicts import case_names, curve_text, value_text, verdict_line
 from modepair.runner.checking import check, find_baseline
 from modepair.runner.judging import accepted, read_curves
-from modepair.sweeps import ModepairError, Spec, expand, load_spec
+from modepair.runner.specs import read_spec
+from modepair.sweeps import ModepairError, Spec, expand
 from modepair.sweeps.schema import SPOT_MATCH
 
 if TYPE_CHECKING:
@@ -221,7 +221,7 @@ def sweep_results(path: Path, runs: Path) -> SweepResults:
             except Exception:
                 # Told once per item, but not tried again for each.
                 problem.write_text(f"a fault of modepair\n\n{format_exc()}", encoding="utf-8")
-    spec = load_spec(path, candidates())
+    spec = read_spec(path)
     if problem.exists():
         nothing = pd.DataFrame()
         return SweepResults(spec, folder, nothing, nothing, problem.read_text(encoding="utf-8"))

@@ -9,7 +9,7 @@ from pathlib import Path
 
 import numpy as np
 
-from modepair.circuits import Deck, candidates
+from modepair.circuits import Deck
 from modepair.reports import ModePair
 from modepair.reports.yields import Yield
 from modepair.runner.analyses import Analyses, plan_analyses
@@ -20,7 +20,8 @@ from modepair.runner.errors import RequestError
 from modepair.runner.model_warnings import model_warnings
 from modepair.runner.plans import DrawnCase, case_draws, drawn_case
 from modepair.runner.pool import BatchSolver, worker_pool
-from modepair.sweeps import Spec, Streams, Sweep, expand, load_spec
+from modepair.runner.specs import read_spec
+from modepair.sweeps import Spec, Streams, Sweep, expand
 
 __all__ = ["GRADES", "CaseGrades", "GradeYield", "Tightening", "tighten"]
 
@@ -140,7 +141,7 @@ def tighten(
         If a board cannot be solved.
     """
     if not isinstance(spec, Spec):
-        spec = load_spec(spec, candidates())
+        spec = read_spec(spec)
     tolerance, limits = spec.tolerance, spec.limits
     if tolerance is None:
         raise RequestError("the spec has no tolerance section, so there is nothing to tighten")

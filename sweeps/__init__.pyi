@@ -26,5 +26,7 @@ from .schema import Source as Source
 from .schema import Stage as Stage
 from .spec import Spec as Spec
 from .spec import json_schema as json_schema
+from .stage_circuits import StageCircuit as StageCircuit
 from .tolerances import Tolerance as Tolerance
 from .tolerances import ToleranceEntry as ToleranceEntry
+from .vocabulary import Vocabulary as Vocabulary

@@ -6,16 +6,19 @@ import re
 import typing
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
-from functools import cache
+from functools import lru_cache
 from types import UnionType
 from typing import Any
 
 from pydantic import BaseModel
 
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.leaves import Leaf, Reads, ReadsMapping, UnknownKeyError
 from modepair.sweeps.parts import OPAMP_PARAMETERS
-from modepair.sweeps.schema import Leaf, Reads, ReadsMapping, Source, Stage, UnknownKeyError
+from modepair.sweeps.schema import Source, Stage
+from modepair.sweeps.stage_circuits import CIRCUIT_KEYS
 from modepair.sweeps.tolerances import ToleranceEntry
+from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary
 from modepair.sweeps.words import suggestion
 
 MOST_CASES = 200_000
@@ -46,59 +49,67 @@ class Axis:
         return not isinstance(self.values[0], str)
 
 
-def _leaves(model: type[BaseModel], prefix: str) -> dict[str, Leaf]:
+def _leaves(model: type[BaseModel], prefix: str, vocabulary: Vocabulary) -> dict[str, Leaf]:
     """Return what each path below a model takes; list items stand as ``[]``."""
     found: dict[str, Leaf] = {}
     for name, information in model.model_fields.items():
-        _collect(information.annotation, information.metadata, f"{prefix}.{name}", found)
+        _collect(information.annotation, information.metadata, f"{prefix}.{name}", found, vocabulary)
     return found
 
 
-def _collect(annotation: Any, metadata: Iterable[Any], path: str, found: dict[str, Leaf]) -> None:
+def _collect(
+    annotation: Any, metadata: Iterable[Any], path: str, found: dict[str, Leaf], vocabulary: Vocabulary
+) -> None:
     for marker in metadata:
         if isinstance(marker, Reads):
             found[path] = marker.leaf
             return
         if isinstance(marker, ReadsMapping):
-            found.update({f"{path}.{key}": leaf for key, leaf in marker.leaves.items()})
+            found.update({f"{path}.{key}": leaf for key, leaf in marker.leaves(vocabulary).items()})
             return
     if isinstance(annotation, type) and issubclass(annotation, BaseModel):
-        found.update(_leaves(annotation, path))
+        found.update(_leaves(annotation, path, vocabulary))
         return
     origin, arguments = typing.get_origin(annotation), typing.get_args(annotation)
     if origin is typing.Annotated:
-        _collect(arguments[0], arguments[1:], path, found)
+        _collect(arguments[0], arguments[1:], path, found, vocabulary)
     elif origin in (tuple, list):
-        _collect(arguments[0], (), f"{path}[]", found)
+        _collect(arguments[0], (), f"{path}[]", found, vocabulary)
     elif origin in (typing.Union, UnionType):
         for argument in arguments:
             if argument is not type(None):
-                _collect(argument, (), path, found)
+                _collect(argument, (), path, found, vocabulary)
 
 
-@cache
-def _fixed_settings() -> dict[str, Leaf]:
-    entry = _leaves(ToleranceEntry, "tolerance.parts[]")
+@lru_cache(maxsize=16)
+def _fixed_settings(vocabulary: Vocabulary) -> dict[str, Leaf]:
+    entry = _leaves(ToleranceEntry, "tolerance.parts[]", vocabulary)
     varied = {
         path: entry[path] for path in entry if path.rpartition(".")[2] in ("absolute", "matching", "least")
     }
-    return {**_leaves(Stage, "stage"), **_leaves(Source, "source"), **varied}
+    stage = _leaves(Stage, "stage", vocabulary)
+    one = {f"stage.{key}" for key in CIRCUIT_KEYS}
+    # A spec has one circuit, so what says which it is cannot vary.
+    stage = {path: leaf for path, leaf in stage.items() if path.removesuffix("[]") not in one}
+    return {**stage, **_leaves(Source, "source", vocabulary), **varied}
 
 
-def settings(candidates: Iterable[str] = ()) -> dict[str, Leaf]:
+def settings(candidates: Iterable[str] = (), vocabulary: Vocabulary = BUILT_IN) -> dict[str, Leaf]:
     """Return every setting that an axis can vary, by dotted path.
 
     Parameters
     ----------
     candidates
         Names of the op-amp candidates; each gives paths such as ``opamps.quiet-bipolar.cmrr``.
+    vocabulary
+        What the spec may name.
 
     Returns
     -------
     dict of str to Leaf
         What each setting takes. List indexes stand as ``[]``.
     """
-    known = dict(_fixed_settings())
+    known = dict(_fixed_settings(vocabulary))
     for name in candidates:
         known.update({f"opamps.{name}.{parameter}": kind for parameter, kind in OPAMP_PARAMETERS.items()})
     return known
@@ -124,6 +135,10 @@ def setting_at(path: str, known: Mapping[str, Leaf]) -> Leaf:
         With the nearest known path, when there is no such setting.
     """
     leaf = known.get(re.sub(r"\[[0-9]+\]", "[]", path))
+    if leaf is None and path.partition("stage.")[2] in CIRCUIT_KEYS:
+        raise UnknownKeyError(
+            f"{path} cannot vary, as a spec has one circuit; write a spec for each, and compare their runs"
+        )
     if leaf is None:
         near = (
             suggestion(path, known) or "; paths are such as stage.opamp, stage.parts.R1 or source.imbalance"

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -11,8 +12,9 @@ from numpy.typing import NDArray
 
 from modepair.sweeps.axes import Axis
 from modepair.sweeps.faults import Fault, RefusedError, SpecError
-from modepair.sweeps.parts import TOPOLOGIES, Value, gain_refusals, parts_for_gain, resolve_parts
+from modepair.sweeps.parts import Topology, Value, gain_refusals, parts_for_gain, resolve_parts
 from modepair.sweeps.spec import Spec
+from modepair.sweeps.stage_circuits import NETLIST
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -64,6 +66,14 @@ class Sweep:
     count: int
     blocks: tuple[Block, ...]
 
+    @cached_property
+    def own_circuit(self) -> NDArray[np.bool_]:
+        """Whether each case's stage is the spec's own circuit, shape (count,), by case number from 1."""
+        own = np.zeros(self.count, dtype=np.bool_)
+        for block in self.blocks:
+            own[block.case - 1] = block.topology == NETLIST
+        return own
+
     def frame(self) -> pd.DataFrame:
         """Return a table with one row per case: ``case``, then a column per axis (SI numbers, or names)."""
         import pandas as pd
@@ -111,7 +121,11 @@ def expand(spec: Spec) -> Sweep:
         When a gain cannot be had; a spec from `load_spec` has passed that already.
     """
     try:
-        blocks = [block for raw in _raw_blocks(spec) for block in _resolved(*raw)]
+        blocks = [
+            block
+            for topology, opamps, case, settings in _raw_blocks(spec)
+            for block in _resolved(spec.vocabulary.topologies[topology], opamps, case, settings)
+        ]
     except RefusedError as refusal:
         raise SpecError(gain_faults(spec) or [Fault(spec.path, 0, 0, "", str(refusal))]) from refusal
     blocks.sort(key=lambda block: int(block.case[0]))
@@ -190,24 +204,24 @@ def _instances(spec: Spec, topology: str, names: dict[str, str]) -> dict[str, st
     every = names.get("stage.opamp", spec.stage.opamp or "")
     return {
         instance: names.get(f"stage.opamps.{instance}", given.get(instance, every))
-        for instance in TOPOLOGIES[topology].opamps
+        for instance in spec.vocabulary.topologies[topology].opamps
     }
 
 
 def _resolved(
-    topology: str, opamps: dict[str, str], case: NDArray[np.int64], settings: dict[str, Value]
+    stage: Topology, opamps: dict[str, str], case: NDArray[np.int64], settings: dict[str, Value]
 ) -> Iterator[Block]:
     """Yield the block, or two where some of its cases have no RG."""
-    parts = resolve_parts(topology, opamps, settings)
+    parts = resolve_parts(stage, opamps, settings)
     tolerances = {path: value for path, value in settings.items() if path.startswith("tolerance.")}
     without = np.isinf(parts.get("RG", 0.0))
     if not np.any(without):
-        yield Block(topology, opamps, case, parts, tolerances)
+        yield Block(stage.name, opamps, case, parts, tolerances)
         return
     for rows, absent in ((~without, ()), (without, ("RG",))):
         chosen = {name: _taken(value, rows) for name, value in parts.items() if name not in absent}
         yield Block(
-            topology,
+            stage.name,
             opamps,
             case[rows],
             chosen,

@@ -12,18 +12,11 @@ from modepair.sweeps.axes import MOST_CASES
 from modepair.sweeps.document import Document, Location, Node
 from modepair.sweeps.faults import Fault, RefusedError, shown
 from modepair.sweeps.imported import imported_faults
-from modepair.sweeps.parts import (
-    INSTANCES,
-    OPAMP_PARAMETERS,
-    PARTS,
-    REQUIRED_PARAMETERS,
-    SHORTHANDS,
-    STAGE_PART_KINDS,
-    TOPOLOGIES,
-    Topology,
-)
+from modepair.sweeps.parts import OPAMP_PARAMETERS, REQUIRED_PARAMETERS, SHORTHANDS, Topology
 from modepair.sweeps.quantities import FREQUENCY
 from modepair.sweeps.schema import MOST_SPOTS, OPAMP_NAME, SPOT_MATCH
+from modepair.sweeps.stage_circuits import circuit_faults
+from modepair.sweeps.vocabulary import BUILT_IN, STAGES, Vocabulary
 from modepair.sweeps.words import listed, suggestion
 
 
@@ -38,17 +31,26 @@ class Coherence:
         Names of all op-amp candidates.
     all_named
         Whether every candidate file could be read, so that a name not in `names` is unknown.
+    vocabulary
+        What the spec may name.
     """
 
-    def __init__(self, document: Document, names: Collection[str], *, all_named: bool = True) -> None:
+    def __init__(
+        self,
+        document: Document,
+        names: Collection[str],
+        *,
+        all_named: bool = True,
+        vocabulary: Vocabulary = BUILT_IN,
+    ) -> None:
         self.document = document
         self.names = names
         self.all_named = all_named
+        self.vocabulary = vocabulary
         vary = document.node(("vary",))
         self.axes: dict[str, Node] = dict(vary.entries or {}) if vary else {}
-        self.topologies = [
-            TOPOLOGIES[text] for _, text in self._words("stage.topology") if text in TOPOLOGIES
-        ]
+        self.used = [text for _, text in self._words("stage.topology") if text in STAGES]
+        self.topologies = [vocabulary.topologies[text] for text in self.used if text in vocabulary.topologies]
         self.instances = sorted({instance for t in self.topologies for instance in t.opamps})
 
     def faults(self) -> Iterator[Fault]:
@@ -57,6 +59,7 @@ class Coherence:
         yield from self._frequency()
         if self.document.has(("stage",)):
             yield from self._topology()
+            yield from circuit_faults(self.document, self.used, self.vocabulary.circuit, self.axes)
             yield from self._opamps()
         yield from self._overridden()
         yield from self._candidates()
@@ -138,22 +141,26 @@ class Coherence:
 
     def _topology(self) -> Iterator[Fault]:
         if not self._given("stage.topology"):
-            known = listed(TOPOLOGIES)
+            known = listed(STAGES)
             yield self.document.fault(("stage",), f"topology is missing; give one of {known}", at_key=True)
         if not self.topologies:
             return
         in_use = " and ".join(topology.name for topology in self.topologies)
-        known_parts = [part for part in PARTS if any(part in topology.parts for topology in self.topologies)]
+        known_parts = [
+            part
+            for part in self.vocabulary.parts
+            if any(part in topology.parts for topology in self.topologies)
+        ]
         for path in self._paths("stage.parts"):
             name = path.removeprefix("stage.parts.")
             instance, dot, parameter = name.partition(".")
             location = self._place_of(path)
-            if dot and parameter in OPAMP_PARAMETERS and instance in INSTANCES:
+            if dot and parameter in OPAMP_PARAMETERS and instance in self.vocabulary.instances:
                 if instance not in self.instances:
-                    has = listed(self.instances)
+                    has = listed(self.instances) or "none"
                     message = f"the {in_use} stage has no {instance}; its op-amps are {has}"
                     yield self.document.fault(location, message, at_key=True)
-            elif name in STAGE_PART_KINDS and name not in known_parts:
+            elif name in self.vocabulary.stage_part_kinds and name not in known_parts:
                 message = f"the {in_use} stage has no {name}; its parts are {listed(known_parts)}"
                 yield self.document.fault(location, message, at_key=True)
         for topology in self.topologies:
@@ -197,9 +204,13 @@ class Coherence:
             location = self._place_of("stage.opamp")
             message = "opamp and opamps are both given; leave one of them out"
             yield self.document.fault(location, message, at_key=True)
-        if not one and not has_each:
+        needed = bool(self.instances) or not self.topologies
+        if needed and not one and not has_each:
             message = "opamp is missing; name a candidate for every op-amp, or one for each under opamps"
             yield self.document.fault(("stage",), message, at_key=True)
+        if not needed and one:
+            message = "opamp has no effect, as the stage has no op-amp; remove it"
+            yield self.document.fault(self._place_of("stage.opamp"), message, at_key=True)
         for path in ("stage.opamp", *(f"stage.opamps.{instance}" for instance in each)):
             for location, name in self._words(path):
                 if self.all_named and name not in self.names and OPAMP_NAME.pattern.fullmatch(name):
@@ -214,8 +225,9 @@ class Coherence:
             return
         in_use = " and ".join(topology.name for topology in self.topologies)
         for instance in each:
-            if instance in INSTANCES and instance not in self.instances:
-                message = f"the {in_use} stage has no {instance}; its op-amps are {listed(self.instances)}"
+            if instance in self.vocabulary.instances and instance not in self.instances:
+                has = listed(self.instances) or "none"
+                message = f"the {in_use} stage has no {instance}; its op-amps are {has}"
                 yield self.document.fault(self._place_of(f"stage.opamps.{instance}"), message, at_key=True)
         missing = [instance for instance in self.instances if instance not in each]
         if missing and not one:
@@ -253,7 +265,7 @@ class Coherence:
                 yield from candidate_faults(self.document, name, candidate.entries, axes)
 
     def _used_paths(self) -> list[str]:
-        return ["stage.opamp", *(f"stage.opamps.{instance}" for instance in INSTANCES)]
+        return ["stage.opamp", *(f"stage.opamps.{instance}" for instance in self.vocabulary.instances)]
 
 
 def candidate_faults(

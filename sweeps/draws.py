@@ -14,15 +14,18 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from modepair.sweeps.parts import PARTS, STAGE_PART_KINDS, Value
+from modepair.sweeps.parts import Value
 from modepair.sweeps.tolerances import Tolerance
+from modepair.sweeps.vocabulary import BUILT_IN
 
 __all__ = ["Streams", "Variate", "boards", "variates"]
 
 Floats = NDArray[np.float64]
 
-NAMES = tuple(dict.fromkeys([*PARTS, *STAGE_PART_KINDS]))
-"""Every name that can vary. Its place is its dimension of a Sobol sequence, so it must not depend on the spec."""
+NAMES = tuple(BUILT_IN.varying)
+"""Every name that can vary in any spec. Its place is its dimension of a Sobol sequence. What only an own circuit has
+is drawn as a Latin hypercube beside it: further dimensions of a Sobol sequence are so alike in pairs that some
+hundred draws of two parts would go together."""
 
 TINY = 2.0**-54
 
@@ -97,8 +100,8 @@ def variates(
             continue
         members = tuple(name for name in entry.of if parts.get(name))
         if matching is not None and absolute is not None and members:
-            # Keyed by the member that the vocabulary names first, so that their order in the file changes nothing.
-            key = SET + min(entry.of, key=NAMES.index)
+            # Keyed by the member listed first, so that one more at its end changes nothing.
+            key = SET + entry.of[0]
             found.append(
                 Variate(f"{' '.join(members)} together", key, members, absolute, entry.law, False, index)
             )
@@ -180,9 +183,9 @@ class Streams:
         ndarray, shape (stop - start,)
             Above 0 and below 1. The same for a draw whatever the range it is asked in.
         """
-        if self._sobol is not None:
+        if self._sobol is not None and key.removeprefix(SET) in NAMES:
             numbers = self._sobol.numbers(start, stop)[:, _dimension(key)]
-        elif self.sampling == "latin-hypercube":
+        elif self.sampling != "random":
             if key not in self._whole:
                 self._whole[key] = _latin(self._generator(key), self.draws)
             numbers = self._whole[key][start:stop]
@@ -217,7 +220,7 @@ def _dimension(key: str) -> int:
 
 
 class _Sobol:
-    """A scrambled Sobol sequence over every name that can vary, read mostly in order."""
+    """A scrambled Sobol sequence over every name of `NAMES`, read mostly in order."""
 
     def __init__(self, seed: int) -> None:
         self._seed = seed

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any, ClassVar
 
-from modepair.sweeps.document import Document, Node
+from modepair.sweeps.document import Document, Location, Node
 from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
 from modepair.sweeps.quantities import VOLTAGE
 from modepair.sweeps.words import listed, suggestion
@@ -23,6 +23,7 @@ __all__ = [
     "SUPPLY",
     "imported_faults",
     "ineffective_faults",
+    "supply_faults",
 ]
 
 MODEL_KEYS = ("file", "subcircuit", "pins", "supplies")
@@ -148,10 +149,21 @@ def imported_faults(document: Document, name: str, entries: Mapping[str, Node]) 
         )
         yield document.fault(place, message, at_key=True)
     if "supplies" in entries:
-        yield from _supply_faults(document, name, entries["supplies"])
+        yield from supply_faults(document, (*place, "supplies"), entries["supplies"])
 
 
-def _supply_faults(document: Document, name: str, node: Node) -> Iterator[Fault]:
+def supply_faults(document: Document, place: Location, node: Node) -> Iterator[Fault]:
+    """Yield what is wrong with a pair of supplies.
+
+    Parameters
+    ----------
+    document
+        The file that holds it.
+    place
+        Where it stands there.
+    node
+        The pair as read.
+    """
     items = node.items
     if items is None:
         return
@@ -162,7 +174,7 @@ def _supply_faults(document: Document, name: str, node: Node) -> Iterator[Fault]
     if len(volts) != 2 or volts[0] <= volts[1]:
         written = ", ".join(shown(item.text or "") for item in items)
         message = f"[{written}] is no pair of supplies; supplies takes the positive, then the lower negative voltage"
-        yield document.fault(("opamps", name, "supplies"), message)
+        yield document.fault(place, message)
 
 
 def ineffective_faults(spec: Spec) -> Iterator[Fault]:

@@ -14,9 +14,10 @@ from pydantic import Field
 from modepair.sweeps.corners import Corners, ReadsCorners
 from modepair.sweeps.document import Document, Location
 from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
+from modepair.sweeps.leaves import Reads
 from modepair.sweeps.limits import read_frequency, solved_band
 from modepair.sweeps.quantities import DECIBELS, FREQUENCY, VOLTAGE, Kind
-from modepair.sweeps.schema import SPOT_MATCH, FrequencyValue, Reads, Section
+from modepair.sweeps.schema import SPOT_MATCH, FrequencyValue, Section
 from modepair.sweeps.words import Choice
 
 MOST_HARMONICS = 100

@@ -13,8 +13,9 @@ from pydantic import Field
 from modepair.sweeps.corners import Corners, ReadsCorners
 from modepair.sweeps.document import Document, Location
 from modepair.sweeps.faults import Fault, RefusedError, shown
+from modepair.sweeps.leaves import Reads
 from modepair.sweeps.quantities import DECIBELS, FRACTION, FREQUENCY, GAIN, VOLTAGE, Kind
-from modepair.sweeps.schema import SPOT_MATCH, FrequencyValue, Reads, Section
+from modepair.sweeps.schema import SPOT_MATCH, FrequencyValue, Section
 
 _PART = replace(FRACTION, zero=False, example="0.5 %")
 _YIELD = replace(FRACTION, zero=False, most=0.999999, example="99 %")

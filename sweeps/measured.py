@@ -16,8 +16,9 @@ from modepair.sweeps.axes import Axis
 from modepair.sweeps.bench_files import BenchFile, read_bench_file
 from modepair.sweeps.document import Document, Location
 from modepair.sweeps.faults import LONGEST_PATH, Fault, RefusedError, SpecError, form_of, shown
+from modepair.sweeps.leaves import Leaf, Reads
 from modepair.sweeps.quantities import DECIBELS
-from modepair.sweeps.schema import FILE_NAME, Leaf, Reads, Section
+from modepair.sweeps.schema import FILE_NAME, Section
 from modepair.sweeps.words import Choice, Text, listed, suggestion
 
 FREQUENCY_UNITS = {"Hz": 1.0, "kHz": 1e3, "MHz": 1e6}

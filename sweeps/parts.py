@@ -1,4 +1,7 @@
-"""The vocabulary of parts: names, kinds, the stages that have them, and how settings give their values."""
+"""Parts: their names and kinds, the built-in stages that have them, and how settings give their values.
+
+What a spec may name is its `modepair.sweeps.vocabulary.Vocabulary`: these, and the parts of its own circuit.
+"""
 
 from __future__ import annotations
 
@@ -14,6 +17,7 @@ from modepair.sweeps.quantities import (
     CAPACITANCE,
     DECIBELS,
     FREQUENCY,
+    INDUCTANCE,
     RATIO_DB,
     RESISTANCE,
     SIGN,
@@ -44,6 +48,8 @@ class Topology:
         Parts that may be absent.
     set_by_gain
         Parts that `gain` sets.
+    values
+        Pairs of a part and the value that it has where no setting gives one.
     """
 
     name: str
@@ -51,6 +57,7 @@ class Topology:
     required: tuple[str, ...]
     optional: tuple[str, ...]
     set_by_gain: tuple[str, ...]
+    values: tuple[tuple[str, float], ...] = ()
 
     @property
     def parts(self) -> tuple[str, ...]:
@@ -76,10 +83,10 @@ TOPOLOGIES: dict[str, Topology] = {
         ),
     )
 }
-"""The stages by name."""
+"""The built-in stages by name."""
 
 INSTANCES = ("A1", "A2", "A3")
-"""Op-amp instances that a stage may have."""
+"""Op-amp instances that a built-in stage may have."""
 
 OPAMP_PARAMETERS: dict[str, Kind] = {
     "open_loop_gain": replace(RATIO_DB, noun="an open-loop gain", least=10.0, most=1e12, example="130 dB"),
@@ -122,18 +129,23 @@ class Part:
     topologies: tuple[str, ...]
 
 
+def kind_of(name: str) -> Kind:
+    """Return what the value of a passive part is, which the first letter of its name tells."""
+    if name == "RI":
+        return replace(RESISTANCE.with_sign(), example="10")
+    if name.startswith("C"):
+        return CAPACITANCE.with_zero()
+    if name.startswith("L"):
+        return INDUCTANCE
+    if name in ("RREF", "RSP", "RSN", "RFP", "RFN"):
+        return RESISTANCE.with_zero()
+    return RESISTANCE
+
+
 def _part(name: str) -> Part:
     source = name in _SOURCE_PARTS
-    if name == "RI":
-        kind = replace(RESISTANCE.with_sign(), example="10")
-    elif name.startswith("C"):
-        kind = CAPACITANCE.with_zero()
-    elif name in ("RREF", "RSP", "RSN", "RFP", "RFN"):
-        kind = RESISTANCE.with_zero()
-    else:
-        kind = RESISTANCE
     having = tuple(t.name for t in TOPOLOGIES.values() if source or name in t.parts)
-    return Part(name, kind, "source" if source else "stage", having)
+    return Part(name, kind_of(name), "source" if source else "stage", having)
 
 
 _STAGE_PARTS = ("R1", "R2", "R3", "R4", "RG", "RF1", "RF2", "RREF", "RL", "C2", "C4", "CF1", "CF2")
@@ -143,13 +155,7 @@ _SOURCE_PARTS = (
 )
 
 PARTS: dict[str, Part] = {name: _part(name) for name in (*_STAGE_PARTS, *_SOURCE_PARTS)}
-"""Every passive part by name."""
-
-STAGE_PART_KINDS: dict[str, Kind] = {
-    **{name: PARTS[name].kind for name in _STAGE_PARTS},
-    **{f"{a}.{parameter}": kind for a in INSTANCES for parameter, kind in OPAMP_PARAMETERS.items()},
-}
-"""What `stage.parts` takes: passive parts, and parameters of instances such as ``A1.gain_bandwidth``."""
+"""Every passive part of the source and of the built-in stages, by name."""
 
 SOURCE_PART_KINDS: dict[str, Kind] = {name: PARTS[name].kind for name in _SOURCE_PARTS}
 """What `source.parts` takes."""
@@ -172,15 +178,10 @@ SHORTHANDS: dict[str, tuple[str, ...]] = {
 _SHORTHAND_OF = {part: path for path, parts in SHORTHANDS.items() for part in parts}
 
 
-def stage_parts_of(topology: str) -> tuple[str, ...]:
-    """Return the names that `stage.parts` takes for a topology, op-amp parameters left out."""
-    return TOPOLOGIES[topology].parts
-
-
 def least_gain(topology: str, parts: Mapping[str, Value]) -> Value:
     """Return the gain a stage has without RG, the least that `gain` can ask for.
 
-    Three-op-amp: R2/R1; two-op-amp: 1 + R4/R3; for the difference stages any gain above 0 is in reach.
+    Three-op-amp: R2/R1; two-op-amp: 1 + R4/R3; for all others any gain above 0 is in reach.
 
     Parameters
     ----------
@@ -220,8 +221,11 @@ def parts_for_gain(topology: str, gain: Value, parts: Mapping[str, Value]) -> di
     Returns
     -------
     dict of str to float or ndarray of shape (n,)
-        In ohm. Infinite where the gain is the one without RG; below that gain NaN.
+        In ohm. Infinite where the gain is the one without RG; below that gain NaN. No parts of a stage that is not
+        built in.
     """
+    if topology not in TOPOLOGIES:
+        return {}
     if topology in ("difference", "buffered-difference"):
         return {"R2": gain * parts["R1"], "R4": gain * parts["R3"]}
     least = np.asarray(least_gain(topology, parts), dtype=np.float64)
@@ -238,14 +242,14 @@ def parts_for_gain(topology: str, gain: Value, parts: Mapping[str, Value]) -> di
 
 
 def resolve_parts(
-    topology: str, opamps: Mapping[str, str], settings: Mapping[str, Value]
+    stage: Topology, opamps: Mapping[str, str], settings: Mapping[str, Value]
 ) -> dict[str, Value]:
     """Resolve the value of every part of a circuit.
 
     Parameters
     ----------
-    topology
-        Name of the stage.
+    stage
+        The stage.
     opamps
         Candidate's name by instance: ``{"A1": "quiet-bipolar"}``.
     settings
@@ -263,17 +267,19 @@ def resolve_parts(
     RefusedError
         When a gain is below the least that the stage can have, or needs a part out of any range.
     """
-    stage = TOPOLOGIES[topology]
     parts: dict[str, Value] = {}
-    for name in (*stage.parts, *_SOURCE_PARTS):
-        value = settings.get(f"{PARTS[name].section}.parts.{name}")
+    own = dict(stage.values)
+    for section, name in (*(("stage", n) for n in stage.parts), *(("source", n) for n in _SOURCE_PARTS)):
+        value = settings.get(f"{section}.parts.{name}")
         if value is None and name in _SHORTHAND_OF:
             value = settings.get(_SHORTHAND_OF[name])
+        if value is None:
+            value = own.get(name)
         if value is not None:
             parts[name] = value
     gain = settings.get("stage.gain")
     if gain is not None:
-        parts.update(_checked_gain(topology, gain, parts))
+        parts.update(_checked_gain(stage.name, gain, parts))
     for instance in stage.opamps:
         for parameter in OPAMP_PARAMETERS:
             value = settings.get(f"stage.parts.{instance}.{parameter}")

@@ -347,6 +347,9 @@ RESISTANCE = Kind("a resistance", "Ω", _OHM, least=1e-6, most=1e15, example="10
 CAPACITANCE = Kind("a capacitance", "F", ("F",), least=1e-18, most=1.0, example="100p", codes=True)
 """A capacitance above zero."""
 
+INDUCTANCE = Kind("an inductance", "H", ("H",), least=1e-15, most=1e6, example="10m", codes=True)
+"""An inductance above zero."""
+
 FREQUENCY = Kind("a frequency", "Hz", ("Hz",), least=1e-6, most=1e12, example="50 Hz", codes=True)
 """A frequency above zero."""
 

@@ -22,14 +22,17 @@ from modepair.sweeps.faults import (
     form_of,
     shown,
 )
-from modepair.sweeps.imported import ineffective_faults
+from modepair.sweeps.imported import SUBCIRCUIT, ineffective_faults
 from modepair.sweeps.interference import interference_faults
+from modepair.sweeps.leaves import Leaf, UnknownKeyError
 from modepair.sweeps.limits import limit_faults
 from modepair.sweeps.measured import Measurement, measured_faults, read_measurements
 from modepair.sweeps.parts import REQUIRED_PARAMETERS
-from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Leaf, Opamp, UnknownKeyError
+from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp
 from modepair.sweeps.spec import CandidateFile, Spec
+from modepair.sweeps.stage_circuits import NETLIST, ReadCircuit, StageCircuit, read_ports, unread
 from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults
+from modepair.sweeps.vocabulary import Vocabulary
 from modepair.sweeps.words import listed, suggestion
 
 _MISSING = {
@@ -41,7 +44,13 @@ _MISSING = {
 }
 
 
-def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
+Nested = Mapping[Location, tuple[Fault, ...]]
+"""Faults of other files, by the location that names the file."""
+
+
+def load_spec(
+    path: str | Path, candidates: Mapping[str, Opamp] = {}, read_circuit: ReadCircuit | None = None
+) -> Spec:
     """Read a sweep spec.
 
     Parameters
@@ -50,6 +59,8 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
         The YAML file.
     candidates
         Built-in op-amp candidates by name; those in the spec's files, and those given in it, go before them.
+    read_circuit
+        Reads the stage's own circuit; without it a spec that has one is refused.
 
     Returns
     -------
@@ -59,17 +70,22 @@ def load_spec(path: str | Path, candidates: Mapping[str, Opamp] = {}) -> Spec:
     Raises
     ------
     SpecError
-        With every fault of the spec and of its candidate files, in file order; where there is none, with
-        every fault of its measurements' files.
+        With every fault of the spec, its candidate files and its circuit's file, in file order; where there is
+        none, with every fault of its measurements' files.
     """
     document = read_document(path)
     from_files, nested = _read_files(document)
-    spec, known = _read_spec(document, candidates, from_files, nested)
+    circuit, its_faults = _read_circuit(document, read_circuit)
+    spec, known = _read_spec(document, candidates, from_files, nested, circuit, its_faults)
     return spec.with_measurements(read_measurements(document, spec.measured, spec.axes, known))
 
 
 def restore_spec(
-    text: str, file: str, candidates: Mapping[str, Opamp], measurements: Iterable[Measurement] = ()
+    text: str,
+    file: str,
+    candidates: Mapping[str, Opamp],
+    measurements: Iterable[Measurement] = (),
+    circuit: StageCircuit | None = None,
 ) -> Spec:
     """Read a spec that was kept as text, without the files that it names.
 
@@ -83,6 +99,8 @@ def restore_spec(
         Every op-amp candidate that it uses, those of its `opamp_files` among them.
     measurements
         Its measurements, as they were read when it was kept.
+    circuit
+        Its own circuit, as it was read then.
 
     Returns
     -------
@@ -94,15 +112,65 @@ def restore_spec(
     SpecError
         With every fault of the text, in file order.
     """
-    spec, _ = _read_spec(parse_document(text, file), candidates, {}, {})
+
+    def kept(folder: Path, name: str, subcircuit: str) -> StageCircuit:
+        if circuit is None:
+            raise SpecError([Fault("", 0, 0, "file", f"{shown(name)} was not kept with the spec")])
+        return circuit
+
+    document = parse_document(text, file)
+    found, its_faults = _read_circuit(document, kept)
+    spec, _ = _read_spec(document, candidates, {}, {}, found, its_faults)
     return spec.with_measurements(tuple(measurements))
+
+
+def _read_circuit(document: Document, read: ReadCircuit | None) -> tuple[StageCircuit | None, Nested]:
+    """Read the stage's own circuit, where one is in use; return it, or faults by the location that they are about."""
+    axis = document.node(("vary", "stage.topology"))
+    given = document.node(("stage", "topology"))
+    words = [item.text for item in axis.items or []] if axis else [given.text if given else None]
+    if NETLIST not in [(word or "").strip() for word in words]:
+        return None, {}
+    texts = []
+    for key, leaf in (("file", FILE_NAME), ("subcircuit", SUBCIRCUIT)):
+        node = document.node(("stage", key))
+        try:
+            texts.append(leaf.parse(node.raw if node else None))
+        except RefusedError:
+            return None, {}
+    file, subcircuit = texts
+    location: Location = ("stage", "file")
+    if not file:
+        return None, {location: (document.fault(location, "no value is given; a file name is needed"),)}
+    if read is None:
+        return None, {location: (document.fault(location, unread(file)),)}
+    try:
+        return read(Path(document.file).parent, file, subcircuit), {}
+    except SpecError as error:
+        nested: dict[Location, tuple[Fault, ...]] = {}
+        for fault in error.faults:
+            place = location if fault.line else ("stage", fault.key or "file")
+            one = fault if fault.line else document.fault(place, fault.message)
+            nested[place] = (*nested.get(place, ()), one)
+        return None, nested
+
+
+OF_CIRCUIT = ("stage.parts.", "stage.opamps.", "tolerance.parts[", "measured[")
+"""Beginnings of the keys whose faults may only come of a circuit that could not be read."""
+
+
+def _may_come_of_circuit(fault: Fault) -> bool:
+    key = fault.key.removeprefix("vary.")
+    return key.startswith(OF_CIRCUIT)
 
 
 def _read_spec(
     document: Document,
     candidates: Mapping[str, Opamp],
     from_files: Mapping[str, Opamp],
-    nested: Mapping[Location, tuple[Fault, ...]],
+    nested: Nested,
+    circuit: StageCircuit | None,
+    circuit_faults: Nested,
 ) -> tuple[Spec, dict[str, Leaf]]:
     """Read a spec but for its measurements; return also what each setting takes."""
     raw: dict[str, Any] = document.root.raw  # type: ignore[assignment]
@@ -110,7 +178,8 @@ def _read_spec(
     written = [*candidates, *from_files, *(in_place if isinstance(in_place, dict) else ())]
     names = [name for name in dict.fromkeys(written) if OPAMP_NAME.pattern.fullmatch(name)]
     faults = list(document.faults)
-    known = settings(names)
+    vocabulary = Vocabulary(circuit, read_ports(document)) if circuit else Vocabulary()
+    known = settings(names, vocabulary)
     axes, axis_faults = _read_axes(document, raw.get("vary", {}), known)
     faults += [fault for fault in axis_faults if not nested or not fault.key.startswith("vary.opamps.")]
     if isinstance(raw.get("vary"), dict):
@@ -118,22 +187,25 @@ def _read_spec(
         raw["vary"] = {axis.path: axis.labels for axis in axes}
     spec: Spec | None = None
     try:
-        spec = Spec.model_validate(raw)
+        spec = Spec.model_validate(raw, context=vocabulary)
     except ValidationError as error:
         faults += model_faults(document, Spec, error)
-    coherence = Coherence(document, names, all_named=not nested)
+    coherence = Coherence(document, names, all_named=not nested, vocabulary=vocabulary)
     faults += coherence.faults()
-    faults += tolerance_faults(document, [topology.name for topology in coherence.topologies], coherence.axes)
+    faults += tolerance_faults(document, coherence.topologies, coherence.axes, vocabulary)
     faults += limit_faults(document)
     faults += interference_faults(document)
     faults += measured_faults(document, axes, known)
-    ordered = _in_order(document, faults, nested)
+    if NETLIST in coherence.used and circuit is None:
+        # What the circuit has is not known, so nothing can be said of what is asked of it.
+        faults = [fault for fault in faults if not _may_come_of_circuit(fault)]
+    ordered = _in_order(document, faults, {**nested, **circuit_faults})
     if ordered:
         raise SpecError(ordered)
-    if spec is None:
+    if spec is None or (NETLIST in coherence.used and circuit is None):
         raise SpecError([Fault(document.file, 0, 0, "", "the file cannot be read as a spec")])
     in_place_ones = {name: opamp.named(name, document) for name, opamp in spec.opamps.items()}
-    bound = spec.bind(document, {**candidates, **from_files, **in_place_ones}, axes)
+    bound = spec.bind(document, {**candidates, **from_files, **in_place_ones}, axes, vocabulary)
     faults = [*gain_faults(bound), *ineffective_faults(bound)]
     if spec.tolerance and not faults:
         sweep = expand(bound)
@@ -309,9 +381,7 @@ def _by_key(model: type[BaseModel]) -> dict[str, FieldInfo]:
     return {field.alias or name: field for name, field in model.model_fields.items()}
 
 
-def _in_order(
-    document: Document, faults: Sequence[Fault], nested: Mapping[Location, tuple[Fault, ...]]
-) -> list[Fault]:
+def _in_order(document: Document, faults: Sequence[Fault], nested: Nested) -> list[Fault]:
     """Sort faults as they stand in the file, those of another file where it is named; drop doubles."""
     placed = [((f.line, f.column), f) for f in faults if not _is_unread(document, f)]
     for location, others in nested.items():

@@ -3,29 +3,28 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from collections.abc import Iterable
 from pathlib import Path
-from typing import Annotated, Any, Protocol
+from typing import Annotated
 
 import numpy as np
 from numpy.typing import NDArray
-from pydantic import BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler, PrivateAttr
-from pydantic_core import CoreSchema, core_schema
+from pydantic import (
+    BaseModel,
+    ConfigDict,
+    Field,
+    PrivateAttr,
+)
 
 from modepair.sweeps.document import Document
-from modepair.sweeps.faults import Fault, RefusedError, SeveralRefusedError, form_of, shown
+from modepair.sweeps.faults import Fault
 from modepair.sweeps.imported import PIN, SUBCIRCUIT, SUPPLY
-from modepair.sweeps.parts import (
-    INSTANCES,
-    OPAMP_PARAMETERS,
-    PARTS,
-    SOURCE_PART_KINDS,
-    STAGE_PART_KINDS,
-    TOPOLOGIES,
-)
-from modepair.sweeps.quantities import FREQUENCY, GAIN, NUMBER, Kind
-from modepair.sweeps.words import Choice, Name, Text, listed, suggestion
+from modepair.sweeps.leaves import Leaf, Reads, ReadsMapping
+from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, SOURCE_PART_KINDS
+from modepair.sweeps.quantities import CAPACITANCE, FREQUENCY, GAIN, INDUCTANCE, NUMBER, RESISTANCE, Kind
+from modepair.sweeps.stage_circuits import INSTANCE_NAME, PORT
+from modepair.sweeps.vocabulary import STAGES
+from modepair.sweeps.words import Choice, Name, Text
 
 SPOT_MATCH = 1e-9
 """Relative distance within which a spot and a grid frequency are the same."""
@@ -34,96 +33,20 @@ MOST_SPOTS = 1000
 """Spot frequencies that a spec may have."""
 
 
-class Leaf(Protocol):
-    """What reads one value: a kind of quantity, a choice, a name or free text."""
-
-    @property
-    def takes(self) -> str:
-        """What is taken, for messages."""
-
-    def parse(self, written: object) -> Any:
-        """Return the value, or raise `RefusedError`."""
-
-    def json_schema(self) -> dict[str, Any]:
-        """Return the JSON Schema of the value."""
-
-
-@dataclass(frozen=True)
-class Reads:
-    """Annotation that makes pydantic read a field by a `Leaf`."""
-
-    leaf: Leaf
-
-    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
-        return core_schema.no_info_plain_validator_function(self.leaf.parse)
-
-    def __get_pydantic_json_schema__(
-        self, schema: CoreSchema, handler: GetJsonSchemaHandler
-    ) -> dict[str, Any]:
-        return self.leaf.json_schema()
-
-
-@dataclass(frozen=True, eq=False)
-class ReadsMapping:
-    """Annotation that makes pydantic read a mapping whose keys are known, each by its own leaf.
-
-    Parameters
-    ----------
-    leaves
-        What each key takes.
-    noun
-        What a key is, in the plural: ``parts``.
-    """
-
-    leaves: Mapping[str, Leaf]
-    noun: str
-
-    def parse(self, written: object) -> dict[str, Any]:
-        """Return the values by key; raise `SeveralRefusedError` for all that are refused."""
-        if not isinstance(written, Mapping):
-            raise RefusedError(form_of(written), f"a mapping of {self.noun}")
-        values: dict[str, Any] = {}
-        refusals: list[tuple[tuple[str | int, ...], RefusedError]] = []
-        for key, value in written.items():
-            try:
-                if key not in self.leaves:
-                    raise UnknownKeyError(unknown(str(key), self.leaves, self.noun))
-                values[str(key)] = self.leaves[key].parse(value)
-            except RefusedError as refusal:
-                refusals.append(((str(key),), refusal))
-        if refusals:
-            raise SeveralRefusedError(refusals)
-        return values
-
-    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
-        return core_schema.no_info_plain_validator_function(self.parse)
-
-    def __get_pydantic_json_schema__(
-        self, schema: CoreSchema, handler: GetJsonSchemaHandler
-    ) -> dict[str, Any]:
-        properties = {key: leaf.json_schema() for key, leaf in self.leaves.items()}
-        return {"type": "object", "additionalProperties": False, "properties": properties}
-
-
-class UnknownKeyError(RefusedError):
-    """A refusal of the key itself, not of its value."""
-
-
-def unknown(key: str, known: Mapping[str, Any], noun: str) -> str:
-    """Word the refusal of an unknown key, with the nearest known one."""
-    near = suggestion(key, known)
-    if not near:
-        short = [item for item in known if "." not in item]
-        near = f"; known {noun}: {listed(short)}"
-    return f"{shown(key)} is not among the known {noun}{near}"
-
-
 OPAMP_NAME = Name("an op-amp name", "quiet-bipolar")
 TITLE = Text(200)
 NOTE = Text(500)
 FILE_NAME = Text(500)
 CAUTION = Choice("a caution", ("medical", "mains", "safety"))
-TOPOLOGY = Choice("a topology", tuple(TOPOLOGIES))
+TOPOLOGY = Choice("a topology", STAGES)
+
+OWN_PART_PATTERNS: dict[str, Leaf] = {
+    "R(?!REF$)[A-Z0-9_]{1,31}": RESISTANCE,
+    "C[A-Z0-9_]{1,31}": CAPACITANCE.with_zero(),
+    "L[A-Z0-9_]{1,31}": INDUCTANCE,
+    **{f"{INSTANCE_NAME.pattern}\\.{name}": kind for name, kind in OPAMP_PARAMETERS.items()},
+}
+"""Names that an own circuit may have in `stage.parts`."""
 
 _SR = PARTS["RSP"].kind
 _CAP = PARTS["CCP"].kind
@@ -243,10 +166,19 @@ class Stage(Section):
     Parameters
     ----------
     topology
-        difference, buffered-difference, two-opamp or three-opamp. Where only an axis gives it, its
-        first value.
+        difference, buffered-difference, two-opamp, three-opamp, or netlist for an own circuit. Where only an
+        axis gives it, its first value.
+    file
+        The own circuit's SPICE file, in the spec's folder or below it.
+    subcircuit
+        Name of its subcircuit.
+    ports
+        What each of the subcircuit's ports is, in order.
+    supplies
+        Voltages of its ports that are supplies, the positive one first, V.
     parts
-        SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``.
+        SI values by part name, as given; op-amp parameters as ``A1.gain_bandwidth``. Of an own circuit they
+        go before the values in its file.
     gain
         Ideal differential gain, a ratio; sets RG, or R2 and R4.
     opamp
@@ -260,13 +192,26 @@ class Stage(Section):
     """
 
     topology: Annotated[str, Reads(TOPOLOGY)]
-    parts: Annotated[dict[str, float], ReadsMapping(STAGE_PART_KINDS, "parts of the stage")] = Field(
-        default_factory=dict
-    )
+    file: Annotated[str, Reads(FILE_NAME)] | None = None
+    subcircuit: Annotated[str, Reads(SUBCIRCUIT)] | None = None
+    ports: tuple[Annotated[str, Reads(PORT)], ...] | None = None
+    supplies: tuple[Annotated[float, Reads(SUPPLY)], ...] | None = None
+    parts: Annotated[
+        dict[str, float],
+        ReadsMapping(lambda known: known.stage_part_kinds, "parts of the stage", OWN_PART_PATTERNS),
+    ] = Field(default_factory=dict)
     gain: GainValue | None = None
     opamp: OpampName | None = None
     opamps: (
-        Annotated[dict[str, str], ReadsMapping(dict.fromkeys(INSTANCES, OPAMP_NAME), "instances")] | None
+        Annotated[
+            dict[str, str],
+            ReadsMapping(
+                lambda known: dict.fromkeys(known.instances, OPAMP_NAME),
+                "instances",
+                {INSTANCE_NAME.pattern: OPAMP_NAME},
+            ),
+        ]
+        | None
     ) = None
     reference_resistance: ResistanceOrZero | None = None
     load: Annotated[float, Reads(PARTS["RL"].kind)] | None = None
@@ -320,8 +265,8 @@ class Source(Section):
     between_capacitance: Capacitance | None = None
     bias_resistance: Annotated[float, Reads(PARTS["RBP"].kind)] | None = None
     filter: Filter = Field(default_factory=Filter)
-    parts: Annotated[dict[str, float], ReadsMapping(SOURCE_PART_KINDS, "parts of the source")] = Field(
-        default_factory=dict
+    parts: Annotated[dict[str, float], ReadsMapping(lambda _: SOURCE_PART_KINDS, "parts of the source")] = (
+        Field(default_factory=dict)
     )
 
 

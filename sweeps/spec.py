@@ -13,23 +13,24 @@ from modepair.sweeps.axes import Axis, settings
 from modepair.sweeps.document import Document, Node, Place, split_path
 from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.interference import Interference
+from modepair.sweeps.leaves import Reads, UnknownKeyError
 from modepair.sweeps.limits import Limits
 from modepair.sweeps.measured import Measured, Measurement
-from modepair.sweeps.parts import TOPOLOGIES
 from modepair.sweeps.schema import (
     CAUTION,
     FILE_NAME,
     OPAMP_NAME,
+    OWN_PART_PATTERNS,
     TITLE,
     Frequency,
     Opamp,
-    Reads,
     Section,
     Source,
     Stage,
-    UnknownKeyError,
 )
+from modepair.sweeps.stage_circuits import INSTANCE_NAME, StageCircuit
 from modepair.sweeps.tolerances import Tolerance
+from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary
 
 
 class _NameKeys:
@@ -79,6 +80,11 @@ class _VarySchema:
             for path, leaf in settings(["x"]).items()
             if path.startswith(prefix)
         }
+        named |= {
+            f"^stage\\.parts\\.{pattern}$": axis(leaf.json_schema())
+            for pattern, leaf in OWN_PART_PATTERNS.items()
+        }
+        named[f"^stage\\.opamps\\.{INSTANCE_NAME.pattern}$"] = axis(OPAMP_NAME.json_schema())
         return {
             "type": "object",
             "additionalProperties": False,
@@ -146,15 +152,23 @@ class Spec(Section):
     _candidates: dict[str, Opamp] = PrivateAttr(default_factory=dict)
     _axes: tuple[Axis, ...] = PrivateAttr(default=())
     _measurements: tuple[Measurement, ...] = PrivateAttr(default=())
+    _vocabulary: Vocabulary = PrivateAttr(default=BUILT_IN)
 
-    def bind(self, document: Document, candidates: Mapping[str, Opamp], axes: tuple[Axis, ...]) -> Spec:
-        """Return the spec with what the reader found besides it: its document, all candidates, its axes."""
+    def bind(
+        self,
+        document: Document,
+        candidates: Mapping[str, Opamp],
+        axes: tuple[Axis, ...],
+        vocabulary: Vocabulary,
+    ) -> Spec:
+        """Return the spec with what the reader found besides it: its document, all candidates, axes, vocabulary."""
         wanted = [section.frequency_hz for section in (self.limits, self.interference) if section]
         frequency = self.frequency.solving_too(hz for section in wanted for hz in section)
         bound = self.model_copy(update={"frequency": frequency})
         bound._document = document
         bound._candidates = dict(candidates)
         bound._axes = axes
+        bound._vocabulary = vocabulary
         return bound
 
     @property
@@ -181,6 +195,16 @@ class Spec(Section):
     def axes(self) -> tuple[Axis, ...]:
         """The axes in file order."""
         return self._axes
+
+    @property
+    def vocabulary(self) -> Vocabulary:
+        """What it may name: the built-in stages with their parts, and its own circuit's."""
+        return self._vocabulary
+
+    @property
+    def circuit(self) -> StageCircuit | None:
+        """Its own circuit, where a stage in use is one."""
+        return self._vocabulary.circuit
 
     @property
     def measurements(self) -> tuple[Measurement, ...]:
@@ -220,7 +244,8 @@ class Spec(Section):
     @property
     def instances(self) -> tuple[str, ...]:
         """The op-amp instances that at least one stage in use has."""
-        return tuple(sorted({instance for name in self.topologies for instance in TOPOLOGIES[name].opamps}))
+        stages = [self._vocabulary.topologies[name] for name in self.topologies]
+        return tuple(sorted({instance for stage in stages for instance in stage.opamps}))
 
 
 def json_schema() -> dict[str, Any]:

@@ -10,9 +10,12 @@ from pydantic import Field, ValidationError
 
 from modepair.sweeps.document import Document, Location, join_path
 from modepair.sweeps.faults import Fault, RefusedError, form_of, shown
-from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS, STAGE_PART_KINDS, TOPOLOGIES
+from modepair.sweeps.leaves import Reads, ReadsInContext
+from modepair.sweeps.parts import OPAMP_PARAMETERS, Topology
 from modepair.sweeps.quantities import COUNT, DECIBELS, FRACTION
-from modepair.sweeps.schema import Reads, Section
+from modepair.sweeps.schema import Section
+from modepair.sweeps.stage_circuits import INSTANCE_NAME, PART_NAME
+from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary
 from modepair.sweeps.words import Choice, listed, suggestion
 
 __all__ = ["MOST_DRAWS", "MOST_RESULTS", "Tolerance", "ToleranceEntry", "tolerance_faults", "unvaried_faults"]
@@ -40,8 +43,15 @@ _ENTRIES = "at least one entry, such as {of: [R1, R2], absolute: 0.1 %}"
 
 @dataclass(frozen=True)
 class _ToleranceName:
-    """Reads the name of a part or of an op-amp's parameter."""
+    """Reads the name of a part or of an op-amp's parameter.
 
+    Parameters
+    ----------
+    known
+        What the spec may name.
+    """
+
+    known: Vocabulary = BUILT_IN
     takes: str = "names of parts or op-amp parameters, such as R1, CCP or A1.gain_bandwidth"
 
     def parse(self, written: object) -> str:
@@ -49,8 +59,8 @@ class _ToleranceName:
         if not isinstance(written, str):
             raise RefusedError(form_of(written), self.takes)
         text = written.strip()
-        if text not in PARTS and text not in STAGE_PART_KINDS:
-            near = suggestion(text, [*PARTS, *STAGE_PART_KINDS])
+        if text not in self.known.varying:
+            near = suggestion(text, self.known.varying)
             raise RefusedError(f"{shown(text)} is no part{near}", self.takes)
         if text.endswith(".cmrr_sign"):
             raise RefusedError(
@@ -60,11 +70,10 @@ class _ToleranceName:
 
     def json_schema(self) -> dict[str, Any]:
         """Return the JSON Schema of a name."""
-        known = [name for name in (*PARTS, *STAGE_PART_KINDS) if not name.endswith(".cmrr_sign")]
-        return {"type": "string", "enum": list(dict.fromkeys(known))}
-
-
-_NAME = _ToleranceName()
+        known = [name for name in self.known.varying if not name.endswith(".cmrr_sign")]
+        parameters = "|".join(name for name in OPAMP_PARAMETERS if name != "cmrr_sign")
+        own = f"^({PART_NAME.pattern}|{INSTANCE_NAME.pattern}\\.({parameters}))$"
+        return {"anyOf": [{"type": "string", "enum": known}, {"type": "string", "pattern": own}]}
 
 
 class ToleranceEntry(Section):
@@ -86,7 +95,7 @@ class ToleranceEntry(Section):
         else rectangular, since a bound is all that is known (JCGM 101:2008, 6.4.2).
     """
 
-    of: tuple[Annotated[str, Reads(_NAME)], ...]
+    of: tuple[Annotated[str, ReadsInContext(_ToleranceName)], ...]
     absolute: Annotated[float, Reads(_SHARE)] | None = None
     matching: Annotated[float, Reads(_SHARE)] | None = None
     least: Annotated[float, Reads(_LEAST)] | None = None
@@ -128,7 +137,7 @@ class Tolerance(Section):
 
 
 def tolerance_faults(
-    document: Document, topologies: Sequence[str], axes: Mapping[str, Any]
+    document: Document, stages: Sequence[Topology], axes: Mapping[str, Any], vocabulary: Vocabulary
 ) -> Iterator[Fault]:
     """Yield what the entries of a tolerance section do not agree on.
 
@@ -136,10 +145,12 @@ def tolerance_faults(
     ----------
     document
         The spec as read.
-    topologies
-        Names of the stages in use.
+    stages
+        The stages in use.
     axes
         Paths of the axes, as keys.
+    vocabulary
+        What the spec may name.
     """
     section = document.node(("tolerance",))
     if section is not None and section.entries is not None:
@@ -158,20 +169,19 @@ def tolerance_faults(
             key for key in ("absolute", "matching", "least") if f"tolerance.parts[{index}].{key}" in axes
         }
         try:
-            entry = ToleranceEntry.model_validate(item.raw)
+            entry = ToleranceEntry.model_validate(item.raw, context=vocabulary)
         except ValidationError:
             entry = None
         if item.entries and "of" not in item.entries:
-            yield document.fault(place, f"of is missing; it takes {_NAME.takes}")
+            yield document.fault(place, f"of is missing; it takes {_ToleranceName.takes}")
         names = entry.of if entry else ()
         if entry and not names:
             yield document.fault((*place, "of"), "the list is empty; of takes at least one part")
         for position, name in enumerate(names):
             at = (*place, "of", position)
-            if topologies and not any(_has(topology, name) for topology in topologies):
-                yield document.fault(
-                    at, f"the {' and '.join(topologies)} stage has no {name}; {_known(topologies, name)}"
-                )
+            if stages and not any(_has(stage, name, vocabulary) for stage in stages):
+                in_use = " and ".join(stage.name for stage in stages)
+                yield document.fault(at, f"the {in_use} stage has no {name}; {_known(stages, name)}")
             if name in seen:
                 yield document.fault(at, f"{name} has a tolerance already, at {seen[name]}; give it once")
             seen.setdefault(name, _where(document, at))
@@ -182,7 +192,7 @@ def tolerance_faults(
         yield from _cmrr_faults(document, place, names, given)
         if entry and not of_cmrr:
             values = {key: _values(document, axes, (*place, key)) for key in ("absolute", "matching")}
-            yield from _matching_faults(document, place, entry, values)
+            yield from _matching_faults(document, place, entry, values, vocabulary)
             yield from _normal_faults(document, entry, values)
     for path in axes:
         if path.startswith("tolerance.parts["):
@@ -199,18 +209,17 @@ def _where(document: Document, location: tuple[str | int, ...]) -> str:
     return f"line {place.line}"
 
 
-def _has(topology: str, name: str) -> bool:
-    stage = TOPOLOGIES[topology]
+def _has(stage: Topology, name: str, vocabulary: Vocabulary) -> bool:
     instance, dot, _ = name.partition(".")
     if dot:
         return instance in stage.opamps
-    return PARTS[name].section == "source" or name in stage.parts
+    return vocabulary.parts[name].section == "source" or name in stage.parts
 
 
-def _known(topologies: Sequence[str], name: str) -> str:
+def _known(stages: Sequence[Topology], name: str) -> str:
     if "." in name:
-        return f"its op-amps are {listed(sorted({a for t in topologies for a in TOPOLOGIES[t].opamps}))}"
-    return f"its parts are {listed(dict.fromkeys(part for t in topologies for part in TOPOLOGIES[t].parts))}"
+        return f"its op-amps are {listed(sorted({a for stage in stages for a in stage.opamps})) or 'none'}"
+    return f"its parts are {listed(dict.fromkeys(part for stage in stages for part in stage.parts))}"
 
 
 def _cmrr_faults(
@@ -257,7 +266,11 @@ def _values(document: Document, axes: Mapping[str, Any], place: Location) -> Wri
 
 
 def _matching_faults(
-    document: Document, place: Location, entry: ToleranceEntry, values: Mapping[str, Written]
+    document: Document,
+    place: Location,
+    entry: ToleranceEntry,
+    values: Mapping[str, Written],
+    vocabulary: Vocabulary,
 ) -> Iterator[Fault]:
     if not values["matching"]:
         return
@@ -266,7 +279,7 @@ def _matching_faults(
         key = first if first[0] == "tolerance" else first[:2]
         message = f"{entry.of[0]} alone cannot match anything; matching takes a set of two or more parts"
         yield document.fault(key, message, at_key=True)
-    units = {OPAMP_PARAMETERS[n.partition(".")[2]].unit if "." in n else PARTS[n].kind.unit for n in entry.of}
+    units = {vocabulary.varying[name].unit for name in entry.of}
     if len(units) > 1:
         message = "parts of different kinds cannot form a matched set; give each kind an entry of its own"
         yield document.fault(place, message)

@@ -11,7 +11,7 @@ drives gives its row to the source's own equation, and no branch currents are ne
 """
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from typing import Any
 
 import mpmath  # type: ignore[import-untyped]
@@ -25,7 +25,7 @@ GROUND = "0"
 REFINEMENTS = 2
 
 
-class _Network:
+class Network:
     """Elements as stamps, generic in the number type: numpy arrays over frequency, or one mpmath number.
 
     Parameters
@@ -70,6 +70,9 @@ class _Network:
     def capacitor(self, name: str, a: str, b: str) -> None:
         if self.value(name) != 0:
             self.admittance(a, b, self.s * self.value(name))
+
+    def inductor(self, name: str, a: str, b: str) -> None:
+        self.admittance(a, b, 1 / (self.s * self.value(name)))
 
     def in_series(self, name: str, a: str, b: str) -> str:
         """Resistor from `a` on to `b`; absent or zero, both are one node. Returns the node reached."""
@@ -121,7 +124,7 @@ class _Network:
                 self.capacitor(f"{name}.input_capacitance_{kind}", one, other)
 
 
-def _source_leg(network: _Network, leg: str, imbalance: Any) -> tuple[str, str]:
+def _source_leg(network: Network, leg: str, imbalance: Any) -> tuple[str, str]:
     """One leg from its generator to the stage's input; returns the cable's node and the input's node."""
     start = f"generator {leg}"
     network.equation(start, [(start, 1 + 0 * network.s)], right=leg)
@@ -137,7 +140,7 @@ def _source_leg(network: _Network, leg: str, imbalance: Any) -> tuple[str, str]:
     return cable, node
 
 
-def _source(network: _Network) -> tuple[str, str]:
+def _source(network: Network) -> tuple[str, str]:
     imbalance = network.value("RI")
     plus_cable, plus = _source_leg(network, "P", max(imbalance, 0))
     minus_cable, minus = _source_leg(network, "N", max(-imbalance, 0))
@@ -146,12 +149,12 @@ def _source(network: _Network) -> tuple[str, str]:
     return plus, minus
 
 
-def _reference(network: _Network) -> str:
+def _reference(network: Network) -> str:
     """The reference's node: ground itself, or a node behind RREF."""
     return network.in_series("RREF", GROUND, "ref")
 
 
-def _difference(network: _Network, opamp: str, plus: str, minus: str, ref: str) -> None:
+def _difference(network: Network, opamp: str, plus: str, minus: str, ref: str) -> None:
     network.resistor("R1", minus, "n1")
     network.resistor("R2", "n1", "out")
     network.resistor("R3", plus, "p1")
@@ -161,10 +164,16 @@ def _difference(network: _Network, opamp: str, plus: str, minus: str, ref: str) 
     network.opamp(opamp, "p1", "n1", "out")
 
 
-def _stage(network: _Network, topology: str) -> None:
+Wiring = Callable[[Network, str, str, str], None]
+"""Puts a stage's elements into a network, given the nodes of its inputs and of its reference; its output is "out"."""
+
+
+def _stage(network: Network, topology: str | Wiring) -> None:
     plus, minus = _source(network)
     ref = _reference(network)
     match topology:
+        case wiring if callable(wiring):
+            wiring(network, plus, minus, ref)
         case "difference":
             _difference(network, "A1", plus, minus, ref)
         case "buffered-difference":
@@ -195,7 +204,7 @@ def _stage(network: _Network, topology: str) -> None:
     network.resistor("RL", "out", GROUND)
 
 
-def _entries(network: _Network) -> Iterator[tuple[int, int, Any]]:
+def _entries(network: Network) -> Iterator[tuple[int, int, Any]]:
     """(row, column, value) of the matrix; a driven node's current sum is replaced by its equation."""
     for node, other, y in network.current_sums:
         if node not in network.equations:
@@ -207,9 +216,9 @@ def _entries(network: _Network) -> Iterator[tuple[int, int, Any]]:
 
 
 def _built(
-    topology: str, parts: Mapping[str, float], s: Any, lib: Any
-) -> tuple[_Network, int, dict[str, int]]:
-    network = _Network(s, parts, lib)
+    topology: str | Wiring, parts: Mapping[str, float], s: Any, lib: Any
+) -> tuple[Network, int, dict[str, int]]:
+    network = Network(s, parts, lib)
     _stage(network, topology)
     for node, other, _ in network.current_sums:
         network.number(node), network.number(other)
@@ -222,7 +231,7 @@ def _built(
 
 
 def _solve_double(
-    topology: str,
+    topology: str | Wiring,
     parts: Mapping[str, float],
     frequency_hz: NDArray[np.float64],
     drives: list[tuple[complex, complex]],
@@ -253,7 +262,7 @@ def _solve_double(
 
 
 def _solve_precise(
-    topology: str,
+    topology: str | Wiring,
     parts: Mapping[str, float],
     frequency_hz: NDArray[np.float64],
     drives: list[tuple[complex, complex]],
@@ -276,7 +285,7 @@ def _solve_precise(
 
 
 def _solve(
-    topology: str,
+    topology: str | Wiring,
     parts: Mapping[str, float],
     frequency_hz: ArrayLike,
     drives: list[tuple[complex, complex]],
@@ -289,14 +298,14 @@ def _solve(
 
 
 def solve_dense(
-    topology: str, parts: Mapping[str, float], frequency_hz: ArrayLike, digits: int | None = None
+    topology: str | Wiring, parts: Mapping[str, float], frequency_hz: ArrayLike, digits: int | None = None
 ) -> tuple[ComplexArray, ComplexArray]:
     """Common-mode and differential gain of a stage behind its source.
 
     Parameters
     ----------
-    topology : str
-        difference, buffered-difference, two-opamp or three-opamp.
+    topology : str, or callable
+        difference, buffered-difference, two-opamp or three-opamp, or the wiring of another stage.
     parts : mapping
         Part name to SI value; op-amp parameters as `A1.gain_bandwidth`. A missing key is an absent part, and
         so is a zero capacitor, source, imbalance, filter or reference resistance and a zero op-amp parameter.
@@ -314,7 +323,7 @@ def solve_dense(
 
 
 def solve_dense_drives(
-    topology: str,
+    topology: str | Wiring,
     parts: Mapping[str, float],
     frequency_hz: ArrayLike,
     plus: complex,

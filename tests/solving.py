@@ -7,7 +7,7 @@ from collections.abc import Mapping, Sequence
 import numpy as np
 import numpy.typing as npt
 
-from modepair.circuits import COPIES, OUTPUT, netlist, structures
+from modepair.circuits import COPIES, OUTPUT, BuiltStage, netlist, structures
 from modepair.reports import ModePair
 from modepair.runner.engine import engine
 
@@ -27,7 +27,7 @@ def _solve(text: str, frequency_hz: npt.ArrayLike) -> Complex:
 
 def solve(topology: str, parts: Mapping[str, float], frequency_hz: npt.ArrayLike) -> ModePair:
     """Common-mode and differential gain of one stage, each frequency an analysis of its own."""
-    (structure,) = structures(topology, dict(parts), 1)
+    (structure,) = structures(BuiltStage(topology), dict(parts), 1)
     common, differential = _solve(structure.text(0), frequency_hz)
     return ModePair(np.atleast_1d(np.asarray(frequency_hz, float)), common, differential)
 
@@ -36,7 +36,7 @@ def solve_drives(
     topology: str, parts: Mapping[str, float], frequency_hz: npt.ArrayLike, plus: float, minus: float
 ) -> Complex:
     """Output for any two generator amplitudes."""
-    (structure,) = structures(topology, dict(parts), 1)
+    (structure,) = structures(BuiltStage(topology), dict(parts), 1)
     drives: dict[str, tuple[float, float]] = dict.fromkeys(COPIES, (plus, minus))
     return _solve(netlist(structure.elements(np.array([0])), drives=drives), frequency_hz)[0]
 

@@ -6,7 +6,7 @@ Random stages of all four topologies with every non-ideality at once.
 import numpy as np
 import pytest
 
-from modepair.circuits import COPIES, OUTPUT, structures
+from modepair.circuits import COPIES, OUTPUT, BuiltStage, structures
 from modepair.reports import ModePair
 from modepair.runner.analyses import plan_analyses
 from modepair.runner.engine import engine
@@ -34,7 +34,7 @@ def solve_at_each(topology, parts):
 
 def solve_in_one_sweep(topology, parts):
     """One sweep over all frequencies, as a run does it: pivots chosen at the first frequency."""
-    (structure,) = structures(topology, parts, 1)
+    (structure,) = structures(BuiltStage(topology), parts, 1)
     simulator = engine()
     simulator.load(structure.text(0))
     gains = plan_analyses(SWEEP).solve(simulator, [f"{OUTPUT}_{copy}" for copy in COPIES])

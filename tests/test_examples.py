@@ -10,7 +10,8 @@ import yaml
 from modepair.circuits import candidates
 from modepair.reports import cautions
 from modepair.runner import run
-from modepair.sweeps import expand, load_spec
+from modepair.runner.specs import read_spec
+from modepair.sweeps import expand
 
 FOLDER = Path(__file__).parent.parent / "sweeps" / "examples"
 EXAMPLES = sorted(FOLDER.glob("*.yaml"))
@@ -32,7 +33,7 @@ def test_the_example_that_the_readme_runs_is_there() -> None:
 
 @pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
 def test_it_loads_and_varies_something(path: Path) -> None:
-    spec = load_spec(path, candidates())
+    spec = read_spec(path)
     sweep = expand(spec)
     assert spec.title
     assert sweep.count >= 8
@@ -41,7 +42,7 @@ def test_it_loads_and_varies_something(path: Path) -> None:
 
 @pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
 def test_it_names_built_in_candidates_only(path: Path) -> None:
-    spec = load_spec(path, candidates())
+    spec = read_spec(path)
     assert not spec.opamps
     assert not spec.opamp_files
     used = {name for block in expand(spec).blocks for name in block.opamps.values()}
@@ -63,7 +64,7 @@ def test_it_says_near_its_top_what_to_change_first(path: Path) -> None:
 def test_its_comment_counts_its_cases_right(path: Path) -> None:
     text = path.read_text(encoding="utf-8")
     comment = next(line for line in text.splitlines() if line.startswith("vary:"))
-    count = expand(load_spec(path, candidates())).count
+    count = expand(read_spec(path)).count
     assert comment.endswith(f"= {count} cases")
     lengths = [len(values) for values in yaml.safe_load(text)["vary"].values()]
     assert [int(word) for word in comment.split("#")[1].split() if word.isdigit()] == [*lengths, count]
@@ -75,22 +76,22 @@ def test_the_spec_in_the_readme_is_one(tmp_path: Path) -> None:
     (base,) = [block for block in blocks if block.startswith("title:")]
     path = tmp_path / "readme.yaml"
     path.write_text(base, encoding="utf-8")
-    assert expand(load_spec(path, candidates())).count == 4
+    assert expand(read_spec(path)).count == 4
     sections = [block for block in blocks if block.startswith(("limits:", "tolerance:"))]
     assert len(sections) == 2
     # Together, over the band of the profile that the section on limits names.
     path.write_text(base.replace("stop: 100k", "stop: 200k") + "".join(sections), encoding="utf-8")
-    assert expand(load_spec(path, candidates())).count == 4
+    assert expand(read_spec(path)).count == 4
 
 
 @pytest.mark.parametrize("path", EXAMPLES, ids=lambda path: path.stem)
 def test_reports_have_a_text_for_its_cautions(path: Path) -> None:
-    spec = load_spec(path, candidates())
+    spec = read_spec(path)
     assert len(cautions(spec.cautions)) == len(spec.cautions)
 
 
 def test_circuits_on_a_patient_carry_the_medical_caution() -> None:
-    spec = load_spec(FOLDER / "skin-electrodes.yaml", candidates())
+    spec = read_spec(FOLDER / "skin-electrodes.yaml")
     assert "medical" in spec.cautions
     assert "A simulation shows no compliance" in spec.text
 
@@ -146,3 +147,22 @@ def test_buffers_pay_for_the_line_receiver_with_an_imbalance(cases: dict[str, pd
     # Late in the band three slow op-amps cost more than buffers gain.
     late = table.groupby(["stage.topology", "stage.opamp"])["cmrr_db_at_10000hz"].min().unstack(0)
     assert late.loc["general-purpose", "buffered-difference"] < late.loc["general-purpose", "difference"]
+
+
+def test_a_guard_is_worth_what_the_electrodes_comments_say(cases: dict[str, pd.DataFrame]) -> None:
+    table = cases["telluric-electrodes"].set_index(
+        ["stage.opamps.A4", "stage.parts.RLINK", "stage.parts.RGUARD"]
+    )
+    # Closed form, first order: 1/(2 pi f 1 kohm 5 nF) with the screens linked to ground.
+    linked = table.xs(1e-3, level=1)
+    assert linked["cmrr_db_at_50hz"].to_numpy() == pytest.approx(56.1, abs=0.1)
+    assert linked["cmrr_db_at_1000hz"].to_numpy() == pytest.approx(30.1, abs=0.1)
+    guarded = table.loc[("low-bias-jfet", 1e9, 100.0)]
+    # 44 dB better by the screen's share alone; what the inputs and op-amps add or take away is 2 dB.
+    assert guarded["cmrr_db_at_1000hz"] - 30.1 == pytest.approx(44.0, abs=2.0)
+    slow = table.loc[("micropower-cmos", 1e9, 100.0)]
+    assert slow["cmrr_db_at_1000hz"] < guarded["cmrr_db_at_1000hz"] - 5
+    # On boards the inputs' capacitors and resistors limit at 50 Hz, guard or not.
+    boards = table.xs(1e9, level=1)["cmrr_db_p1_at_50hz"]
+    assert boards.max() - boards.min() < 1.0
+    assert (table.xs(1e9, level=1)["cmrr_db_at_50hz"] - boards > 8).all()

@@ -19,7 +19,7 @@ import numpy as np
 import pytest
 from typer.testing import CliRunner
 
-from modepair.circuits import Bias, candidates, imported_models, models_of, structures
+from modepair.circuits import Bias, built_stage, candidates, imported_models, structures
 from modepair.circuits.bench import bench_netlist, imported_mounting
 from modepair.reports.bench import Bench, bench_figures
 from modepair.reports.model_warnings import bench_warnings
@@ -183,7 +183,7 @@ def test_the_deck_left_behind_runs_to_the_same_curve(tmp_path: Path) -> None:
     result = run(path, tmp_path / "out", jobs=1)
     sweep = expand(result.spec)
     (block,) = sweep.blocks
-    (structure,) = structures(block.topology, block.parts, 1, models_of(block.opamps, result.spec.candidates))
+    (structure,) = structures(built_stage(result.spec, block), block.parts, 1)
     alone = tmp_path / "alone"
     alone.mkdir()
     vectors = run_ngspice(structure.text(0) + "\n.ac dec 10 1.0 100000.0\n.end\n", alone)
@@ -297,7 +297,7 @@ def fault_texts(folder: Path, opamp: str, further: str = "") -> str:
 
 def screened(path: Path) -> None:
     spec = load_spec(path, candidates())
-    models_of(expand(spec).blocks[0].opamps, spec.candidates)
+    built_stage(spec, expand(spec).blocks[0])
 
 
 AMP = "file: amp.lib, subcircuit: amp, pins: [plus, minus, output]"

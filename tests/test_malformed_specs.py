@@ -262,7 +262,7 @@ MALFORMED = [
         "unknown stage key",
         spec(("topology", "topologie")),
         [
-            "1:1: stage: topology is missing; give one of difference, buffered-difference, two-opamp and three-opamp",
+            "1:1: stage: topology is missing; give one of difference, buffered-difference, two-opamp, three-opamp and netlist",
             "2:3: stage.topologie: topologie is not a known key; did you mean topology?",
         ],
     ),
@@ -270,7 +270,7 @@ MALFORMED = [
         "unknown topology",
         spec(("difference", "diference")),
         [
-            "2:13: stage.topology: diference is not a topology; did you mean difference? topology takes difference, buffered-difference, two-opamp or three-opamp"
+            "2:13: stage.topology: diference is not a topology; did you mean difference? topology takes difference, buffered-difference, two-opamp, three-opamp or netlist"
         ],
     ),
     Malformed(
@@ -336,7 +336,7 @@ MALFORMED = [
         "missing topology",
         spec(("  topology: difference\n", "")),
         [
-            "1:1: stage: topology is missing; give one of difference, buffered-difference, two-opamp and three-opamp"
+            "1:1: stage: topology is missing; give one of difference, buffered-difference, two-opamp, three-opamp and netlist"
         ],
     ),
     Malformed(

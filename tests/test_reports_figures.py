@@ -1,11 +1,20 @@
 """Figures against closed forms of rational functions, their order, and their bounds at the floor."""
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from modepair.reports.figures import HALF_POWER_DB, figures, spot_column, spot_indices, spot_text
+from modepair.reports.figures import (
+    HALF_POWER_DB,
+    figures,
+    in_order_of_figures,
+    passband,
+    spot_column,
+    spot_indices,
+    spot_text,
+)
 from modepair.reports.pairs import ModePair
 
 SPOTS = (50.0, 60.0, 1e3)
@@ -164,3 +173,53 @@ def test_single_frequency():
 def test_refuses_three_dimensions():
     with pytest.raises(ValueError, match=r"of the shape \(n, F\) or \(F,\), not \(1, 1, \d+\)"):
         figures(ModePair(F, np.ones((1, 1, F.size)), np.ones((1, 1, F.size))), [])
+
+
+def band_pass(lower_hz, upper_hz, gain=10.0):
+    """A_dm with a zero at DC, a pole, and a pole above: its corners are the poles, far apart as they are."""
+    return gain * (1j * F / lower_hz) / (1 + 1j * F / lower_hz) / (1 + 1j * F / upper_hz)
+
+
+def test_an_own_circuit_that_blocks_dc_has_its_gain_in_the_passband():
+    differential = band_pass(20.0, 50e3)
+    # CMRR rises to 80 dB and falls again from 10 kHz: closed form of both corners.
+    rho = 1e-4 * (1 + 20.0 / (1j * F)) * (1 + 1j * F / 10e3)
+    pair = ModePair(F, rho * differential, differential)
+    row = figures(pair, SPOTS, True).iloc[0]
+    # The two poles take 20/50e3 from each other: 4e-4, and the reading 5e-4, as for one pole.
+    assert row["differential_gain"] == pytest.approx(10.0, rel=1e-3)
+    assert row["lower_corner_hz"] == pytest.approx(20.0, rel=2e-3)
+    assert row["bandwidth_hz"] == pytest.approx(50e3, rel=2e-3)
+    # The highest CMRR, at sqrt(20 x 10e3) Hz, is (1 + 20/10e3) below 80 dB: the corner is 0.4 % above 10 kHz.
+    assert row["cmrr_corner_hz"] == pytest.approx(10e3, rel=0.01)
+    # A built-in stage is read as it always was.
+    built_in = figures(pair, SPOTS).iloc[0]
+    assert built_in["differential_gain"] == abs(differential[0])
+    assert "lower_corner_hz" not in built_in
+
+
+def test_an_own_circuit_that_passes_dc_is_read_as_a_built_in_stage():
+    pair = ModePair(F, *reversed(one_pole(23e3, 310.0)))
+    pd.testing.assert_frame_equal(figures(pair, SPOTS, True), figures(pair, SPOTS))
+    # 3 dB below its largest is where it counts as blocked.
+    for peak, index in ((1.41, 0), (1.42, 2)):
+        gain = np.array([1.0, 1.0, peak, 0.5])
+        assert passband(ModePair(np.array([1.0, 10, 100, 1e3]), gain, gain), True).index.tolist() == [index]
+
+
+def test_own_circuits_and_built_in_stages_go_together():
+    differential = np.stack([band_pass(20.0, 50e3), np.full(F.shape, 3.0)])
+    frame = figures(ModePair(F, 1e-4 * differential, differential), SPOTS, np.array([True, False]))
+    assert frame["lower_corner_hz"].notna().tolist() == [True, False]
+    only = figures(ModePair(F, 1e-4 * differential[1], differential[1]), SPOTS, True)
+    both = in_order_of_figures(pd.concat([only, frame], ignore_index=True))
+    assert both.columns.tolist() == frame.columns.tolist()
+
+
+def test_a_passband_beyond_the_band_has_no_corner_there():
+    low = band_pass(0.01, 50e3)
+    assert np.isnan(passband(ModePair(F, low, low), True).lower_hz).all()
+    high = band_pass(20.0, 1e9)
+    found = passband(ModePair(F, high, high), True)
+    assert np.isnan(found.upper_hz).all()
+    assert found.lower_hz[0] == pytest.approx(20.0, rel=2e-3)

@@ -106,6 +106,7 @@ def test_hostile_names_change_no_tag_of_the_page() -> None:
                 budget_note=text,
                 causes=[text],
                 tables={text: [Column(text, [text])]},
+                circuits={text: [Column(text, [text])]},
                 measured=[text],
                 measured_table=[Column(text, [text], "left")],
                 provenance={text: text},

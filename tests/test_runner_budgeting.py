@@ -13,6 +13,7 @@ import pytest
 from numpy.typing import NDArray
 from rich.console import Console
 
+from modepair.circuits import BuiltStage
 from modepair.reports.board_tables import print_budget
 from modepair.reports.budget import decibels
 from modepair.runner.analyses import spot_analyses
@@ -54,7 +55,7 @@ def causes(bounds: Mapping[str, float]) -> tuple[Variate, ...]:
 
 
 def drawn(topology: str, parts: Mapping[str, float], bounds: Mapping[str, float]) -> DrawnCase:
-    return DrawnCase(1, topology, dict(parts), causes(bounds))
+    return DrawnCase(1, BuiltStage(topology), dict(parts), causes(bounds))
 
 
 @pytest.fixture(scope="module")
@@ -72,7 +73,7 @@ def every_vertex(solver: BatchSolver, case: DrawnCase, spot_hz: float) -> Comple
     signs = np.array(list(product((-1.0, 1.0), repeat=len(case.causes))))
     errors = {cause.key: signs[:, column] for column, cause in enumerate(case.causes)}
     parts = boards(case.parts, case.causes, errors)
-    pair = solve_rows(solver, case.topology, parts, len(signs), spot_analyses([spot_hz]), {})
+    pair = solve_rows(solver, case.stage, parts, len(signs), spot_analyses([spot_hz]), {})
     rho: Complex = pair.error_ratio[:, 0]
     return rho
 
@@ -229,7 +230,7 @@ def test_without_tolerances_the_nominal_errors_are_the_budget(solver: BatchSolve
         "C4": 1.02e-11,
         "R4": 1.0005e4,
     }
-    spot = one_spot(solver, DrawnCase(1, "three-opamp", parts, ()))
+    spot = one_spot(solver, DrawnCase(1, BuiltStage("three-opamp"), parts, ()))
     assert spot.worst == spot.nominal
     assert {one.kind for one in spot.contributions} == {"nominal"}
     assert {one.name for one in spot.contributions} == {
@@ -270,7 +271,9 @@ def test_a_cmrr_that_varies_has_no_nominal_part_of_its_own(solver: BatchSolver) 
 
 def test_a_sets_common_factor_costs_nothing_and_its_matching_does(solver: BatchSolver) -> None:
     together = Variate("R1 R2 R3 R4 together", "set of R1", RESISTORS, 0.05, "rectangular", False, 0)
-    case = DrawnCase(1, "difference", difference(10.0), (together, *causes(dict.fromkeys(RESISTORS, 1e-4))))
+    case = DrawnCase(
+        1, BuiltStage("difference"), difference(10.0), (together, *causes(dict.fromkeys(RESISTORS, 1e-4)))
+    )
     spot = one_spot(solver, case)
     assert spot.contributions[-1].name == "R1 R2 R3 R4 together"
     assert abs(spot.contributions[-1].rho[0]) < 1e-9
@@ -288,7 +291,7 @@ def test_taking_away_an_imperfection_leaves_the_boards_own_errors(solver: BatchS
 
 def test_what_lies_above_the_floor_is_a_bound_and_never_a_number(solver: BatchSolver) -> None:
     """A matched stage with a near-ideal op-amp, G = 10: nothing to tell but that CMRR is above 220 dB."""
-    found = budget(solver, DrawnCase(1, "difference", difference(10.0), ()), [50.0, 1000.0])
+    found = budget(solver, DrawnCase(1, BuiltStage("difference"), difference(10.0), ()), [50.0, 1000.0])
     assert found.contributions == ()
     for spot in found.spots:
         assert spot.floor_db == pytest.approx(220, abs=0.01)

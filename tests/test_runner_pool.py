@@ -14,7 +14,7 @@ from typing import Any
 import numpy as np
 import pytest
 
-from modepair.circuits import COPIES, OUTPUT, structures
+from modepair.circuits import COPIES, OUTPUT, BuiltStage, structures
 from modepair.runner.analyses import Analyses, plan_analyses
 from modepair.runner.batches import Batch, Solved, solve_batch
 from modepair.runner.errors import EngineDeadError
@@ -67,7 +67,7 @@ def analyses() -> Analyses:
 
 
 def batches(size: int = 4) -> list[Batch]:
-    (structure,) = structures("difference", PARTS, 24)
+    (structure,) = structures(BuiltStage("difference"), PARTS, 24)
     deck = structure.deck()
     vectors = tuple(f"{OUTPUT}_{copy}" for copy in COPIES)
     return [

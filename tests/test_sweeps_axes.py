@@ -10,6 +10,7 @@ from modepair.sweeps.faults import RefusedError, SeveralRefusedError
 from modepair.sweeps.parts import OPAMP_PARAMETERS, PARTS
 from modepair.sweeps.quantities import RESISTANCE
 from modepair.sweeps.schema import FrequencyValue
+from modepair.sweeps.vocabulary import BUILT_IN
 
 KNOWN = settings(["quiet-bipolar"])
 
@@ -100,7 +101,7 @@ def test_paths_may_hold_list_indexes() -> None:
         items: tuple[Item, ...] = ()
         spots: list[FrequencyValue] | None = None
 
-    known = _leaves(Section, "section")
+    known = _leaves(Section, "section", BUILT_IN)
     assert sorted(known) == ["section.items[].corner", "section.spots[]"]
     assert read_axis("section.items[12].corner", ["50"], known).values == (50.0,)
     assert setting_at("section.spots[0]", known).takes == "a frequency, such as 50 Hz"

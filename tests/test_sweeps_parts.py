@@ -10,7 +10,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from modepair.sweeps import OPAMP_PARAMETERS, PARTS, TOPOLOGIES, RefusedError, resolve_parts
-from modepair.sweeps.parts import INSTANCES, SHORTHANDS, STAGE_PART_KINDS, Value, least_gain, parts_for_gain
+from modepair.sweeps.parts import INSTANCES, SHORTHANDS, Value, least_gain, parts_for_gain
+from modepair.sweeps.vocabulary import BUILT_IN
 
 BRIDGE = {f"stage.parts.{name}": 10e3 for name in ("R1", "R2", "R3", "R4")}
 THREE = {**BRIDGE, "stage.parts.RF1": 10e3, "stage.parts.RF2": 10e3}
@@ -29,13 +30,13 @@ def test_every_part_is_in_a_stage_or_in_the_source() -> None:
 
 
 def test_instances_have_every_op_amp_parameter() -> None:
-    assert {name for name in STAGE_PART_KINDS if "." in name} == {
+    assert {name for name in BUILT_IN.stage_part_kinds if "." in name} == {
         f"{instance}.{parameter}" for instance in INSTANCES for parameter in OPAMP_PARAMETERS
     }
 
 
 def test_absent_parts_have_no_key() -> None:
-    parts = resolve_parts("difference", EVERY, {**BRIDGE, **OPAMP})
+    parts = resolve_parts(TOPOLOGIES["difference"], EVERY, {**BRIDGE, **OPAMP})
     assert parts == {
         "R1": 10e3,
         "R2": 10e3,
@@ -48,22 +49,25 @@ def test_absent_parts_have_no_key() -> None:
 
 @pytest.mark.parametrize(("path", "names"), SHORTHANDS.items())
 def test_shorthands_give_parts_and_parts_override_them(path: str, names: tuple[str, ...]) -> None:
-    parts = resolve_parts("three-opamp", EVERY, {**THREE, **OPAMP, path: 5.0})
+    parts = resolve_parts(TOPOLOGIES["three-opamp"], EVERY, {**THREE, **OPAMP, path: 5.0})
     assert {name: parts[name] for name in names} == dict.fromkeys(names, 5.0)
     last = names[-1]
     override = {f"{PARTS[last].section}.parts.{last}": 7.0}
-    assert resolve_parts("three-opamp", EVERY, {**THREE, **OPAMP, path: 5.0, **override})[last] == 7.0
+    assert (
+        resolve_parts(TOPOLOGIES["three-opamp"], EVERY, {**THREE, **OPAMP, path: 5.0, **override})[last]
+        == 7.0
+    )
 
 
 def test_a_parameter_of_an_instance_overrides_its_candidate() -> None:
     settings = {**THREE, **OPAMP, "stage.parts.A2.gain_bandwidth": 9e6}
-    parts = resolve_parts("three-opamp", EVERY, settings)
+    parts = resolve_parts(TOPOLOGIES["three-opamp"], EVERY, settings)
     assert [parts[f"{a}.gain_bandwidth"] for a in INSTANCES] == [1e7, 9e6, 1e7]
 
 
 def test_arrays_stay_arrays_and_floats_stay_floats() -> None:
     settings: dict[str, Value] = {**THREE, **OPAMP, "source.imbalance": np.array([0.0, 10.0])}
-    parts = resolve_parts("three-opamp", EVERY, settings)
+    parts = resolve_parts(TOPOLOGIES["three-opamp"], EVERY, settings)
     np.testing.assert_array_equal(parts["RI"], [0.0, 10.0])
     assert parts["R1"] == 10e3
 
@@ -95,12 +99,12 @@ def test_the_gain_of_a_two_opamp_stage_sets_rg(r3: float, r4: float, times: floa
 
 @pytest.mark.parametrize(("topology", "gain"), [("three-opamp", 1.0), ("two-opamp", 2.0)])
 def test_the_gain_without_rg_leaves_rg_out(topology: str, gain: float) -> None:
-    assert "RG" not in resolve_parts(topology, EVERY, {**THREE, **OPAMP, "stage.gain": gain})
+    assert "RG" not in resolve_parts(TOPOLOGIES[topology], EVERY, {**THREE, **OPAMP, "stage.gain": gain})
 
 
 def test_rows_without_rg_are_marked_infinite() -> None:
     settings: dict[str, Value] = {**THREE, **OPAMP, "stage.gain": np.array([1.0, 101.0])}
-    rg = resolve_parts("three-opamp", EVERY, settings)["RG"]
+    rg = resolve_parts(TOPOLOGIES["three-opamp"], EVERY, settings)["RG"]
     np.testing.assert_allclose(rg, [math.inf, 200.0], rtol=1e-12)
 
 
@@ -125,7 +129,7 @@ def test_a_gain_out_of_reach_is_refused(topology: str, gain: float, message: str
     for part in TOPOLOGIES[topology].set_by_gain:
         settings.pop(f"stage.parts.{part}", None)
     with pytest.raises(RefusedError, match=message):
-        resolve_parts(topology, EVERY, settings)
+        resolve_parts(TOPOLOGIES[topology], EVERY, settings)
 
 
 def test_the_least_gain_of_the_difference_stages_is_zero() -> None:

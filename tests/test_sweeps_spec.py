@@ -113,7 +113,7 @@ def test_the_schema_enumerates_parts_and_parameters() -> None:
     assert {f"A1.{parameter}" for parameter in OPAMP_PARAMETERS} <= set(stage["properties"])
     assert set(properties("Opamp")) == {*OPAMP_PARAMETERS, *MODEL_KEYS, "note", "unit_price"}
     assert properties("Stage")["topology"] == {
-        "enum": ["difference", "buffered-difference", "two-opamp", "three-opamp"],
+        "enum": ["difference", "buffered-difference", "two-opamp", "three-opamp", "netlist"],
         "title": "Topology",
     }
 
@@ -136,3 +136,27 @@ def test_the_schema_knows_the_paths_of_axes() -> None:
     assert {"stage.opamp", "stage.parts.R1", "source.filter.between"} <= set(vary["properties"])
     assert any(re.match(pattern, "opamps.quiet-bipolar.cmrr") for pattern in vary["patternProperties"])
     assert not any(re.match(pattern, "opamps.quiet-bipolar.cmr") for pattern in vary["patternProperties"])
+
+
+def test_the_schema_takes_what_an_own_circuit_may_have() -> None:
+    parts = properties("Stage")["parts"]
+    kinds = {
+        "RGUARD": "a resistance", "CIN_1": "0 or a capacitance", "L1": "an inductance",
+        "U7.gain_bandwidth": "a frequency",
+    }  # fmt: skip
+    for name, noun in kinds.items():
+        found = [text for pattern, text in parts["patternProperties"].items() if re.search(pattern, name)]
+        assert [text["description"].startswith(noun) for text in found] == [True], name
+    # RREF takes 0, which other resistances do not, so no pattern may refuse it.
+    for name in ("RREF", "rguard", "X1", "R-1", "U7.gain"):
+        assert not any(re.search(pattern, name) for pattern in parts["patternProperties"]), name
+    vary = json_schema()["properties"]["vary"]["patternProperties"]
+    for path in ("stage.parts.RGUARD", "stage.parts.L1", "stage.opamps.A7", "stage.parts.A7.cmrr"):
+        assert any(re.search(pattern, path) for pattern in vary), path
+    assert not any(re.search(pattern, "stage.parts.rguard") for pattern in vary)
+    assert properties("Stage")["ports"]["anyOf"][0]["items"]["enum"][:4] == [
+        "plus", "minus", "output", "reference"
+    ]  # fmt: skip
+    of = json_schema()["$defs"]["ToleranceEntry"]["properties"]["of"]["items"]["anyOf"]
+    assert re.search(of[1]["pattern"], "RGUARD")
+    assert not re.search(of[1]["pattern"], "A7.cmrr_sign")

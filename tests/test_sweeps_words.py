@@ -5,7 +5,7 @@ from __future__ import annotations
 import pytest
 
 from modepair.sweeps.faults import RefusedError
-from modepair.sweeps.schema import Leaf
+from modepair.sweeps.leaves import Leaf
 from modepair.sweeps.words import Choice, Name, Text, listed, nearest, suggestion
 
 TOPOLOGY = Choice("a topology", ("difference", "two-opamp"))

@@ -164,7 +164,7 @@ class _Definitions:
             first = ".control"
         reason = _REFUSED_CARDS.get(first, f"taken are {_TAKEN_CARDS}")
         raise CardError(
-            card.place(), f"{shown(first)} is not taken in a model file: {reason}; remove the line"
+            card.place(), f"{shown(first)} is not taken in a model or circuit file: {reason}; remove the line"
         )
 
     def _element(self, card: Card) -> None:
@@ -178,7 +178,7 @@ class _Definitions:
         if letter != "x" and letter not in _READERS:
             raise CardError(
                 card.place(),
-                f"{shown(card.text.split(' ')[0])} begins no card of a model file; a comment begins with "
+                f"{shown(card.text.split(' ')[0])} begins no card of a model or circuit file; a comment begins with "
                 f"*, elements with R C L K V I E F G H B D Q M J X",
             )
         reader = Reader(card, self.findings)
@@ -189,7 +189,7 @@ class _Definitions:
         if not isinstance(self.scope, Subcircuit):
             raise CardError(
                 card.place(),
-                f"element {shown(element.name)} stands outside a subcircuit; a model file holds "
+                f"element {shown(element.name)} stands outside a subcircuit; such a file holds "
                 f"subcircuits and models only (a first line that is a title must begin with *)",
             )
         self.scope.claim("element", element.name, card)

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from modepair.circuits.screening.folding import Folder
 from modepair.circuits.screening.frames import Frame
-from modepair.circuits.screening.inside import FindModel, Inside, ModelUse, Spellings, plain_names
+from modepair.circuits.screening.inside import Element, FindModel, Inside, ModelUse, Spellings, plain_names
 from modepair.circuits.screening.models import Model
 from modepair.circuits.screening.numbers import show_number
 from modepair.circuits.screening.passives import PASSIVE_MODELS
@@ -68,13 +68,7 @@ class Elaboration:
     def run(self) -> None:
         """Write every subcircuit of the file with its own values of parameters."""
         with_arguments = _instantiated(self.top)
-        for name, value in self.top.parameters.items():
-            try:
-                self.folder.parameter(name, self._top_frame)
-            except CardError as refused:
-                self.findings.refuse(refused, value.card.text.split(" ")[0])
-            except KnownError:
-                pass
+        self._check_parameters()
         for subcircuit in self.top.subcircuits.values():
             mark = self.findings.mark()
             built = self._build(subcircuit, self._top_frame, {})
@@ -90,6 +84,15 @@ class Elaboration:
                 )
         if not self.ports and not self.findings.faults:
             raise CardError(Place(""), "there is no subcircuit in this file; name a file with a .subckt")
+
+    def _check_parameters(self) -> None:
+        for name, value in self.top.parameters.items():
+            try:
+                self.folder.parameter(name, self._top_frame)
+            except CardError as refused:
+                self.findings.refuse(refused, value.card.text.split(" ")[0])
+            except KnownError:
+                pass
 
     def _build(self, subcircuit: Subcircuit, around: Frame, arguments: dict[str, float]) -> _Built | None:
         """Write a subcircuit, once for each set of values; None where it has a fault."""
@@ -147,23 +150,12 @@ class Elaboration:
                     lines.append(line)
                     count += inner.elements
                     outer |= inner.outer
-                    hidden = sorted(name for name in inner.outer if name in subcircuit.parameters)
-                    if hidden:
-                        raise CardError(
-                            element.card.place(),
-                            f"parameter {hidden[0]} of the file is used in {element.subcircuit} and has "
-                            f"another value in {subcircuit.name}; programs take one or the other; rename one",
-                        )
+                    self._check_hidden(element, subcircuit, inner)
                 else:
                     written = list(element.lines(inside))
                     lines += written
                     count += len(written)
-                if count > self.findings.limits.elements:
-                    raise CardError(
-                        element.card.place(),
-                        f"more than {self.findings.limits.elements} elements once all subcircuits are "
-                        f"put in; use fewer",
-                    )
+                self._check_count(element, count)
             except CardError as refused:
                 self.findings.refuse(refused, element.name)
                 clean = False
@@ -184,6 +176,24 @@ class Elaboration:
         ports = " ".join(inside.node(port, subcircuit.card.place()) for port in subcircuit.ports)
         self.subcircuits.append("\n".join((f".subckt {name} {ports}", *lines, f".ends {name}")))
         return _Built(name, count, frozenset(outer | frame.outer))
+
+    @staticmethod
+    def _check_hidden(element: Instance, subcircuit: Subcircuit, inner: _Built) -> None:
+        hidden = sorted(name for name in inner.outer if name in subcircuit.parameters)
+        if hidden:
+            raise CardError(
+                element.card.place(),
+                f"parameter {hidden[0]} of the file is used in {element.subcircuit} and has "
+                f"another value in {subcircuit.name}; programs take one or the other; rename one",
+            )
+
+    def _check_count(self, element: Element, count: int) -> None:
+        if count > self.findings.limits.elements:
+            raise CardError(
+                element.card.place(),
+                f"more than {self.findings.limits.elements} elements once all subcircuits are "
+                f"put in; use fewer",
+            )
 
     def _instance(self, element: Instance, subcircuit: Subcircuit, inside: Inside) -> tuple[str, _Built]:
         place = element.card.place()

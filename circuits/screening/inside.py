@@ -179,6 +179,11 @@ class Inside:
         Puts parameters in.
     model : FindModel
         Finds a model by its name.
+
+    Attributes
+    ----------
+    mentioned : dict of str to None
+        Nodes that were written, in canonical text, ground left out; whoever wants to know clears it first.
     """
 
     def __init__(
@@ -202,6 +207,7 @@ class Inside:
         for name, spelling in (*self._nodes.items(), *self._names.items()):
             if name != spelling:
                 self.findings.note(subcircuit.card.place(), f"{name} is spelt {spelling}")
+        self.mentioned: dict[str, None] = {}
         self._used_nodes = Spellings(self._nodes.values())
         self._used_names = Spellings(self._names.values())
 
@@ -215,6 +221,7 @@ class Inside:
             raise CardError(place, f"node {name} is connected to nothing; correct its name")
         if _INNER.fullmatch(name):
             raise CardError(place, f"node {name} has the name of a node that ngspice makes itself; rename it")
+        self.mentioned[self._nodes[name]] = None
         return self._nodes[name]
 
     def nodes(self, element: Element) -> str:
@@ -252,12 +259,12 @@ class Inside:
         """Work out a number and write it."""
         return show_number(self.value(expression))
 
-    def positive(self, expression: Expression, what: str) -> str:
-        """Work out a number that must be above zero, and write it."""
+    def positive(self, expression: Expression, what: str) -> float:
+        """Work out a number that must be above zero."""
         value = self.value(expression)
         if value <= 0:
             raise expression.refused(f"{what} is {value:g}; it must be above zero")
-        return show_number(value)
+        return value
 
     def fold(self, expression: Expression) -> Node:
         """Fold an expression and spell its nodes and sources canonically."""

@@ -46,6 +46,12 @@ class Passive:
 
     def lines(self, inside: Inside) -> Iterator[str]:
         """Yield the element; a model's coefficients are put into it."""
+        value, options = self.worked_out(inside)
+        tail = "".join(f" {key}={show_number(options[key])}" for key in _OPTIONS if key in options)
+        yield f"{inside.nodes(self)} {show_number(value)}{tail}"
+
+    def worked_out(self, inside: Inside) -> tuple[float, dict[str, float]]:
+        """Work out its value, which is above zero, and its options, a model's coefficients among them."""
         letter = self.name[0]
         value = inside.positive(self.value, _WORDS[letter])
         options = {key: inside.value(expression) for key, expression in self.options.items()}
@@ -61,8 +67,7 @@ class Passive:
             inside.findings.note(place, f"model {self.model} is put into the element")
         if options.get("m", 1.0) <= 0:
             raise self.options["m"].refused("m is zero or negative; it must be above zero")
-        tail = "".join(f" {key}={show_number(options[key])}" for key in _OPTIONS if key in options)
-        yield f"{inside.nodes(self)} {value}{tail}"
+        return value, options
 
 
 def read_passive(reader: Reader) -> Passive:

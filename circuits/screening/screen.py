@@ -1,15 +1,16 @@
-"""Screening of an imported model file: what comes out is canonical text of our own, or a list of faults."""
+"""Screening of a model file or a circuit file: what comes out is canonical text of our own, or a list of faults."""
 
 from __future__ import annotations
 
 import contextlib
 import re
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
-from typing import Literal
+from typing import Literal, TypeVar
 
+from modepair.circuits.screening.circuit import CircuitElaboration, OpampPlace, PlacedPart, Remainder
 from modepair.circuits.screening.definitions import read_definitions
 from modepair.circuits.screening.elaboration import Elaboration
 from modepair.circuits.screening.files import Files
@@ -21,9 +22,10 @@ from modepair.circuits.screening.places import (
     TooManyFaultsError,
     TooMuchWorkError,
 )
+from modepair.circuits.screening.scopes import Scope
 from modepair.circuits.screening.source import Card
 
-__all__ = ["ScreenedModel", "screen"]
+__all__ = ["ScreenedCircuit", "ScreenedModel", "screen", "screen_circuit"]
 
 _LIMITS = Limits()
 _PSPICE = re.compile(r"\b(?:if|limit|pwrs|table) ?\(|(?<![&|])[&|](?![&|])|\b[vi]switch\b|\btc ?=")
@@ -92,12 +94,98 @@ def screen(path: Path, root: Path, *, limits: Limits = _LIMITS, prefix: str = ""
     if prefix and not re.fullmatch("[a-z][a-z0-9_]*", prefix):
         raise ValueError(f"prefix must be small letters, digits and _, a letter first, not {prefix!r}")
     findings = Findings(limits)
+    elaboration, files = _elaborated(path, root, findings, lambda top: Elaboration(top, findings, prefix))
+    return ScreenedModel(
+        text="\n".join((*elaboration.models, *elaboration.subcircuits)) + "\n",
+        subcircuits=MappingProxyType(dict(elaboration.ports)),
+        dialect="plain",
+        written_for="psa" if findings.psa_evidence else "plain",
+        rewrites=tuple(findings.notes),
+        files=files,
+    )
+
+
+@dataclass(frozen=True)
+class ScreenedCircuit:
+    """One subcircuit of a file after screening, taken apart.
+
+    Attributes
+    ----------
+    port_names : tuple of str
+        Its ports as the file names them, in order.
+    port_nodes : tuple of str
+        The same in canonical text.
+    parts : tuple of PlacedPart
+        Its resistors, capacitors and inductors, in file order; inductors that a K couples are not among them.
+    opamps : tuple of OpampPlace
+        Its instances of what the file does not define.
+    remainder : Remainder or None
+        What else it holds.
+    rewrites : tuple of str
+        What was put in other words or left out, each with file and line.
+    files : tuple of Path
+        Files that were read: the first one and those it includes.
+    """
+
+    port_names: tuple[str, ...]
+    port_nodes: tuple[str, ...]
+    parts: tuple[PlacedPart, ...]
+    opamps: tuple[OpampPlace, ...]
+    remainder: Remainder | None
+    rewrites: tuple[str, ...]
+    files: tuple[Path, ...]
+
+
+def screen_circuit(
+    path: Path, root: Path, subcircuit: str, *, limits: Limits = _LIMITS, prefix: str = "own_"
+) -> ScreenedCircuit:
+    """Screen a circuit file and take one of its subcircuits apart.
+
+    Parameters
+    ----------
+    path, root, limits, prefix
+        As for `screen`.
+    subcircuit : str
+        Its name.
+
+    Returns
+    -------
+    ScreenedCircuit
+        As `screen`, nothing of the file's own text is in it but names and numbers that were read.
+
+    Raises
+    ------
+    SpecError
+        With every fault found; that there is no such subcircuit is a fault of the file as a whole.
+    """
+    findings = Findings(limits)
+    taken, files = _elaborated(
+        path, root, findings, lambda top: CircuitElaboration(top, findings, prefix, subcircuit.lower())
+    )
+    return ScreenedCircuit(
+        taken.port_names,
+        taken.port_nodes,
+        tuple(taken.parts),
+        tuple(taken.places),
+        taken.remainder,
+        tuple(findings.notes),
+        files,
+    )
+
+
+Kind = TypeVar("Kind", bound=Elaboration)
+
+
+def _elaborated(
+    path: Path, root: Path, findings: Findings, make: Callable[[Scope], Kind]
+) -> tuple[Kind, tuple[Path, ...]]:
+    """Read a file's definitions and elaborate them; raise `SpecError` with every fault found."""
     files = Files(root, findings)
     name = files.name(Path(path))
-    elaboration: Elaboration | None = None
+    elaboration: Kind | None = None
     try:
         top = read_definitions(_watched(files.cards(Path(path)), findings), findings)
-        elaboration = Elaboration(top, findings, prefix)
+        elaboration = make(top)
         elaboration.run()
     except TooManyFaultsError:
         pass
@@ -110,14 +198,7 @@ def screen(path: Path, root: Path, *, limits: Limits = _LIMITS, prefix: str = ""
             findings.refuse(CardError(place, refused.message))
     if findings.faults or elaboration is None:
         raise findings.error()
-    return ScreenedModel(
-        text="\n".join((*elaboration.models, *elaboration.subcircuits)) + "\n",
-        subcircuits=MappingProxyType(dict(elaboration.ports)),
-        dialect="plain",
-        written_for="psa" if findings.psa_evidence else "plain",
-        rewrites=tuple(findings.notes),
-        files=tuple(files.paths),
-    )
+    return elaboration, tuple(files.paths)
 
 
 def _watched(cards: Iterator[Card], findings: Findings) -> Iterator[Card]:

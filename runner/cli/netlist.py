@@ -24,13 +24,13 @@ def netlist_command(
     One case goes to the standard output. With -o, its deck goes to that folder, or, without --case, a deck for
     each structure of the sweep.
     """
-    from modepair.circuits import candidates
     from modepair.runner.analyses import plan_analyses
     from modepair.runner.decks import case_deck, structure_decks
     from modepair.runner.plans import plan_batches
-    from modepair.sweeps import expand, load_spec
+    from modepair.runner.specs import read_spec
+    from modepair.sweeps import expand
 
-    sweep = expand(load_spec(spec, candidates()))
+    sweep = expand(read_spec(spec))
     if case is not None and case > sweep.count:
         raise typer.BadParameter(
             f"{case} is not a case; the spec has 1 to {sweep.count}", param_hint="--case"

@@ -1,10 +1,10 @@
 """Fuzzing of the screener: ``python -m tests.fuzzing.screener --runs 100000``.
 
 Inputs are the hostile and the ordinary models and pieces of cards, mutated: bytes, lines, tokens and numbers
-exchanged, doubled, cut and joined. With atheris installed, ``--atheris`` lets coverage guide the mutation
-instead. Allowed is a `ScreenedModel` in canonical grammar whose screening gives the same text, or a
-`SpecError` with places; anything else, and anything that takes longer than the time limit, is kept and ends
-the run.
+exchanged, doubled, cut and joined, each read as a model file and as an own circuit. With atheris installed,
+``--atheris`` lets coverage guide the mutation instead. Allowed is a `ScreenedModel` in canonical grammar whose
+screening gives the same text, or a `SpecError` with places; anything else, and anything that takes longer than the
+time limit, is kept and ends the run.
 """
 
 from __future__ import annotations
@@ -22,10 +22,15 @@ from collections import Counter
 from pathlib import Path
 from types import FrameType
 
+from modepair.circuits import read_circuit
 from modepair.circuits.screening import screen
 from modepair.sweeps.faults import SpecError
+from modepair.sweeps.stage_circuits import INSTANCE_NAME, PART_NAME
 
-__all__ = ["CANONICAL", "check", "corpus", "mutated"]
+__all__ = ["CANONICAL", "check", "check_circuits", "corpus", "mutated"]
+
+MOST_SUBCIRCUITS = 3
+"""Subcircuits of a file that are read as circuits."""
 
 TIME_LIMIT_S = 10.0
 """Processor time, so that a busy machine does not count."""
@@ -151,6 +156,7 @@ def corpus() -> list[bytes]:
     """Return the files that mutation starts from; the ordinary ones often enough to be met as often as the
     others."""
     ordinary = sorted((_HERE / "ordinary_models").glob("**/*.[li][in][bc]"))
+    ordinary += sorted((_HERE.parent / "sweeps" / "examples" / "circuits").iterdir())
     hostile = sorted((_HERE / "hostile" / "models").iterdir())
     times = max(1, 2 * len(hostile) // len(ordinary))
     return [path.read_bytes()[:LONGEST] for path in (*(ordinary * times), *hostile)]
@@ -231,9 +237,39 @@ def check(data: bytes, folder: Path) -> str:
     return "screened"
 
 
+def check_circuits(data: bytes, folder: Path) -> int:
+    """Read each of the first subcircuits of `data` as an own circuit; return how many are taken.
+
+    Raises
+    ------
+    AssertionError
+        When what else a circuit holds is not in canonical grammar, a name or a value is none of a spec, or an error is
+        without a place.
+    """
+    (folder / "fuzzed.lib").write_bytes(data)
+    names = re.findall(rb"(?im)^[ \t]*\.subckt[ \t]+([a-z0-9_]+)", data)
+    taken = 0
+    for name in dict.fromkeys(names[:MOST_SUBCIRCUITS]):
+        try:
+            circuit = read_circuit(folder, "fuzzed.lib", name.decode())
+        except SpecError as error:
+            _demand(_is_plain(error), f"a refusal without a place or with control characters: {error!r}")
+            continue
+        taken += 1
+        for line in circuit.remainder.text.splitlines() if circuit.remainder else ():
+            _demand(CANONICAL.fullmatch(line) is not None, f"not canonical: {line!r}")
+        nodes = [node for some in (*circuit.part_nodes, *circuit.opamp_nodes) for node in some]
+        _demand(all(re.fullmatch(_NODE, node) for node in nodes), f"not nodes: {nodes}")
+        _demand(all(PART_NAME.fullmatch(part) for part, _ in circuit.values), f"not parts: {circuit.values}")
+        _demand(all(0 < value < 1e16 for _, value in circuit.values), f"not values: {circuit.values}")
+        _demand(all(map(INSTANCE_NAME.fullmatch, circuit.opamps)), f"not op-amps: {circuit.opamps}")
+    return taken
+
+
 def _is_plain(error: SpecError) -> bool:
     printable = all(character.isprintable() or character == "\n" for character in str(error))
-    return printable and bool(error.faults) and all(fault.file and fault.message for fault in error.faults)
+    # A fault without a file is about a key of the spec, which it names.
+    return printable and bool(error.faults) and all((f.file or f.key) and f.message for f in error.faults)
 
 
 def _demand(holds: bool, message: str) -> None:
@@ -259,6 +295,7 @@ def run(runs: int, seed: int, folder: Path) -> Counter[str]:
         signal.setitimer(signal.ITIMER_PROF, TIME_LIMIT_S)
         try:
             counts[check(data, folder)] += 1
+            counts["circuits"] += check_circuits(data, folder)
         except BaseException:
             Path("failure.lib").write_bytes(data)
             raise

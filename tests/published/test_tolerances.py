@@ -18,6 +18,7 @@ import pytest
 from numpy.typing import NDArray
 from scipy import stats
 
+from modepair.circuits import BuiltStage
 from modepair.reports.budget import decibels
 from modepair.runner import Run
 from modepair.runner.analyses import spot_analyses
@@ -70,7 +71,7 @@ class Drawn:
         self.errors = Streams(section).errors(causes, 0, draws)
         made = boards(parts, causes, self.errors)
         self.k = {name: 1 / np.asarray(value) for name, value in made.items() if name.endswith(".cmrr")}
-        pair = solve_rows(solver, topology, made, draws, spot_analyses([frequency_hz]), {})
+        pair = solve_rows(solver, BuiltStage(topology), made, draws, spot_analyses([frequency_hz]), {})
         self.rho: Complex = pair.error_ratio[:, 0]
         self.gain: Complex = pair.differential_gain[:, 0]
 
@@ -86,7 +87,7 @@ def worst(solver: BatchSolver, gain: float, tolerance: float, **more: float) -> 
         name.replace("_", "."): bound for name, bound in more.items()
     }
     causes = tuple(Variate(n, n, (n,), b, "rectangular", n.endswith("cmrr"), 0) for n, b in bounds.items())
-    case = DrawnCase(1, "difference", difference(gain), causes)
+    case = DrawnCase(1, BuiltStage("difference"), difference(gain), causes)
     (spot,) = budget_case(case, solver, spot_analyses([1.0]), [1.0]).spots
     return spot
 
