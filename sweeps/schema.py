@@ -313,9 +313,10 @@ class Frequency(Section):
         """The logarithmic grid, Hz, shape (G,), both ends included.
 
         It has max(1, floor(points_per_decade log10(stop/start))) equal steps in log f, as ngspice's
-        ``ac dec`` has; 1e-9 is added before rounding down, so that whole decades are not lost to round-off.
+        ``ac dec`` has; 1e-9 is added before rounding down, so that whole decades are not lost to round-off. Ends that
+        are the same by `SPOT_MATCH` make one point.
         """
-        if self.start == self.stop:
+        if self.stop <= self.start * (1.0 + SPOT_MATCH):
             return np.array([self.start])
         steps = max(1, math.floor(self.points_per_decade * math.log10(self.stop / self.start) + 1e-9))
         return np.geomspace(self.start, self.stop, steps + 1)

@@ -114,3 +114,9 @@ def test_values_of_a_stage_are_si_floats() -> None:
     )
     assert stage.parts == {"R1": 4700.0, "A1.cmrr": 1e4}
     assert (stage.gain, stage.load) == (100.0, 2000.0)
+
+
+def test_ends_that_round_off_tells_apart_are_one_point() -> None:
+    asked = Frequency.model_validate({"start": 1.0, "stop": 1.0000000000000002, "spots": [1.0]})
+    assert asked.grid_hz.tolist() == [1.0]
+    assert asked.frequency_hz.tolist() == [1.0]
