@@ -21,7 +21,7 @@ from modepair.sweeps.axes import settings
 from modepair.sweeps.cases import base_settings
 from modepair.sweeps.quantities import Kind
 
-__all__ = ["asked", "board_claim", "write_pages"]
+__all__ = ["asked", "begin_curves", "board_claim", "write_pages"]
 
 FILE_PARTS = "parts in its file"
 """Of an own circuit, what `asked` calls the values that the spec leaves as they are."""
@@ -120,7 +120,7 @@ def write_pages(
     results: Results,
     provenance: dict[str, str],
     judged: Judged,
-    drawing: Draughting,
+    curves: Drawing | None,
     measured: str = "",
     worst: pd.DataFrame | None = None,
     warnings: Sequence[str] = (),
@@ -139,8 +139,8 @@ def write_pages(
         What makes the run repeatable.
     judged : Judged
         Its verdicts.
-    drawing : Draughting
-        Draws its curves.
+    curves : Drawing or None
+        Its curves, which `begin_curves` began to draw.
     measured : str
         The section on measurements, in Markdown; empty where there is none.
     worst : DataFrame, optional
@@ -149,8 +149,7 @@ def write_pages(
         What its op-amp models cannot show.
     """
     spec = sweep.spec
-    drawn = _curves(folder, sweep, results, drawing)
-    plots = {caption: f"{stem}.png" for caption, stem in CAPTIONS.items()} if drawn else {}
+    plots = {caption: f"{stem}.png" for caption, stem in CAPTIONS.items()} if curves else {}
     if results.boards is not None:
         from modepair.runner.board_pages import plot_board_pages
 
@@ -172,12 +171,29 @@ def write_pages(
         | ({"Measured": measured} if measured else {}),
     )
     folder.write_text("summary.md", summary_text(summary))
-    if drawn:
-        drawn.finish()
+    if curves:
+        curves.finish()
 
 
-def _curves(folder: RunFolder, sweep: Sweep, results: Results, drawing: Draughting) -> Drawing | None:
-    """Begin to draw the curves; none where every case failed."""
+def begin_curves(folder: RunFolder, sweep: Sweep, results: Results, drawing: Draughting) -> Drawing | None:
+    """Begin to draw the curves of a run.
+
+    Parameters
+    ----------
+    folder : RunFolder
+        Where to.
+    sweep : Sweep
+        What was asked.
+    results : Results
+        What it came to.
+    drawing : Draughting
+        Draws them.
+
+    Returns
+    -------
+    Drawing or None
+        For `write_pages`; none where every case failed.
+    """
     if results.kept is None:
         return None
     spec = sweep.spec

@@ -184,6 +184,9 @@ def run(
                 draws=draws,
                 only_draw=draw or 0,
             )
+        from modepair.runner.pages import begin_curves, write_pages
+
+        curves = begin_curves(folder, sweep, results, draughtsman)
         judged = judge_run(
             sweep,
             results.cases,
@@ -205,7 +208,6 @@ def run(
             board_table(nominal, sweep).to_csv(folder.path("board.csv"), index=False)
         write_decks(folder, sweep, plans, analyses)
         from modepair.runner.model_warnings import model_warnings
-        from modepair.runner.pages import write_pages
 
         warnings = model_warnings(sweep, executors or local, workers)
         measured = write_measured(folder, spec, results.cases) if draw is None else results.cases[:0]
@@ -216,7 +218,7 @@ def run(
             results,
             origin,
             judged,
-            draughtsman,
+            curves,
             measured_section(measured, spec, results.cases),
             worst,
             warnings,

@@ -31,7 +31,7 @@ from modepair.sweeps.parts import REQUIRED_PARAMETERS
 from modepair.sweeps.schema import FILE_NAME, OPAMP_NAME, Opamp
 from modepair.sweeps.spec import CandidateFile, Spec
 from modepair.sweeps.stage_circuits import NETLIST, ReadCircuit, StageCircuit, read_ports, unread
-from modepair.sweeps.tolerances import tolerance_faults, unvaried_faults
+from modepair.sweeps.tolerances import tolerance_faults, varied_faults
 from modepair.sweeps.vocabulary import Vocabulary
 from modepair.sweeps.words import listed, suggestion
 
@@ -209,9 +209,8 @@ def _read_spec(
     faults = [*gain_faults(bound), *ineffective_faults(bound)]
     if spec.tolerance and not faults:
         sweep = expand(bound)
-        valued = {name for block in sweep.blocks for name in (*block.parts, *block.tolerances)}
         results = sweep.count * int(spec.tolerance.draws)
-        faults = list(unvaried_faults(document, spec.tolerance, valued, results))
+        faults = list(varied_faults(document, spec.tolerance, sweep.blocks, results))
     faults.sort(key=lambda fault: (fault.line, fault.column))
     if faults:
         raise SpecError(faults)

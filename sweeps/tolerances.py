@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
-from typing import Annotated, Any
+from typing import TYPE_CHECKING, Annotated, Any
 
+import numpy as np
 from pydantic import Field, ValidationError
 
 from modepair.sweeps.document import Document, Location, join_path
@@ -18,7 +19,10 @@ from modepair.sweeps.stage_circuits import INSTANCE_NAME, PART_NAME
 from modepair.sweeps.vocabulary import BUILT_IN, Vocabulary
 from modepair.sweeps.words import Choice, listed, suggestion
 
-__all__ = ["MOST_DRAWS", "MOST_RESULTS", "Tolerance", "ToleranceEntry", "tolerance_faults", "unvaried_faults"]
+if TYPE_CHECKING:
+    from modepair.sweeps.cases import Block
+
+__all__ = ["MOST_DRAWS", "MOST_RESULTS", "Tolerance", "ToleranceEntry", "tolerance_faults", "varied_faults"]
 
 MOST_DRAWS = 1_000_000
 """Draws of a case."""
@@ -301,10 +305,11 @@ def _normal_faults(
             yield document.fault(at, f"{shown(text)} {message}; give at most 33 %, or another distribution")
 
 
-def unvaried_faults(
-    document: Document, tolerance: Tolerance, valued: set[str], results: int
+def varied_faults(
+    document: Document, tolerance: Tolerance, blocks: Sequence[Block], results: int
 ) -> Iterator[Fault]:
-    """Yield the parts of a tolerance section that have no value in any case, and a product that is too large.
+    """Yield the parts of a tolerance section that have no value in any case, or that its bounds take where no board can
+    be; and a product that is too large.
 
     Parameters
     ----------
@@ -312,15 +317,18 @@ def unvaried_faults(
         The spec as read.
     tolerance
         Its tolerance section.
-    valued
-        Names of the parts that at least one case has, and paths of the tolerances that have a value.
+    blocks
+        All its cases.
     results
         Draws of all cases together.
     """
+    valued = {name for block in blocks for name in (*block.parts, *block.tolerances)}
     for index, entry in enumerate(tolerance.parts):
         for position, name in enumerate(entry.of):
-            if name not in valued and not (entry.reciprocal and f"tolerance.parts[{index}].least" in valued):
-                at = ("tolerance", "parts", index, "of", position)
+            at = ("tolerance", "parts", index, "of", position)
+            if name in valued:
+                yield from _margin_faults(document, at, name, entry.reciprocal, blocks, index)
+            elif not (entry.reciprocal and f"tolerance.parts[{index}].least" in valued):
                 yield document.fault(
                     at,
                     f"{name} has no value in any case, so it cannot vary; give it one, or take it out here",
@@ -331,3 +339,25 @@ def unvaried_faults(
             "shorten an axis"
         )
         yield document.fault(("tolerance", "draws"), message)
+
+
+def _margin_faults(
+    document: Document, at: Location, name: str, reciprocal: bool, blocks: Sequence[Block], index: int
+) -> Iterator[Fault]:
+    """Yield a phase margin that some board would have beyond what one second pole can give."""
+    if reciprocal or not name.endswith(".phase_margin"):
+        return
+    most = OPAMP_PARAMETERS["phase_margin"].most
+    highest = 0.0
+    for block in blocks:
+        if name in block.parts:
+            value = np.asarray(block.parts[name], dtype=np.float64)
+            for key in ("absolute", "matching"):
+                value = value * (1.0 + block.tolerances.get(f"tolerance.parts[{index}].{key}", 0.0))
+            highest = max(highest, float(value.max()))
+    if highest > most:
+        yield document.fault(
+            at,
+            f"{name} would reach {highest:.4g} degrees; one second pole gives at most {most:g}, so narrow the "
+            "tolerance, or leave phase_margin out for a single pole",
+        )

@@ -21,5 +21,6 @@ def swept(folder: Path, text: str, name: str = "boards") -> Sweep:
 def run_without_pages(spec: Spec, folder: Path, **options: Any) -> Run:
     """Run a spec; everything is written but plots and pages."""
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(pages, "write_pages", lambda *given, **named: None)
+        for name in ("begin_curves", "write_pages"):
+            patch.setattr(pages, name, lambda *given, **named: None)
         return run(spec, folder, **options)

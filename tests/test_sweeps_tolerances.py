@@ -79,6 +79,14 @@ BAD = [
         ["7:17: tolerance.parts[0].of[1]: CCP has no value in any case, so it cannot vary; give it one, or take it out here"],
     ),
     Bad(
+        "a phase margin that no second pole gives",
+        spec(
+            "{of: [A1.phase_margin], absolute: 40 %}",
+            vary="opamps.fast.phase_margin: [60, 65]",
+        ),
+        ["7:13: tolerance.parts[0].of[0]: A1.phase_margin would reach 91 degrees; one second pole gives at most 89.9, so narrow the tolerance, or leave phase_margin out for a single pole"],
+    ),
+    Bad(
         "a parameter without value",
         spec("{of: [A1.output_resistance], absolute: 1 %}"),
         ["7:13: tolerance.parts[0].of[0]: A1.output_resistance has no value in any case, so it cannot vary; give it one, or take it out here"],
