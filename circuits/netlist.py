@@ -10,7 +10,16 @@ from PySpice.Spice.Netlist import Circuit
 from modepair.circuits.elements import GROUND, OUTPUT, Card, Element, Instance
 from modepair.circuits.sources import GENERATORS
 
-__all__ = ["ALTERABLE", "COPIES", "DRIVES", "circuit", "netlist", "pair_of_drives", "standalone"]
+__all__ = [
+    "ALTERABLE",
+    "COPIES",
+    "DRIVES",
+    "circuit",
+    "netlist",
+    "pair_of_drives",
+    "standalone",
+    "value_model",
+]
 
 COPIES = ("c", "d")
 """Suffixes of the two copies: common-mode drive, differential drive."""
@@ -29,8 +38,16 @@ NONLINEAR_OPTIONS = ".option pivrel=0.5"
 
 ALTERABLE: Mapping[str, str] = {"R": "rsh", "C": "cap"}
 """Kinds of elements whose value can stand in a model, and its name there. In a deck that is loaded once and altered for
-each case, such an element has its value in a model of its name, which all copies share, so that one command sets it.
-A resistor is one square of its sheet resistance: a model's plain `r` is silently kept where it would fall to 1 mOhm."""
+each case, such an element has its value in a model that all copies share, so that one command sets it. A resistor is
+one square of its sheet resistance: a model's plain `r` is silently kept where it would fall to 1 mOhm."""
+
+
+def value_model(name: str) -> str:
+    """Name the model that holds an element's value in all copies.
+
+    ngspice looks for an element before it looks for a model; no element's name ends so, since all end in their copy.
+    """
+    return f"{name}_m"
 
 
 def _add(
@@ -43,12 +60,13 @@ def _add(
     name = f"{card.name[1:]}_{copy}"
     value = float(card.values[row])
     if alterable and card.kind in ALTERABLE:
-        if card.name not in built.model_names:
-            built.model(card.name, card.kind.lower(), **{ALTERABLE[card.kind]: value})
+        model = value_model(card.name)
+        if model not in built.model_names:
+            built.model(model, card.kind.lower(), **{ALTERABLE[card.kind]: value})
         if card.kind == "R":
-            built.SemiconductorResistor(name, *nodes, model=card.name, length=1, width=1)
+            built.SemiconductorResistor(name, *nodes, model=model, length=1, width=1)
         else:
-            built.SemiconductorCapacitor(name, *nodes, model=card.name)
+            built.SemiconductorCapacitor(name, *nodes, model=model)
     elif card.kind == "R":
         built.R(name, *nodes, value)
     elif card.kind == "C":

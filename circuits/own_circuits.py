@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Protocol
@@ -242,7 +242,17 @@ def read_circuit(folder: Path, file: str, subcircuit: str) -> OwnCircuit:
 
 def _faults(screened: ScreenedCircuit) -> Iterator[Fault]:
     """Yield what makes a circuit's names or values unfit for a spec."""
-    inner = _inner_names(screened)
+    inner: dict[str, str] = {}
+    for place in screened.opamps:
+        names = _inner_names(place.name.upper())
+        other = next((inner[name] for name in sorted(names) if name in inner), "")
+        if other:
+            message = (
+                f"x{place.name} and x{other.lower()} are op-amps whose inner elements would have the same names; "
+                f"rename one of them"
+            )
+            yield _fault(place.place, f"x{place.name}", message)
+        inner |= dict.fromkeys(names, place.name.upper())
     for part in screened.parts:
         name = part.name.upper()
         kind = kind_of(name)
@@ -290,14 +300,11 @@ def _fault(place: Place, key: str, message: str) -> Fault:
     return Fault(place.file, place.line, place.column, key, message)
 
 
-def _inner_names(screened: ScreenedCircuit) -> Mapping[str, str]:
-    """Names of the elements that macromodels in the circuit's places may have, in capitals, and whose they are."""
+def _inner_names(instance: str) -> set[str]:
+    """Names of the elements that an op-amp's macromodel may have, in capitals."""
     every = {name: np.ones(1) for name in OPAMP_PARAMETERS}
-    found: dict[str, str] = {}
-    for place in screened.opamps:
-        instance = place.name.upper()
-        for left_out in ("", "output_resistance", "cmrr"):
-            parts = {f"{instance}.{name}": value for name, value in every.items() if name != left_out}
-            elements = opamp_elements(instance, "p", "n", "o", parts)
-            found |= {element.name.upper(): instance for element in elements}
+    found: set[str] = set()
+    for left_out in ("", "output_resistance", "cmrr"):
+        parts = {f"{instance}.{name}": value for name, value in every.items() if name != left_out}
+        found |= {element.name.upper() for element in opamp_elements(instance, "p", "n", "o", parts)}
     return found

@@ -11,7 +11,7 @@ import numpy.typing as npt
 from modepair.circuits.bench import gain_netlist, imported_mounting
 from modepair.circuits.deck import Bias, Deck
 from modepair.circuits.elements import GROUND, Card, Element, Values
-from modepair.circuits.netlist import ALTERABLE, COPIES, netlist
+from modepair.circuits.netlist import ALTERABLE, COPIES, netlist, value_model
 from modepair.circuits.sources import source_elements
 from modepair.circuits.stages import BuiltStage, stage_cards
 
@@ -128,7 +128,7 @@ def _commands(element: Element) -> tuple[str, ...]:
     # Of the forms that ngspice knows these are the ones it reads fastest; spaces cost time too.
     name = element.name.lower()
     if element.kind in ALTERABLE:
-        return (f"altermod @{name}[{ALTERABLE[element.kind]}]=",)
+        return (f"altermod @{value_model(name)}[{ALTERABLE[element.kind]}]=",)
     form = "alter @{}_{}[gain]=" if element.kind in "GE" else "alter {}_{}="
     return tuple(form.format(name, copy) for copy in COPIES)
 

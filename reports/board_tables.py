@@ -24,6 +24,14 @@ __all__ = [
     "worst_case_section",
 ]
 
+MOST_UNTOLD = 0.1
+"""Share of the solved error that a budget may miss without a word on it."""
+
+UNTOLD = (
+    "an own circuit's parts that are unlike by design, which the tool cannot know, or tolerances so wide that they do "
+    "not add"
+)
+
 LEAST_SHARE = 5e-4
 """Contributions of a smaller share are not printed."""
 
@@ -262,6 +270,12 @@ def print_budget(console: Console, budget: pd.DataFrame, worst: pd.DataFrame, la
             f"\n{spot}: nominal {nominal} dB{board}; the contributions sum to {sum_db} dB{off}.\n",
             markup=False,
         )
+        if not pd.isna(total["residual"]) and total["residual"] > MOST_UNTOLD:
+            console.print(
+                f"What is missing from that sum is none of these causes: {UNTOLD}. The shares below are shares of what "
+                "is listed.\n",
+                markup=False,
+            )
         if here.empty:
             console.print("Nothing is unlike on the two sides, and nothing varies.", markup=False)
             continue

@@ -360,7 +360,7 @@ def _stack(
     panel.yaxis.set_major_locator(FixedLocator([0, 20, 40, 60, 80, 100]))
     panel.tick_params(axis="y", length=0)
     panel.spines["left"].set_visible(False)
-    write_heading(panel, "", ["share of the sum of |rho| of all causes (%)"], at=0.07)
+    write_heading(panel, "", ["share of the sum of |rho| of the causes listed (%)"], at=0.07)
     for i, name in enumerate(names):
         panel.fill_between(
             frequency_hz, edges[i], edges[i + 1], facecolor=colours[i], edgecolor="#ffffff", linewidth=0.7,

@@ -136,11 +136,14 @@ def passband(pair: ModePair, own_circuit: npt.ArrayLike = False) -> Passband:
     gain_db = np.atleast_2d(pair.differential_gain_db)
     rows = np.arange(gain_db.shape[0])
     index = gain_index(gain_db, own_circuit)
-    fallen = gain_db <= (gain_db[rows, index] - HALF_POWER_DB)[:, np.newaxis]
-    upper_hz = _first_fall(gain_db, pair.frequency_hz, fallen, index)
+    gain_here_db = gain_db[rows, index]
+    fallen = gain_db <= (gain_here_db - HALF_POWER_DB)[:, np.newaxis]
+    upper_hz = _first_fall(gain_db, pair.frequency_hz, fallen, index, gain_here_db)
     # Downwards is upwards on the same curve from right to left.
     last = gain_db.shape[1] - 1
-    lower_hz = _first_fall(gain_db[:, ::-1], pair.frequency_hz[::-1], fallen[:, ::-1], last - index)
+    lower_hz = _first_fall(
+        gain_db[:, ::-1], pair.frequency_hz[::-1], fallen[:, ::-1], last - index, gain_here_db
+    )
     return Passband(index, lower_hz, upper_hz)
 
 
@@ -165,9 +168,13 @@ def gain_index(gain_db: FloatArray, own_circuit: npt.ArrayLike = False) -> npt.N
 
 
 def _first_fall(
-    level_db: FloatArray, frequency_hz: FloatArray, fallen: BoolArray, start: npt.NDArray[np.intp]
+    level_db: FloatArray,
+    frequency_hz: FloatArray,
+    fallen: BoolArray,
+    start: npt.NDArray[np.intp],
+    from_db: FloatArray,
 ) -> FloatArray:
-    """Where the level falls by HALF_POWER_DB from that at `start`, (n,): linear in dB over log f, or NaN.
+    """Where the level, from `start` (n,), falls by HALF_POWER_DB below `from_db` (n,): linear in dB over log f, or NaN.
 
     ``fallen`` (n, F) marks the samples that are known to lie at or below that level.
     """
@@ -177,7 +184,7 @@ def _first_fall(
     found = fallen[rows, after]
     after = np.where(found, np.maximum(after, 1), 0)
     before = np.maximum(after - 1, 0)
-    target_db = level_db[rows, start] - HALF_POWER_DB
+    target_db = from_db - HALF_POWER_DB
     drop_db = level_db[rows, before] - level_db[rows, after]
     share = np.divide(
         level_db[rows, before] - target_db, drop_db, out=np.ones_like(drop_db), where=drop_db > 0
@@ -187,14 +194,28 @@ def _first_fall(
     return np.where(found, fall_hz, np.nan)
 
 
-def _corner_start(cmrr_db: FloatArray, frequency_hz: FloatArray, band: Passband) -> npt.NDArray[np.intp]:
-    """Where CMRR's corner is counted from: the lowest frequency; of a case that blocks it, CMRR's highest value in
-    the passband, since below it the rejection may be poor and of no interest.
+def _corner_start(
+    cmrr_db: FloatArray, frequency_hz: FloatArray, band: Passband
+) -> tuple[npt.NDArray[np.intp], FloatArray]:
+    """Where CMRR's corner is counted from, and the level there: the lowest frequency; of a case that blocks it, CMRR's
+    highest value in the passband, since below it the rejection may be poor and of no interest. That may be the value at
+    the passband's lower edge, which is interpolated.
     """
-    above = frequency_hz >= np.where(np.isnan(band.lower_hz), 0.0, band.lower_hz)[:, np.newaxis]
+    rows = np.arange(cmrr_db.shape[0])
+    edge_hz = np.where(np.isnan(band.lower_hz), frequency_hz[0], band.lower_hz)
+    above = frequency_hz >= edge_hz[:, np.newaxis]
     below = frequency_hz <= np.where(np.isnan(band.upper_hz), np.inf, band.upper_hz)[:, np.newaxis]
     highest = np.argmax(np.where(above & below, cmrr_db, -np.inf), axis=1)
-    return np.where(band.index > 0, highest, 0)
+    start = np.where(band.index > 0, highest, 0)
+    level_db = cmrr_db[rows, start]
+    if band.index.any():
+        log_f = np.log(frequency_hz)
+        first = np.clip(np.argmax(above, axis=1), 1, frequency_hz.size - 1)
+        share = (np.log(edge_hz) - log_f[first - 1]) / (log_f[first] - log_f[first - 1])
+        edge_db = cmrr_db[rows, first - 1] + share * (cmrr_db[rows, first] - cmrr_db[rows, first - 1])
+        at_edge = (band.index > 0) & (edge_db > level_db)
+        start, level_db = np.where(at_edge, first, start), np.where(at_edge, edge_db, level_db)
+    return start, level_db
 
 
 def figures(pair: ModePair, spots_hz: Sequence[float], own_circuit: npt.ArrayLike = False) -> pd.DataFrame:
@@ -240,10 +261,10 @@ def figures(pair: ModePair, spots_hz: Sequence[float], own_circuit: npt.ArrayLik
     rows = np.arange(cmrr_db.shape[0])
 
     # A sample at the floor may be higher than it reads, so it never counts as fallen.
-    start = _corner_start(cmrr_db, frequency_hz, band)
-    fallen = (cmrr_db <= (cmrr_db[rows, start] - HALF_POWER_DB)[:, np.newaxis]) & ~at_floor
+    start, level_db = _corner_start(cmrr_db, frequency_hz, band)
+    fallen = (cmrr_db <= (level_db - HALF_POWER_DB)[:, np.newaxis]) & ~at_floor
     fallen &= np.arange(frequency_hz.size) >= start[:, np.newaxis]
-    corner_hz = _first_fall(cmrr_db, frequency_hz, fallen, start)
+    corner_hz = _first_fall(cmrr_db, frequency_hz, fallen, start, level_db)
     corner_is_bound = at_floor[rows, start]
     if np.any(corner_is_bound):
         # The start is higher than it reads, so the corner lies below the first sample known to be lower.

@@ -15,7 +15,7 @@ from modepair.sweeps.imported import imported_faults
 from modepair.sweeps.parts import OPAMP_PARAMETERS, REQUIRED_PARAMETERS, SHORTHANDS, Topology
 from modepair.sweeps.quantities import FREQUENCY
 from modepair.sweeps.schema import MOST_SPOTS, OPAMP_NAME, SPOT_MATCH
-from modepair.sweeps.stage_circuits import circuit_faults
+from modepair.sweeps.stage_circuits import NETLIST, circuit_faults
 from modepair.sweeps.vocabulary import BUILT_IN, STAGES, Vocabulary
 from modepair.sweeps.words import listed, suggestion
 
@@ -204,8 +204,10 @@ class Coherence:
             location = self._place_of("stage.opamp")
             message = "opamp and opamps are both given; leave one of them out"
             yield self.document.fault(location, message, at_key=True)
+        # Of an own circuit that could not be read, nobody knows whether it has op-amps.
+        told = NETLIST not in self.used or NETLIST in self.vocabulary.topologies
         needed = bool(self.instances) or not self.topologies
-        if needed and not one and not has_each:
+        if told and needed and not one and not has_each:
             message = "opamp is missing; name a candidate for every op-amp, or one for each under opamps"
             yield self.document.fault(("stage",), message, at_key=True)
         if not needed and one:

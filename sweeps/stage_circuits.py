@@ -21,6 +21,8 @@ __all__ = [
     "ReadCircuit",
     "StageCircuit",
     "circuit_faults",
+    "read_ports",
+    "unread",
 ]
 
 NETLIST = "netlist"

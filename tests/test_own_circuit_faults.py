@@ -457,3 +457,17 @@ def test_a_spec_with_a_circuit_with_parts_broken_is_read_or_refused(
         assert places == sorted(places)
     else:
         assert expand(spec).count >= 1
+
+
+def test_op_amps_whose_inner_elements_would_share_names(folder: Path) -> None:
+    told = "a.cir:{}: xa1b: xa1b and xa1 are op-amps whose inner elements would have the same names; rename one of them"
+    circuit = CIRCUIT.replace("XA2 b out out oa", "XA1B b out out oa")
+    (fault,) = faults(SPEC, circuit)
+    line = circuit.splitlines().index("XA1B b out out oa") + 1
+    assert fault == told.format(f"{line}:1")
+
+
+def test_a_missing_op_amp_is_not_told_of_a_circuit_that_nobody_can_read(folder: Path) -> None:
+    found = faults(SPEC.replace("  opamp: fast-jfet\n", ""), CIRCUIT.replace("1k", "7k1"))
+    assert found
+    assert not [fault for fault in found if "opamp is missing" in fault]

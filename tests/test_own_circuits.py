@@ -22,7 +22,9 @@ from modepair.circuits import built_stage, structures
 from modepair.reports import ModePair
 from modepair.runner import Run, compare_runs, open_run, run
 from modepair.runner.analyses import plan_analyses
+from modepair.runner.batches import solve_batch
 from modepair.runner.cli.app import app
+from modepair.runner.engine import engine
 from modepair.runner.journal import run_key
 from modepair.runner.plans import drawn_case, plan_batches
 from modepair.runner.pool import BatchSolver, worker_pool
@@ -623,3 +625,43 @@ def test_the_own_circuit_in_the_readme_is_one(tmp_path: Path) -> None:
     file = re.sub(" +", " ", (EXAMPLES / name).read_text())
     assert len(lines) == 4
     assert all(re.sub(" +", " ", line) in file for line in lines)
+
+
+CONFUSABLE = """* names that a copy of another part, or of an inner element of an op-amp, has
+.subckt amp p n ref out
+R1 n x 10k
+R2 x out 10k
+R3 p y 10k
+R4 y ref 10k
+R1_C y ref 1meg
+R1_D x ref 1meg
+R1_M x ref 1meg
+C1 x out 1n
+C1_C y ref 1n
+RA1G_D y ref 1meg
+RSP_C x ref 1meg
+XA1 y x out opamp
+.ends
+"""
+
+
+def test_every_part_keeps_its_own_value_whatever_it_is_called(tmp_path: Path) -> None:
+    """Each case, altered from the one before, against a deck of its own that is loaded afresh."""
+    varied = ("R1", "R1_C", "R1_D", "R1_M", "C1", "C1_C", "RA1G_D", "RSP_C")
+    axes = "".join(
+        f"  stage.parts.{name}: {'[1n, 2n]' if name.startswith('C') else '[10k, 25k]'}\n" for name in varied
+    )
+    text = small("amp", "plus, minus, reference, output", "  opamp: good\n").replace(
+        "frequency:",
+        "source: {resistance: 100}\nopamps: {good: {open_loop_gain: 120 dB, gain_bandwidth: 1M}}\nfrequency:",
+    )
+    sweep = expand(read_spec(spec_in(tmp_path, f"{text}vary:\n{axes}", CONFUSABLE)))
+    analyses = plan_analyses(sweep.spec.frequency)
+    for plan in plan_batches(sweep):
+        solved_batch = solve_batch(plan.batch(), analyses)
+        assert not solved_batch.failures
+        for gains, row in list(zip(solved_batch.gains, plan.rows.tolist(), strict=True))[::5]:
+            engine().load(plan.structure.text(row))
+            np.testing.assert_allclose(
+                gains, analyses.solve(engine(), ("out_c", "out_d")), rtol=1e-6, atol=1e-10
+            )

@@ -223,3 +223,17 @@ def test_a_passband_beyond_the_band_has_no_corner_there():
     found = passband(ModePair(F, high, high), True)
     assert np.isnan(found.upper_hz).all()
     assert found.lower_hz[0] == pytest.approx(20.0, rel=2e-3)
+
+
+@pytest.mark.parametrize("points", [60, 241, 2001])
+def test_a_corner_counted_from_the_edge_of_the_passband_does_not_hang_on_the_grid(points):
+    """Poles of A_dm at 20 Hz and 20 kHz; rho = r (1 + j f/f1): where CMRR falls throughout, the edge is its best.
+
+    Closed form: |1 + j f/f1|^2 is twice that at the lower edge f0 where f^2 = f1^2 + 2 f0^2.
+    """
+    hertz = np.geomspace(1.0, 1e6, points)
+    differential = 10.0 / ((1 + 20 / (1j * hertz)) * (1 + 1j * hertz / 20e3))
+    common = 1e-3 * (1 + 1j * hertz / 15.0) * differential
+    row = figures(ModePair(hertz, common, differential), (), True).iloc[0]
+    assert row["lower_corner_hz"] == pytest.approx(20.0, rel=6e-3)
+    assert row["cmrr_corner_hz"] == pytest.approx(np.sqrt(15.0**2 + 2 * 20.0**2), rel=1e-2)

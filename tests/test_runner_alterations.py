@@ -20,7 +20,7 @@ from tests.solving import solve
 
 COUNT = 60
 COMMANDS = [
-    (f"altermod @r{n}[r]=",) if n % 2 else (f"alter @g{n}_c[gain]=", f"alter @g{n}_d[gain]=")
+    (f"altermod @r{n}_m[rsh]=",) if n % 2 else (f"alter @g{n}_c[gain]=", f"alter @g{n}_d[gain]=")
     for n in range(COUNT)
 ]
 DECK = Deck("", tuple(f"R{n}" if n % 2 else f"G{n}" for n in range(COUNT)), tuple(COMMANDS), np.zeros(COUNT))
@@ -53,7 +53,7 @@ def test_a_pattern_seen_before_takes_the_values_of_its_own_case() -> None:
     assert alterations.between(third, third) == []
     lone = third.copy()
     lone[7] = -0.1
-    assert alterations.between(third, lone) == ["altermod @r7[r]=-0.10000000000000001"]
+    assert alterations.between(third, lone) == ["altermod @r7_m[rsh]=-0.10000000000000001"]
 
 
 def test_lines_are_filled() -> None:

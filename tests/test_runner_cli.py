@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import re
+import shlex
 import subprocess
 import sys
 from pathlib import Path
@@ -169,3 +170,21 @@ def test_tighten_finds_a_grade_or_says_what_limits(here: Path) -> None:
         refused = modepair(here, "tighten", *arguments)
         assert refused.returncode == 2
         assert told in refused.stderr
+
+
+@pytest.mark.parametrize("closed", [">&-", "2>&-"])
+def test_a_closed_stream_costs_nothing_but_what_it_would_say(here: Path, closed: str) -> None:
+    command = " ".join([shlex.join(COMMAND), "run", "stage.yaml", closed])
+    done = subprocess.run(
+        ["sh", "-c", command], cwd=here, capture_output=True, text=True, check=False, timeout=60
+    )
+    assert (done.returncode, done.stderr) == (0, "")
+    assert (here / "runs" / "stage" / "run.json").is_file()
+
+
+def test_a_reader_that_leaves_is_no_judgement(here: Path) -> None:
+    command = f"{{ {shlex.join(COMMAND)} schema; echo $? >&2; }} | true"
+    done = subprocess.run(
+        ["sh", "-c", command], cwd=here, capture_output=True, text=True, check=False, timeout=60
+    )
+    assert done.stderr in ("141\n", "0\n")

@@ -250,7 +250,7 @@ def test_area_and_substrate_that_ngspice_misreads(tmp_path: Path) -> None:
         ("x1 a b other", "subcircuit other is not defined"),
         ("d1 a b dx", "model dx is not defined"),
         ("q1 a b out dx\n.model dx d(is=1f)", "model dx is of type D and not a bipolar model"),
-        ("d1 a b dx\n.model dx d(is=1f nonsense=1)", "nonsense is not a parameter of D in ngspice"),
+        ("d1 a b dx\n.model dx d(is=1f nonsense=1)", "nonsense is not a parameter of D that is taken"),
         ("m1 a b out 0 mx\n.model mx nmos(level=1 theta=1)", "theta is not a parameter of NMOS at level 1"),
         ("r1 a b rr", "r1 has no value"),
         ("r1 a b rr 1k", "model rr is not defined"),

@@ -120,7 +120,7 @@ class Model:
                 if key in _LEFT_OUT.get(family, {}):
                     continue
                 raise self.parameters[key].refused(
-                    f"{key} is not a parameter of {self.kind.upper()} at level {level:g} in ngspice; "
+                    f"{key} is not a parameter of {self.kind.upper()} at level {level:g} that is taken; "
                     f"remove it"
                 )
             if key in _POSITIVE and value <= 0:
@@ -170,7 +170,7 @@ def read_model(reader: Reader) -> Model:
             )
         if token.kind != "word" or (key not in known and key not in left_out):
             raise reader.refused(
-                f"{shown(key)} is not a parameter of {kind.upper()} in ngspice; remove it", token
+                f"{shown(key)} is not a parameter of {kind.upper()} that is taken; remove it", token
             )
         if not reader.take_sign("="):
             raise reader.refused(f"{key} has no value; write {key}=value", token)

@@ -1,6 +1,7 @@
 """The command line.
 
-Exit status: 0 done, 1 judged and failing, 2 usage, spec or output, 3 simulation failed, 130 interrupted.
+Exit status: 0 done, 1 judged and failing, 2 usage, spec or output, 3 simulation failed, 130 interrupted, 141 when
+whoever read the output has left.
 """
 
 from __future__ import annotations
@@ -20,6 +21,9 @@ from modepair.runner.cli.schema import schema_command
 from modepair.runner.cli.tighten import tighten_command
 
 __all__ = ["app", "main"]
+
+BROKEN_PIPE = 128 + 13
+"""Exit status of a program that nobody listens to, as a shell gives it for the signal."""
 
 app = typer.Typer(
     help="CMRR over frequency of difference and instrumentation amplifier stages, swept in ngspice.",
@@ -52,10 +56,15 @@ def main() -> None:
         usage = isinstance(error, OutputError | ValueError)
         message = "; ".join([str(error), *getattr(error, "__notes__", ())])
         _fail(f"modepair: {message}", USAGE if usage else SIMULATION_FAILED)
+    except SystemExit as ended:
+        # The command line's library ends with 1 where nobody reads, and hangs this over the stream.
+        if ended.code == 1 and type(sys.stdout).__name__ == "PacifyFlushWrapper":
+            sys.exit(BROKEN_PIPE)
+        raise
     except BrokenPipeError:
         # Whoever read the output has left; keep the interpreter from complaining as it closes the stream.
         sys.stderr.close()
-        sys.exit(1)
+        sys.exit(BROKEN_PIPE)
     except OSError as error:
         where = f"{error.filename}: " if error.filename else ""
         _fail(f"modepair: {where}{error.strerror or error}", USAGE)

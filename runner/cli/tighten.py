@@ -24,7 +24,9 @@ def tighten_command(
     share: Annotated[
         str | None,
         typer.Option(
-            "--yield", metavar="SHARE", help="Yield asked for, such as 99 %; limits.yield if not given."
+            "--yield",
+            metavar="SHARE",
+            help="Yield asked for, such as 95 %; limits.yield if not given, else 99 %.",
         ),
     ] = None,
     jobs: Jobs = None,
@@ -56,6 +58,7 @@ def _print(result: Tightening) -> None:
     from modepair.reports.board_tables import percent_text
     from modepair.reports.readings import frequency_text
     from modepair.reports.tables import Column, console_for, print_columns
+    from modepair.reports.yields import draws_needed
     from modepair.runner.budget_pages import case_labels
 
     console = console_for(sys.stdout)
@@ -86,6 +89,13 @@ def _print(result: Tightening) -> None:
         )
         if case.widest is not None:
             told = f"{100 * case.widest:g} % is tight enough."
+            low, _ = case.grades[-1].found.interval
+            if low < result.share < 1.0:
+                told = (
+                    f"{100 * case.widest:g} % is tight enough for the boards drawn, which show a yield of "
+                    f"{percent_text(low)} % for all; to show {percent_text(result.share)} % takes at least "
+                    f"{draws_needed(result.share):,} draws."
+                )
         elif not case.limit:
             told = "No common grade is tight enough, though perfect parts would be."
         else:
