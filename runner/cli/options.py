@@ -32,7 +32,11 @@ Folder = Annotated[Path | None, typer.Option("-o", "--output", metavar="DIR", he
 Jobs = Annotated[
     int | None,
     typer.Option(
-        "--jobs", min=1, max=1024, metavar="N", help="Worker processes, beside one that draws; all processors if not given."
+        "--jobs",
+        min=1,
+        max=1024,
+        metavar="N",
+        help="Worker processes, beside one that draws; all processors if not given.",
     ),
 ]
 AsJson = Annotated[bool, typer.Option("--json", help="Print JSON for a script instead of a table.")]
