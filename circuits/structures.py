@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Hashable, Mapping
+from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -56,8 +56,7 @@ class Structure:
         cards, biases = stage_cards(self.stage, here, plus, minus)
         return (*network, *cards), biases
 
-    def _netlist(self, rows: Rows, *, alterable: bool = False) -> str:
-        cards, biases = self._circuit(rows)
+    def _netlist(self, cards: Sequence[Card], biases: Iterable[Bias], *, alterable: bool = False) -> str:
         watched = list(dict.fromkeys(node for bias in biases for node in bias.nodes if node != GROUND))
         stage = self.stage
         return netlist(
@@ -82,7 +81,7 @@ class Structure:
         tuple of Element
             In the order of the netlist, with values of shape (j,).
         """
-        return tuple(card for card in self._circuit(rows)[0] if isinstance(card, Element))
+        return _elements(self._circuit(rows)[0])
 
     def values(self, rows: Rows) -> Values:
         """Element values of some of the cases: shape (j, m), a column per element of the deck."""
@@ -94,7 +93,7 @@ class Structure:
 
     def text(self, row: int) -> str:
         """Netlist of one case, without analyses."""
-        return self._netlist(np.array([row]))
+        return self._netlist(*self._circuit(np.array([row])))
 
     @property
     def key(self) -> Hashable:
@@ -103,20 +102,27 @@ class Structure:
 
     def deck(self) -> Deck:
         """Write the deck, with the values of the structure's first case."""
-        row = self.rows[:1]
-        elements = self.elements(row)
-        commands = tuple(_commands(element) for element in elements)
-        values = np.array([element.values[0] for element in elements])
+        cards, found = self._circuit(self.rows[:1])
+        elements = _elements(cards)
         references = {
             name: gain_netlist(imported_mounting(self.stage.placed(name))) for name in self.stage.models
         }
         biases = tuple(
             replace(bias.in_copies(*COPIES, self.stage.supplies), reference=references[bias.instance])
-            for bias in self._circuit(row)[1]
+            for bias in found
         )
-        names = tuple(element.name for element in elements)
-        text = self._netlist(row, alterable=True)
-        return Deck(text, names, commands, values, biases, self.stage.nonlinear)
+        return Deck(
+            self._netlist(cards, found, alterable=True),
+            tuple(element.name for element in elements),
+            tuple(_commands(element) for element in elements),
+            np.array([element.values[0] for element in elements]),
+            biases,
+            self.stage.nonlinear,
+        )
+
+
+def _elements(cards: Iterable[Card]) -> tuple[Element, ...]:
+    return tuple(card for card in cards if isinstance(card, Element))
 
 
 def _taken(values: float | Values, rows: Rows) -> Values:
