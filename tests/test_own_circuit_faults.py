@@ -19,6 +19,7 @@ from modepair.circuits.own_circuits import MOST_PARTS
 from modepair.runner.specs import read_spec
 from modepair.sweeps import SpecError, expand, load_spec
 from modepair.sweeps.stage_circuits import PORTS
+from tests.broken_specs import broken
 from tests.test_screening_hostile import EXPECTED, MODELS, SECRET
 
 CIRCUIT = """* a circuit
@@ -431,23 +432,8 @@ WORDS = [
 def test_a_spec_with_a_circuit_with_parts_broken_is_read_or_refused(
     folder: Path, data: st.DataObject
 ) -> None:
-    lines = list(LINES)
-    for _ in range(data.draw(st.integers(1, 3))):
-        index = data.draw(st.integers(0, len(lines) - 1))
-        change = data.draw(st.sampled_from(["drop", "value", "double", "cut", "key"]))
-        line = lines[index]
-        if change == "drop":
-            lines[index] = ""
-        elif change == "value":
-            lines[index] = f"{line.partition(':')[0]}: {data.draw(st.sampled_from(WORDS))}\n"
-        elif change == "double":
-            lines[index] = line + line
-        elif change == "cut":
-            lines[index] = line[: data.draw(st.integers(0, len(line)))] + "\n"
-        else:
-            lines[index] = line.replace(data.draw(st.sampled_from(list("RAaupCe:[{,1"))), "z", 1)
     (folder / "a.cir").write_text(CIRCUIT)
-    (folder / "spec.yaml").write_text("".join(lines))
+    (folder / "spec.yaml").write_text(broken(data, LINES, WORDS, "RAaupCe:[{,1", most=3))
     try:
         spec = read_spec("spec.yaml")
     except SpecError as error:

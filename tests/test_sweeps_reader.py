@@ -9,6 +9,7 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from modepair.sweeps import Opamp, SpecError, expand, load_spec, read_candidates
+from tests.broken_specs import broken
 
 SPEC = """\
 title: Bridge
@@ -208,22 +209,7 @@ WORDS = [
 def test_a_spec_with_parts_broken_is_read_or_refused_but_never_crashes(
     tmp_path: Path, data: st.DataObject
 ) -> None:
-    lines = list(LINES)
-    for _ in range(data.draw(st.integers(1, 4))):
-        index = data.draw(st.integers(0, len(lines) - 1))
-        change = data.draw(st.sampled_from(["drop", "value", "double", "cut", "key"]))
-        line = lines[index]
-        if change == "drop":
-            lines[index] = ""
-        elif change == "value":
-            lines[index] = f"{line.partition(':')[0]}: {data.draw(st.sampled_from(WORDS))}\n"
-        elif change == "double":
-            lines[index] = line + line
-        elif change == "cut":
-            lines[index] = line[: data.draw(st.integers(0, len(line)))] + "\n"
-        else:
-            lines[index] = line.replace(data.draw(st.sampled_from(list("RAse:[{,10k"))), "z", 1)
-    path = write(tmp_path, spec="".join(lines))
+    path = write(tmp_path, spec=broken(data, LINES, WORDS, "RAse:[{,10k", most=4))
     try:
         spec = load_spec(path)
     except SpecError as error:
