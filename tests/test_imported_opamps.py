@@ -163,7 +163,10 @@ def test_the_warning_stands_at_the_top_of_the_page(both: Run) -> None:
     assert [text.split(":")[0] for text in both.warnings] == ["same", "mine", "other"]
 
 
-def test_a_model_without_a_mechanism_is_told_by_run_check_and_compare(tmp_path: Path) -> None:
+def test_a_model_without_a_mechanism_is_told_by_run_check_and_compare(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)  # compare runs a spec into runs/ there
     (tmp_path / "amp.lib").write_text(re.sub(r"g[cd] .*\n", "", LINEAR))
     path = spec_in(
         tmp_path,

@@ -559,8 +559,9 @@ def test_a_topology_axis_mixes_the_circuit_with_built_in_stages(tmp_path: Path) 
     ],
 )
 def test_every_command_takes_an_own_circuit(
-    command: list[str], status: int, said: str, tmp_path: Path
+    command: list[str], status: int, said: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
+    monkeypatch.chdir(tmp_path)  # compare runs a spec into runs/ there
     text = OWN.replace("SAMPLING", "random").replace("{of: [C2, C4]", "{of: [CF1]")
     path = spec_in(tmp_path, text, THREE_OPAMPS, "three.cir")
     arguments = [{"SPEC": str(path), "OUT": str(tmp_path / "out")}.get(word, word) for word in command]
